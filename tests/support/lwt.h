@@ -71,7 +71,7 @@ void lwt_random_quaternion(lwt_random *rng, double out[4]);
 #define lwt_member(object, name) lwt_member_at((object), (name), __FILE__, __LINE__)
 #define lwt_number(object, name) lwt_number_at((object), (name), __FILE__, __LINE__)
 #define lwt_text(object, name) lwt_text_at((object), (name), __FILE__, __LINE__)
-/* Fills out[0..max) from an array of numbers, nested arrays in row-major order; returns the count. */
+/* Fills out[0..max) from an array of numbers, nested ones row by row; returns the count. */
 #define lwt_numbers(object, name, out, max) \
     lwt_numbers_at((object), (name), (out), (max), __FILE__, __LINE__)
 /* A value as printed in its source, kept as text: "0.7071" is 0.7071 and half a last digit is
