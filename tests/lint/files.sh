@@ -33,8 +33,8 @@ files() {
 
 # shellcheck disable=SC2034 # used by the checks
 rooms=(core server clients deploy tests)
-export c_files='\.(c|h|cc)$'
-export source_files='(\.(c|h|cc|py|sh|js|mjs|sql)|^tests/run|^deploy/up|^deploy/down)$'
+export c_files='\.(c|h|cpp)$'
+export source_files='(\.(c|h|cpp|py|sh|js|mjs|sql)|^tests/run|^deploy/up|^deploy/down)$'
 
 # A C file with comments and texts blanked, lines kept where they were.
 code_of() {
