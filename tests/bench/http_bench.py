@@ -149,8 +149,11 @@ class Service:
         """CPU time of all threads; /proc/PID/schedstat alone would show the first one only."""
         total = 0
         for path in glob.glob(f"/proc/{self.pid}/task/*/schedstat"):
-            with open(path, encoding="ascii") as stat:
-                total += int(stat.read().split()[0])
+            try:
+                with open(path, encoding="ascii") as stat:
+                    total += int(stat.read().split()[0])
+            except (FileNotFoundError, ProcessLookupError):
+                pass  # a thread that has just ended
         return total
 
     def resident_kb(self):
