@@ -31,12 +31,13 @@ static inline void lwd_pointer_name(lwd_pointer *p, const char *name)
     }
     p->text[at++] = '/';
     for (const char *c = name; *c != '\0'; c++) {
-        if (at + 3 > p->size) {
+        bool escaped = *c == '~' || *c == '/';
+        if (at + (escaped ? 2 : 1) >= p->size) {
             p->full = true;
             p->text[start] = '\0';
             return;
         }
-        if (*c == '~' || *c == '/') {
+        if (escaped) {
             p->text[at++] = '~';
             p->text[at++] = *c == '~' ? '0' : '1';
         } else {

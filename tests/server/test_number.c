@@ -194,7 +194,7 @@ static void writes_the_forms_that_were_agreed(void **state)
     assert_int_equal(lwd_number_put_plain(out, NAN), 0);
 }
 
-/* Published: RFC 8785 (2020), appendix B, "ECMAScript-compatible JSON number serialization samples";
+/* Published: RFC 8785 (2020), appendix B, samples of ECMAScript-compatible number serialization;
  * taken down from memory and from the copies that other programs' tests carry. */
 static void writes_ecmascript_numbers_as_published(void **state)
 {

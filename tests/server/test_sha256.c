@@ -15,8 +15,8 @@ static void check(const char *text, const char *want)
 }
 
 /* "abc" and the 56-byte and 112-byte messages are the examples NIST published with FIPS 180-4; the
- * digests are from memory. The empty one is the widely printed value, from memory. All were compared
- * with Python's hashlib when they were written down. */
+ * digests are from memory. The empty one is the widely printed value, from memory. All were
+ * compared with Python's hashlib when they were written down. */
 static void agrees_with_the_published_digests(void **state)
 {
     (void)state;
