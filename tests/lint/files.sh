@@ -35,11 +35,3 @@ files() {
 rooms=(core server clients deploy tests)
 export c_files='\.(c|h|cpp)$'
 export source_files='(\.(c|h|cpp|py|sh|js|mjs|sql)|^tests/run|^deploy/up|^deploy/down)$'
-
-# A C file with comments and texts blanked, lines kept where they were.
-code_of() {
-  perl -0777 -pe '
-    s{(/\*.*?\*/)|(//[^\n]*)|("(?:\\.|[^"\\\n])*")|(\x27(?:\\.|[^\x27\\\n])*\x27)}
-     { my $x = defined $3 ? "\"\"" : defined $4 ? "0" : " ";
-       my $n = () = $& =~ /\n/g; $x . "\n" x $n }gsex' "$1"
-}
