@@ -1,0 +1,27 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The daemon's inside as main.c sees it: what it opens at the start (catalog, models, scratch for
+ * each lane) and the table of routes it answers. Called by main.c only, from the main thread. */
+#ifndef LWD_API_APP_H
+#define LWD_API_APP_H
+
+#include <stddef.h>
+
+#include "../exchange.h"
+
+typedef struct lwd_app lwd_app;
+
+typedef struct lwd_app_options {
+    const char *data_dir; /* directory that holds the catalog; must exist */
+    unsigned lanes;       /* lwd_request.lane is below this: 0 the event thread, the rest workers */
+} lwd_app_options;
+
+/* NULL on failure, with one sentence for the operator in `why`. */
+lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_size);
+
+/* The routes; static, valid for ever. Handlers are called with the lwd_app as their context. */
+const lwd_route *lwd_app_routes(size_t *n);
+
+/* Waits for writes under way and frees everything. No handler may run any more. */
+void lwd_app_stop(lwd_app *app);
+
+#endif
