@@ -1,14 +1,15 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The mechanism document: JSON text to lw_spec in SI units, with what the spec does not keep but
  * the edge needs (units, drive readings, titles). Structural faults are told here with the pointer
- * of the member that was sent; kinematic ones (mobility, closure, hold) are the core's. Indices into
- * bodies, joints, rods, couplings, drives, tools, outputs, modes and checks are those of the
+ * of the member that was sent; kinematic ones (mobility, closure, hold) are the core's. Indices
+ * into bodies, joints, rods, couplings, drives, tools, outputs, modes and checks are those of the
  * document, so the core's pointers fit the text as well. */
 #ifndef LWD_DOCUMENT_H
 #define LWD_DOCUMENT_H
 
 #include <leeway/spec.h>
 
+#include "../exchange.h"
 #include "edge.h"
 #include "findings.h"
 #include "json_in.h"

@@ -229,6 +229,11 @@ bool lwd_is_text(const lwd_reader *r)
     return r->node != NULL && cJSON_IsString(r->node);
 }
 
+bool lwd_is_object(const lwd_reader *r)
+{
+    return r->node != NULL && cJSON_IsObject(r->node);
+}
+
 size_t lwd_count(const lwd_reader *r)
 {
     size_t n = 0;
@@ -280,6 +285,15 @@ bool lwd_want_array(const lwd_reader *r, size_t least, size_t most, const char *
 static lwd_reader child_of(const lwd_reader *r, const cJSON *node, const char *name, size_t index)
 {
     return (lwd_reader){node, r, name, index, r->findings};
+}
+
+bool lwd_find(const lwd_reader *r, const char *name, lwd_reader *child)
+{
+    *child = child_of(r, NULL, name, 0);
+    if (lwd_is_object(r)) {
+        child->node = cJSON_GetObjectItemCaseSensitive(r->node, name);
+    }
+    return child->node != NULL;
 }
 
 bool lwd_first(const lwd_reader *r, lwd_reader *child)

@@ -49,7 +49,11 @@ bool lwd_next(lwd_reader *child);
 /* Elements or members; 0 for anything else. */
 size_t lwd_count(const lwd_reader *r);
 
+/* The member of an object by name, without telling anything; false, no node, if there is none. */
+bool lwd_find(const lwd_reader *r, const char *name, lwd_reader *child);
+
 bool lwd_is_given(const lwd_reader *r);
+bool lwd_is_object(const lwd_reader *r);
 bool lwd_is_null(const lwd_reader *r);
 bool lwd_is_text(const lwd_reader *r);
 /* Tell a wrong type; true if it is right. */
