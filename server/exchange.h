@@ -86,13 +86,14 @@ typedef struct lwd_reply {
     lwd_buf body;
     lwd_header header[LWD_HEADER_MAX]; /* ETag, Location, Retry-After, Allow ... */
     size_t n_header;
-    int log_code;             /* verdict or problem code for the log line and the metrics, 0 = none */
+    int log_code;             /* verdict or problem code, for the log line; 0 = none */
 } lwd_reply;
 
 /* Adds a header; false if the table is full or the value does not fit. */
 bool lwd_reply_header(lwd_reply *reply, const char *name, const char *value);
 
-/* A handler fills the reply; it never fails otherwise. `context` is the daemon's (catalog, models). */
+/* A handler fills the reply; it never fails otherwise. `context` is the daemon's (catalog,
+ * models). */
 typedef void (*lwd_handler)(void *context, const lwd_request *request, lwd_reply *reply);
 
 typedef struct lwd_route {
@@ -100,7 +101,7 @@ typedef struct lwd_route {
     const char *pattern;  /* "/v1/mechanisms/{}/inverse": each {} captures one segment */
     lwd_handler handler;
     lwd_role role;        /* the least role that may call it; LWD_ROLE_NONE = open to all */
-    bool slow;            /* true: runs in a worker (suspended connection), not on the event thread */
+    bool slow;            /* runs in a worker (suspended connection), not on the event thread */
     size_t body_max;      /* largest body in bytes; 0 = takes no body */
     const char *name;     /* for metrics and log: "inverse" */
 } lwd_route;

@@ -4,9 +4,9 @@
 
 #include <stdio.h>
 #include <string.h>
-#include <strings.h>
 
 #include "../codec/json_out.h"
+#include "../negotiate.h"
 
 enum { PLAIN_MAX = 255, FINDINGS_MAX = 16 };
 
@@ -49,74 +49,14 @@ lwd_problem_id lwd_problem_of_finding(const lwd_finding *finding)
 
 /* ---- which form ------------------------------------------------------------------------------ */
 
-/* Thousandths of the q of one element of Accept ("text/plain; q=0.5"); 1000 without one. */
-static int weight(const char *element, size_t len)
-{
-    for (size_t i = 0; i + 2 < len; i++) {
-        if (element[i] != ';') {
-            continue;
-        }
-        size_t k = i + 1;
-        while (k < len && (element[k] == ' ' || element[k] == '\t')) {
-            k++;
-        }
-        if (k + 2 >= len || (element[k] | 0x20) != 'q' || element[k + 1] != '=') {
-            continue;
-        }
-        int value = element[k + 2] == '1' ? 1000 : 0;
-        int unit = 100;
-        for (k += 4; k < len && unit > 0 && element[k] >= '0' && element[k] <= '9'; k++) {
-            value += (element[k] - '0') * unit;
-            unit /= 10;
-        }
-        return value > 1000 ? 1000 : value;
-    }
-    return 1000;
-}
-
-/* 3: the type itself, 2: its main type with a star, 1: everything, 0: another type. */
-static int match(const char *element, size_t len, const char *type)
-{
-    size_t n = 0;
-    while (n < len && element[n] != ';' && element[n] != ' ' && element[n] != '\t') {
-        n++;
-    }
-    size_t stem = strcspn(type, "/") + 1;
-    if (n == strlen(type) && strncasecmp(element, type, n) == 0) {
-        return 3;
-    }
-    if (n == stem + 1 && element[stem] == '*' && strncasecmp(element, type, stem) == 0) {
-        return 2;
-    }
-    return n == 3 && memcmp(element, "*/*", 3) == 0 ? 1 : 0;
-}
-
-/* How welcome a type is, 0 to 1000: the most specific element decides. */
-static int welcome(const char *accept, const char *type)
-{
-    int best_match = 0;
-    int value = 0;
-    for (const char *p = accept; *p != '\0';) {
-        p += strspn(p, " \t,");
-        size_t len = strcspn(p, ",");
-        int m = match(p, len, type);
-        if (m > best_match) {
-            best_match = m;
-            value = weight(p, len);
-        }
-        p += len;
-    }
-    return value;
-}
-
 bool lwd_prefers_plain(const char *accept)
 {
     if (accept == NULL) {
         return false;
     }
-    int plain = welcome(accept, "text/plain");
-    return plain > welcome(accept, "application/json") &&
-           plain > welcome(accept, "application/problem+json");
+    int plain = lwd_accept_quality(accept, "text/plain");
+    return plain > lwd_accept_quality(accept, "application/json") &&
+           plain > lwd_accept_quality(accept, "application/problem+json");
 }
 
 /* ---- writing --------------------------------------------------------------------------------- */

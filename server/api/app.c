@@ -1,0 +1,115 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Start and stop of the daemon's inside, and the table of its routes. Main thread only. */
+#include "app.h"
+
+#include <stdio.h>
+#include <stdlib.h>
+
+#include "api.h"
+
+enum {
+    QUESTION_MAX = 65536,
+    DOCUMENT_MAX = LWD_CATALOG_DOCUMENT_MAX,
+    CHANGE_MAX = 16384
+};
+
+/* Quick routes answer on the event thread; a mechanism that must be loaded first, or a batch longer
+ * than LWD_BATCH_QUICK, leaves it by LWD_DEFER. Listings read a page of the catalog (some tens of
+ * microseconds), documents up to 4 MB. */
+static const lwd_route routes[] = {
+    {LWD_GET, "/v1/mechanisms", lwd_get_mechanisms, LWD_ROLE_QUERY, true, 0, "mechanisms"},
+    {LWD_PUT, "/v1/mechanisms/{}", lwd_put_mechanism, LWD_ROLE_AUTHOR, true, DOCUMENT_MAX, "put"},
+    {LWD_GET, "/v1/mechanisms/{}", lwd_get_mechanism, LWD_ROLE_QUERY, false, 0, "mechanism"},
+    {LWD_GET, "/v1/mechanisms/{}/state", lwd_get_state, LWD_ROLE_QUERY, false, 0, "state"},
+    {LWD_GET, "/v1/mechanisms/{}/revisions", lwd_get_revisions, LWD_ROLE_QUERY, true, 0,
+     "revisions"},
+    {LWD_GET, "/v1/mechanisms/{}/revisions/{}", lwd_get_revision, LWD_ROLE_QUERY, true, 0,
+     "revision"},
+    {LWD_GET, "/v1/mechanisms/{}/revisions/{}/report", lwd_get_report, LWD_ROLE_QUERY, true, 0,
+     "report"},
+    {LWD_POST, "/v1/mechanisms/{}/revisions/{}/publish", lwd_post_publish, LWD_ROLE_ADMIN, true,
+     CHANGE_MAX, "publish"},
+    {LWD_POST, "/v1/mechanisms/{}/revisions/{}/withdraw", lwd_post_withdraw, LWD_ROLE_ADMIN, true,
+     CHANGE_MAX, "withdraw"},
+    {LWD_GET, "/v1/mechanisms/{}/history", lwd_get_history, LWD_ROLE_QUERY, true, 0, "history"},
+    {LWD_GET, "/v1/mechanisms/{}/modes", lwd_get_modes, LWD_ROLE_QUERY, true, 0, "modes"},
+    {LWD_GET, "/v1/mechanisms/{}/difference", lwd_get_difference, LWD_ROLE_QUERY, true, 0,
+     "difference"},
+    {LWD_POST, "/v1/mechanisms/{}/inverse", lwd_post_inverse, LWD_ROLE_QUERY, false, QUESTION_MAX,
+     "inverse"},
+    {LWD_POST, "/v1/mechanisms/{}/forward", lwd_post_forward, LWD_ROLE_QUERY, false, QUESTION_MAX,
+     "forward"},
+    {LWD_POST, "/v1/mechanisms/{}/jacobian", lwd_post_jacobian, LWD_ROLE_QUERY, false,
+     QUESTION_MAX, "jacobian"},
+    {LWD_POST, "/v1/mechanisms/{}/margin", lwd_post_margin, LWD_ROLE_QUERY, false, QUESTION_MAX,
+     "margin"},
+    {LWD_POST, "/v1/mechanisms/{}/reach", lwd_post_reach, LWD_ROLE_QUERY, false, QUESTION_MAX,
+     "reach"},
+    {LWD_GET, "/v1/mechanisms/{}/margin", lwd_get_margin, LWD_ROLE_QUERY, false, 0, "margin"},
+    {LWD_GET, "/v1/mechanisms/{}/reach", lwd_get_reach, LWD_ROLE_QUERY, false, 0, "reach"},
+    {LWD_GET, "/healthz", lwd_get_healthz, LWD_ROLE_NONE, false, 0, "healthz"},
+    {LWD_GET, "/readyz", lwd_get_readyz, LWD_ROLE_NONE, false, 0, "readyz"},
+    {LWD_GET, "/metrics", lwd_get_metrics, LWD_ROLE_QUERY, false, 0, "metrics"},
+    {LWD_GET, "/about", lwd_get_about, LWD_ROLE_NONE, false, 0, "about"},
+    {LWD_GET, "/openapi.json", lwd_get_openapi, LWD_ROLE_NONE, false, 0, "openapi"},
+    {LWD_GET, "/problems/{}", lwd_get_problem, LWD_ROLE_NONE, false, 0, "problem"},
+};
+
+const lwd_route *lwd_app_routes(size_t *n)
+{
+    *n = sizeof routes / sizeof routes[0];
+    return routes;
+}
+
+void lwd_app_stop(lwd_app *app)
+{
+    if (app == NULL) {
+        return;
+    }
+    lwd_catalog_close(app->catalog); /* the change callback ends with it */
+    for (unsigned i = 0; i < app->n_lanes && app->lane != NULL; i++) {
+        lwd_lane_clear(&app->lane[i]);
+    }
+    lwd_store_free(app->store);
+    lwd_buf_clear(&app->about);
+    free(app->lane);
+    free(app);
+}
+
+static bool open_catalog(lwd_app *app, const char *dir, char *why, size_t why_size)
+{
+    lwd_catalog_error err;
+    lwd_catalog_options options = LWD_CATALOG_OPTIONS_DEFAULT;
+    options.changed = lwd_store_changed;
+    options.changed_context = app->store;
+    if (lwd_catalog_open(&app->catalog, dir, &options, &err) != LWD_CATALOG_OK) {
+        (void)snprintf(why, why_size, "The catalog in %s does not open: %s", dir,
+                       err.why[0] != '\0' ? err.why : lwd_catalog_result_text(err.result));
+        return false;
+    }
+    lwd_store_catalog(app->store, app->catalog);
+    return true;
+}
+
+lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_size)
+{
+    lwd_app *app = calloc(1, sizeof *app);
+    (void)snprintf(why, why_size, "There is not enough memory to start.");
+    if (app == NULL) {
+        return NULL;
+    }
+    lwd_buf_init(&app->about, 0);
+    app->n_lanes = options->lanes;
+    app->store = lwd_store_new(NULL);
+    app->lane = calloc(options->lanes, sizeof *app->lane);
+    for (unsigned i = 0; app->lane != NULL && i < options->lanes; i++) {
+        lwd_buf_init(&app->lane[i].scrap.body, 0);
+    }
+    if (app->store == NULL || app->lane == NULL || !lwd_about_write(&app->about)
+        || !open_catalog(app, options->data_dir, why, why_size)) {
+        lwd_app_stop(app);
+        return NULL;
+    }
+    why[0] = '\0';
+    return app;
+}

@@ -1,0 +1,59 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Writes answers as JSON: the members every answer carries, then what the question asked for, all
+ * numbers in the units of the question. The order of members is fixed. Nothing here decides
+ * anything: codes come from the core. Called by api/ask.c from any thread. */
+#ifndef LWD_ANSWER_OUT_H
+#define LWD_ANSWER_OUT_H
+
+#include <leeway/query.h>
+
+#include "edge.h"
+#include "json_out.h"
+#include "question.h"
+
+typedef struct lwd_answer_head {
+    const lwd_edge *edge;
+    const lwd_question *question;
+    const char *state;     /* of the revision: "draft", "published", "withdrawn" */
+    const char *served_at; /* RFC 3339, UTC */
+} lwd_answer_head;
+
+/* Each writes one whole object. */
+void lwd_answer_inverse(lwd_json *json, const lwd_answer_head *head,
+                        const lw_inverse_answer *answer);
+void lwd_answer_forward(lwd_json *json, const lwd_answer_head *head,
+                        const lw_forward_answer *answer);
+void lwd_answer_jacobian(lwd_json *json, const lwd_answer_head *head,
+                         const lw_jacobian_answer *answer);
+void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head,
+                       const lw_margin_answer *answer);
+void lwd_answer_reach(lwd_json *json, const lwd_answer_head *head, const lw_reach_answer *answer);
+
+/* The verdict of reach as key=value lines for a PLC, at most LWD_PLC_MAX bytes in all. */
+enum { LWD_PLC_MAX = 255 };
+void lwd_plc_reach(lwd_buf *buf, const lwd_answer_head *head, const lw_reach_answer *answer);
+
+/* ---- parts, shared by the files of the answer side ---- */
+
+void lwd_answer_begin(lwd_json *json, const lwd_answer_head *head, lw_outcome outcome,
+                      const char *reason);
+void lwd_answer_end(lwd_json *json);
+void lwd_answer_pose(lwd_json *json, const lwd_answer_head *head, const lw_frame *tool,
+                     const double *coord);
+void lwd_answer_solution(lwd_json *json, const lwd_answer_head *head, const lw_solution *solution);
+void lwd_answer_limit(lwd_json *json, const lwd_answer_head *head, const lw_limit *limit);
+void lwd_answer_mode(lwd_json *json, const lwd_answer_head *head, const lw_mode *mode);
+void lwd_answer_found(lwd_json *json, const lw_found *found, bool complete, lw_basis basis);
+void lwd_answer_off_by(lwd_json *json, const lwd_answer_head *head, double position_m,
+                       double angle_rad, size_t limb, double limb_m);
+/* "margins" and "least". */
+void lwd_answer_margins(lwd_json *json, const lwd_answer_head *head,
+                        const lw_margin_answer *margin);
+/* "asked": the question as understood. */
+void lwd_answer_asked(lwd_json *json, const lwd_answer_head *head);
+/* Name of a limit's owner: "wrist.second", "strut-3", "m2". */
+const char *lwd_limit_name(const lwd_edge *edge, const lw_limit *limit);
+/* How far beyond, in the units of the answer. */
+double lwd_limit_over(const lwd_edge *edge, lwd_units units, const lw_limit *limit);
+
+#endif

@@ -1,0 +1,64 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* One question as understood: SI numbers and indices of one mechanism, and how its answer is to be
+ * written. Filled by question_in.c (JSON) and question_query.c (query string), read by api/ask.c
+ * and answer_out.c. About 45 kB: it lives in a lane's scratch, never on the stack. */
+#ifndef LWD_QUESTION_H
+#define LWD_QUESTION_H
+
+#include <stdbool.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#include <leeway/query.h>
+
+#include "edge.h"
+
+typedef enum lwd_asked {
+    LWD_ASK_INVERSE,
+    LWD_ASK_FORWARD,
+    LWD_ASK_JACOBIAN,
+    LWD_ASK_MARGIN,
+    LWD_ASK_REACH,
+    LWD_ASK_COUNT
+} lwd_asked;
+
+/* "inverse", "forward", ...: the last segment of the route. */
+const char *lwd_asked_word(lwd_asked kind);
+
+enum { LWD_REF_MAX = 32, LWD_EXPECT_MAX = 64, LWD_BATCH_MAX = 256 };
+
+/* What must be known before the mechanism is looked up. */
+typedef struct lwd_question_head {
+    bool has_ref;
+    char ref[LWD_REF_MAX + 1];
+    int64_t revision;                /* 0: the one that answers by default */
+    char expect[LWD_EXPECT_MAX + 1]; /* "": not given; else 8 or 64 hex digits, lower case */
+} lwd_question_head;
+
+typedef struct lwd_question {
+    lwd_asked kind;
+    lwd_question_head head;
+    lwd_units units;           /* of the question and of its answer */
+    size_t tool;
+    bool tool_is_written;
+    lw_spec_tool tool_written;
+    lwd_form form;             /* how poses are written in the answer */
+    lw_posture_ask posture;    /* inverse and reach: LW_BY_POSE; forward: LW_BY_DRIVES */
+    lw_posture_ask near;       /* what posture.near points at */
+    bool has_from;
+    lw_posture_ask from;
+    lw_posture_ask from_near;
+    bool any_mode;             /* reach: "mode": "any" */
+    bool all;                  /* forward */
+    bool has_point;            /* jacobian */
+    double point_m[3];
+    bool in_tool;
+    bool has_margin_min;       /* reach */
+    bool margin_min_is_number;
+    double margin_min_number;
+    lw_margin_min margin_min;  /* the members of an object */
+    int64_t budget;            /* reach: 0 = not given */
+    int64_t timeout_ms;        /* reach: 0 = not given */
+} lwd_question;
+
+#endif
