@@ -2,11 +2,11 @@
 # SPDX-License-Identifier: GPL-3.0-or-later
 """Kills a writing catalog with SIGKILL again and again and looks for every acknowledged write.
 
-    crash_catalog.py DRIVER [--kills 210] [--fresh 30] [--seconds 100]
+    crash_catalog.py DRIVER [--kills 250] [--fresh 25] [--seconds 100]
 
 All kills but the "fresh" ones fall on one growing directory; the fresh ones fall into the making of
 a new catalog. After each kill the file is opened by the next run through the catalog's own code
-(recovery of the log, quick check, a write load again); after every fourth also by Python's own
+(recovery of the log, quick check, a write load again); after every fifth also by Python's own
 sqlite3 module, which looks for everything acknowledged since its last look and recomputes each
 digest with hashlib, and by `catalog_driver check`. At the end everything acknowledged is looked for
 once more. Last, the checks themselves are tried on a damaged copy.
@@ -183,7 +183,7 @@ def growing(options, directory, rng):
             if line != "ready\n":
                 child.kill()
                 raise Fault(f"the catalog does not open after kill {i}: {line!r}")
-            time.sleep(rng.uniform(0, 0.04))
+            time.sleep(rng.uniform(0, 0.03))
             lines = ["ready"] + kill(child)
         if lines[:1] == ["ready"]:
             useful += 1
@@ -193,8 +193,8 @@ def growing(options, directory, rng):
             raise Fault(f"the catalog does not open after kill {i}: {lines[0]!r}")
         else:
             during_open += 1
-        if i % 4 == 3 or i == options.kills - 1:
-            if i % 8 == 3:  # one time our own recovery first, one time Python's
+        if i % 5 == 3 or i == options.kills - 1:
+            if i % 10 == 3:  # one time our own recovery first, one time Python's
                 run_check(options.driver, directory)
             db = open_file(directory)
             look_for(db, unseen)
@@ -234,7 +234,7 @@ def main():
     parser = argparse.ArgumentParser(description="kills a writing catalog and checks what is left")
     parser.add_argument("driver")
     parser.add_argument("--kills", type=int, default=250)
-    parser.add_argument("--fresh", type=int, default=30)
+    parser.add_argument("--fresh", type=int, default=25)
     parser.add_argument("--seconds", type=float, default=100)
     options = parser.parse_args()
     rng = random.Random(SEED)
@@ -268,6 +268,9 @@ def main():
     except Fault as fault:
         print(f"FAILED: {fault}; the directory is kept: {scratch}", file=sys.stderr)
         return 1
+    except BaseException:
+        shutil.rmtree(scratch)
+        raise
     shutil.rmtree(scratch)
     return 0
 
