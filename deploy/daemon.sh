@@ -40,6 +40,6 @@ down_command() {
   if [ "$1" = "${root:-}/build/run" ]; then
     printf 'deploy/down\n'
   else
-    printf 'deploy/down --data %s\n' "$1"
+    printf 'deploy/down --data %q\n' "$1"
   fi
 }
