@@ -290,6 +290,25 @@ def check_tilt_table(m):
     show("  hexagons miss similarity by %.1f mm (root mean square)", miss)
 
 
+def check_label_stage(m, random):
+    """Home's pose in all 16 modes; the other elbow from the mirror image about shoulder-pivot."""
+    at = {j["name"]: np.array(j["at"][:2], float) for j in m.joints}
+    home, other = m.readings(m.reference()), {}
+    for i, d in enumerate(m.drives, 1):
+        line, crank = (at[k % i] - at["shoulder-%d" % i] for k in ("pivot-%d", "elbow-%d"))
+        turn = 2 * (math.atan2(line[1], line[0]) - math.atan2(crank[1], crank[0]))
+        other[d["name"]] = home[d["name"]] + (turn / DEGREE + 180) % 360 - 180
+    holds = []
+    for signs in ways.itertools.product([1, -1], repeat=4):
+        readings = {k: home[k] if s > 0 else other[k] for k, s in zip(home, signs)}
+        state = m.assemble_near(readings, {"x": 0, "y": 0, "rz": 0}, random)
+        verify(state is not None and limb_signs(m, state) == list(signs)
+               and not m.limits_broken(state), "label-stage: home's pose in mode %s", signs)
+        holds.append(m.hold(state))
+    verify(min(holds) > 0.07, "label-stage: hold %.3f in a mode at home", min(holds))
+    show("  16 modes at home's pose: hold %.3f to %.3f", min(holds), max(holds))
+
+
 def check_lid_turner(m, home, random):
     doc = m.doc
     # Law of the differential screw at random postures: 360 deg for lead 36 - (-24) = 60 mm.
@@ -314,6 +333,11 @@ def check_lid_turner(m, home, random):
         plane = ways.hold(doc, np.zeros((1, 2)), signs_of_name("lid-turner", mode))[0]
         verify(abs(plane - m.hold(state)) < 1e-6, "lid-turner %s: plane hold %g, full %g", mode,
                plane, m.hold(state))
+    # All 64 modes are held with the plates in the middle.
+    holds = [ways.hold(doc, np.zeros((1, 2)), signs)[0]
+             for signs in ways.itertools.product([1, -1], repeat=6)]
+    verify(min(holds) > 0.15, "lid-turner: hold %.3f in a mode at the middle", min(holds))
+    show("  64 modes at the middle: hold %.3f to %.3f", min(holds), max(holds))
     # Four or five drives: no hold at all where an undriven carriage passes level, in any signs.
     largest, sets = 0.0, 0
     for n in (4, 5):
@@ -356,6 +380,8 @@ def main():
         check_first_question(m, home, questions[name])
         if name == "tilt-table":
             check_tilt_table(m)
+        if name == "label-stage":
+            check_label_stage(m, random)
         if name == "lid-turner":
             check_lid_turner(m, home, random)
     print("%d checks failed" % len(failures) if failures else "demo line: all checks hold")
