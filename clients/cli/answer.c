@@ -53,7 +53,7 @@ static const cJSON *batch_of(const cJSON *answer)
     if (cJSON_IsArray(answer)) {
         return answer;
     }
-    const cJSON *batch = lwc_json_get(answer, "batch");
+    const cJSON *batch = lwc_json_get(answer, "answers");
     return cJSON_IsArray(batch) ? batch : NULL;
 }
 

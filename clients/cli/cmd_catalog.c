@@ -1,13 +1,11 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Commands about the catalog: load, list, show, report, history, publish, withdraw, difference;
- * and about the service: health, about. */
+/* Commands that change the catalog: load, publish, withdraw. */
 #include <stdint.h>
 #include <stdlib.h>
 #include <string.h>
 
 #include "answer.h"
 #include "commands.h"
-#include "table.h"
 
 enum { DOCUMENT_MAX = 4 * 1024 * 1024 };
 
@@ -20,20 +18,6 @@ static int finish(lwc_session *session, cJSON *tree, lwc_text *text, int status)
     lwc_text_clear(text);
     cJSON_Delete(tree);
     return status;
-}
-
-/* Every member of an object, or a bare array, by name. */
-static void show_all(lwc_text *out, const cJSON *tree)
-{
-    if (cJSON_IsObject(tree)) {
-        const cJSON *member = NULL;
-        cJSON_ArrayForEach(member, tree)
-        {
-            lwc_value_block(out, member->string, member, 0);
-        }
-    } else {
-        lwc_value_block(out, "answer", tree, 0);
-    }
 }
 
 /* ---- load ----------------------------------------------------------------------------------- */
@@ -172,189 +156,6 @@ int lwc_cmd_load(lwc_session *session)
     return worst;
 }
 
-/* ---- looking -------------------------------------------------------------------------------- */
-
-/* The first array member of an object, or the value itself if it is an array. */
-static const cJSON *rows_of(const cJSON *tree, const char *name)
-{
-    if (cJSON_IsArray(tree)) {
-        return tree;
-    }
-    const cJSON *rows = lwc_json_get(tree, name);
-    return cJSON_IsArray(rows) ? rows : NULL;
-}
-
-int lwc_cmd_list(lwc_session *session)
-{
-    cJSON *tree = NULL;
-    if (!lwc_word_count(session, 0, 0, "list")) {
-        return LWC_EXIT_ERROR;
-    }
-    int status = lwc_get_json(session, "list", &tree, "/v1/mechanisms");
-    if (tree == NULL) {
-        return status;
-    }
-    lwc_text text = {0};
-    const cJSON *rows = rows_of(tree, "mechanisms");
-    if (rows != NULL && rows->child == NULL) {
-        lwc_text_puts(&text, "the catalog is empty\nnext: leeway load FILE\n");
-    } else if (rows == NULL || !lwc_object_table(&text, rows, 0)) {
-        show_all(&text, tree);
-    }
-    return finish(session, tree, &text, status);
-}
-
-/* Document, wherever the answer holds it. */
-static const cJSON *document_of(const cJSON *tree)
-{
-    const cJSON *document = lwc_json_get(tree, "document");
-    return cJSON_IsObject(document) ? document : tree;
-}
-
-/* Joint "between" two bodies, drive range and so on, one table a group. */
-static void show_document(lwc_text *out, const cJSON *document)
-{
-    const cJSON *member = NULL;
-    cJSON_ArrayForEach(member, document)
-    {
-        if (strcmp(member->string, "format") != 0) {
-            lwc_value_block(out, member->string, member, 0);
-        }
-    }
-}
-
-int lwc_cmd_show(lwc_session *session)
-{
-    const char *name = NULL;
-    long revision = 0;
-    cJSON *tree = NULL;
-    if (!lwc_word_count(session, 1, 2, "show NAME [REV]") || !lwc_word_name(session, 0, &name) ||
-        (session->args->n_words > 1 && !lwc_word_revision(session, 1, &revision))) {
-        return LWC_EXIT_ERROR;
-    }
-    int status = revision > 0 ? lwc_get_json(session, "show", &tree,
-                                             "/v1/mechanisms/%s/revisions/%ld", name, revision)
-                              : lwc_get_json(session, "show", &tree, "/v1/mechanisms/%s", name);
-    if (tree == NULL) {
-        return status;
-    }
-    lwc_text text = {0};
-    const cJSON *document = document_of(tree);
-    const cJSON *member = NULL;
-    cJSON_ArrayForEach(member, tree)
-    {
-        if (document != tree && member != document) {
-            lwc_value_block(&text, member->string, member, 0);
-        }
-    }
-    if (document != tree) {
-        lwc_text_putc(&text, '\n');
-    }
-    show_document(&text, document);
-    return finish(session, tree, &text, status);
-}
-
-/* The revision that answers by default, or else the newest; 0 if the answer names none. */
-static long default_revision(const cJSON *tree)
-{
-    static const char *const NAMES[] = {"answering", "published", "revision", "latest"};
-    for (size_t i = 0; i < sizeof NAMES / sizeof NAMES[0]; i++) {
-        double number = 0.0;
-        const cJSON *inner = lwc_json_get(tree, NAMES[i]);
-        if ((lwc_json_number(tree, NAMES[i], &number) ||
-             lwc_json_number(inner, "revision", &number)) &&
-            number >= 1.0 && number <= LWC_REVISION_MAX) {
-            return (long)number;
-        }
-    }
-    return 0;
-}
-
-int lwc_cmd_report(lwc_session *session)
-{
-    const char *name = NULL;
-    long revision = 0;
-    cJSON *tree = NULL;
-    if (!lwc_word_count(session, 1, 2, "report NAME [REV]") || !lwc_word_name(session, 0, &name) ||
-        (session->args->n_words > 1 && !lwc_word_revision(session, 1, &revision))) {
-        return LWC_EXIT_ERROR;
-    }
-    if (revision == 0) {
-        lwc_args quiet = *session->args;
-        lwc_session look = {.args = &quiet, .http = session->http};
-        quiet.json = false;
-        int status = lwc_get_json(&look, "report", &tree, "/v1/mechanisms/%s", name);
-        if (tree == NULL) {
-            return status;
-        }
-        revision = default_revision(tree);
-        cJSON_Delete(tree);
-        if (revision == 0) {
-            lwc_complain("which revision? See: leeway history %s; then: leeway report %s REV", name,
-                         name);
-            return LWC_EXIT_ERROR;
-        }
-    }
-    int status = lwc_get_json(session, "report", &tree, "/v1/mechanisms/%s/revisions/%ld/report",
-                              name, revision);
-    if (tree == NULL) {
-        return status;
-    }
-    lwc_text text = {0};
-    const cJSON *findings = lwc_findings(tree);
-    const cJSON *member = NULL;
-    cJSON_ArrayForEach(member, tree)
-    {
-        if (member != findings) {
-            lwc_value_block(&text, member->string, member, 0);
-        }
-    }
-    if (findings != NULL) {
-        lwc_text_puts(&text, "\nfindings\n");
-        if (lwc_show_findings(&text, findings) == 0) {
-            lwc_text_puts(&text, "  none\n");
-        }
-    }
-    return finish(session, tree, &text, status);
-}
-
-int lwc_cmd_history(lwc_session *session)
-{
-    const char *name = NULL;
-    cJSON *tree = NULL;
-    if (!lwc_word_count(session, 1, 1, "history NAME") || !lwc_word_name(session, 0, &name)) {
-        return LWC_EXIT_ERROR;
-    }
-    int status = lwc_get_json(session, "history", &tree, "/v1/mechanisms/%s/revisions", name);
-    if (tree == NULL) {
-        return status;
-    }
-    lwc_text text = {0};
-    show_all(&text, tree);
-    return finish(session, tree, &text, status);
-}
-
-int lwc_cmd_difference(lwc_session *session)
-{
-    const char *name = NULL;
-    long from = 0;
-    long to = 0;
-    cJSON *tree = NULL;
-    if (!lwc_word_count(session, 3, 3, "difference NAME A B") ||
-        !lwc_word_name(session, 0, &name) || !lwc_word_revision(session, 1, &from) ||
-        !lwc_word_revision(session, 2, &to)) {
-        return LWC_EXIT_ERROR;
-    }
-    int status = lwc_get_json(session, "difference", &tree,
-                              "/v1/mechanisms/%s/difference?from=%ld&to=%ld", name, from, to);
-    if (tree == NULL) {
-        return status;
-    }
-    lwc_text text = {0};
-    show_all(&text, tree);
-    return finish(session, tree, &text, status);
-}
-
 /* ---- publish, withdraw ---------------------------------------------------------------------- */
 
 static bool put_accept(cJSON *body, const char *list)
@@ -414,7 +215,9 @@ static int change_state(lwc_session *session, const char *verb, const char *done
         return status;
     }
     lwc_text text = {0};
-    lwc_text_printf(&text, "%s revision %ld %s\n", name, revision, done);
+    const cJSON *changed = lwc_json_get(tree, "changed");
+    lwc_text_printf(&text, "%s revision %ld %s%s\n", name, revision, done,
+                    cJSON_IsFalse(changed) ? " (it was so already)" : "");
     (void)lwc_show_findings(&text, lwc_findings(tree));
     return finish(session, tree, &text, status);
 }
@@ -428,50 +231,4 @@ int lwc_cmd_withdraw(lwc_session *session)
 {
     return change_state(session, "withdraw",
                         "is withdrawn; to let another answer: leeway publish NAME REV");
-}
-
-/* ---- the service ---------------------------------------------------------------------------- */
-
-int lwc_cmd_health(lwc_session *session)
-{
-    static const char *const PATHS[] = {"/healthz", "/readyz"};
-    static const char *const WORDS[] = {"alive", "ready"};
-    int status = LWC_EXIT_YES;
-    if (!lwc_word_count(session, 0, 0, "health")) {
-        return LWC_EXIT_ERROR;
-    }
-    for (size_t i = 0; i < 2; i++) {
-        lwc_reply reply = {0};
-        lwc_request request = {.method = "GET", .path = PATHS[i], .once = true};
-        lwc_contact contact = lwc_http_ask(session->http, &request, &reply);
-        bool yes = reply.status >= 200 && reply.status < 300;
-        if (contact != LWC_ANSWERED) {
-            lwc_text_clear(&reply.body);
-            return lwc_contact_exit(contact);
-        }
-        if (session->args->json) {
-            lwc_print_raw(&reply);
-        } else {
-            (void)printf("%-6s %s (%s answered %ld)\n", WORDS[i], yes ? "yes" : "no", PATHS[i],
-                         reply.status);
-        }
-        status = yes ? status : LWC_EXIT_NO;
-        lwc_text_clear(&reply.body);
-    }
-    return status;
-}
-
-int lwc_cmd_about(lwc_session *session)
-{
-    cJSON *tree = NULL;
-    if (!lwc_word_count(session, 0, 0, "about")) {
-        return LWC_EXIT_ERROR;
-    }
-    int status = lwc_get_json(session, "about", &tree, "/about");
-    if (tree == NULL) {
-        return status;
-    }
-    lwc_text text = {0};
-    show_all(&text, tree);
-    return finish(session, tree, &text, status);
 }

@@ -16,7 +16,7 @@ _leeway_mechanisms() {
     esac
   done
   names=$("${COMP_WORDS[0]}" list --json --timeout 1 "${to[@]}" 2>/dev/null |
-    grep -o '"name":[ ]*"[a-z0-9-]*"' | sed 's/.*"\([a-z0-9-]*\)"$/\1/')
+    grep -o '"mechanism":[ ]*"[a-z0-9-]*"' | sed 's/.*"\([a-z0-9-]*\)"$/\1/')
   _leeway_words "$names"
 }
 

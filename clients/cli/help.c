@@ -23,7 +23,8 @@ static const struct topic {
                   "  leeway list\n\n"
                   "Next: leeway show NAME; leeway ask margin NAME m1=0 m2=0\n"},
     [LWC_SHOW] = {"show NAME [REV]",
-                  "Shows a mechanism, or one revision of it with its document.\n\n"
+                  "Shows a revision's document; without REV the mechanism's entry and the\n"
+                  "document that answers.\n\n"
                   "  leeway show label-stage\n"
                   "  leeway show label-stage 2 --json > label-stage-2.json\n\n"
                   "Next: leeway report NAME [REV]\n"},

@@ -130,8 +130,11 @@ static void show_next(lwc_text *out, const lwc_http *http, const char *asked, lo
         next = "see what is there: leeway list, leeway history NAME";
         break;
     case 409:
-        next = "see which revision is published: leeway history NAME; "
-               "publish one: leeway publish NAME REV; or name one: --revision N";
+        next = strcmp(asked, "publish") == 0
+                   ? "read the report (leeway report NAME REV); accept its warnings by name: "
+                     "--accept CODE,..."
+                   : "see which revision is published: leeway history NAME; "
+                     "publish one: leeway publish NAME REV; or name one: --revision N";
         break;
     case 412:
         next = "somebody changed it meanwhile; look again (leeway history NAME), then repeat";

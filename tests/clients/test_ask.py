@@ -276,7 +276,8 @@ class Answers(Case):
         refused = {"status": 422, "code": 1021, "title": "No such drive.", "pointer": "/batch/1"}
         for members, status in (([answer(), answer()], 0), ([answer(), answer(4, "out_of_reach")], 1),
                                 ([answer(4, "out_of_reach"), refused], 2)):
-            got = self.ask("inverse", answer(batch=members))
+            got = self.ask("inverse", {"mechanism": "label-stage", "count": 2,
+                                       "answers": members})
             self.assertEqual(got.status, status)
             self.assertIn("answer 2 of 2", got.out)
         self.assertIn("No such drive.", got.out)
@@ -353,29 +354,63 @@ class Catalog(Case):
         self.assertEqual(self.asked_body(), {})
         self.assertIn("leeway publish NAME REV", got.out)
 
+    def test_list_follows_the_pages(self):
+        get = "GET /v1/mechanisms"
+        answers = self.service.answers
+        row = {"mechanism": "label-stage", "answering": 3, "digest": "ab" * 32, "revisions": 4}
+        answers[get] = Reply(200, {"mechanisms": [row], "next": "label-stage"})
+        answers[f"{get}?cursor=label-stage"] = Reply(200, {
+            "mechanisms": [{**row, "mechanism": "lid-turner", "answering": None}], "next": None})
+        got = self.leeway("list")
+        self.assertEqual((got.status, got.err), (0, ""))
+        self.assertEqual([line.split() for line in got.out.splitlines()], [
+            ["mechanism", "answering", "digest", "revisions"],
+            ["label-stage", "3", "abababab", "4"], ["lid-turner", "-", "abababab", "4"]])
+        self.assertEqual(len(self.leeway("list", "--json").out.splitlines()), 2)
+        answers[f"{get}?cursor=label-stage"] = problem(500, 1090, "Broken.")
+        self.assertEqual(self.leeway("list").status, 2)
+        answers[get] = Reply(200, {"mechanisms": [], "next": None})
+        self.assertIn("leeway load FILE", self.leeway("list").out)
+        answers[get] = Reply(200, {"machines": []})
+        self.assertEqual(self.leeway("list").status, 2)
+
     def test_looking(self):
         get = "GET /v1/mechanisms"
         answers = self.service.answers
-        answers[get] = Reply(200, {"mechanisms": [{"name": "label-stage", "published": 3}]})
-        self.assertIn("label-stage", self.leeway("list").out)
-        answers[get] = Reply(200, {"mechanisms": []})
-        self.assertIn("leeway load FILE", self.leeway("list").out)
-        answers[f"{get}/a"] = Reply(200, {"name": "a", "published": 2})
-        answers[f"{get}/a/revisions/2"] = Reply(200, {"revision": 2, "document": {
-            "format": "leeway-mechanism/1", "name": "a", "joints": [
-                {"name": "j1", "type": "revolute", "axis": [0, 0, 1]}]}})
-        answers[f"{get}/a/revisions/2/report"] = Reply(200, {"mobility": 3, "findings": []})
-        answers[f"{get}/a/revisions"] = Reply(200, {"revisions": [{"revision": 2}]})
-        answers[f"{get}/a/difference?from=1&to=2"] = Reply(200, {"changes": ["m1 moved"]})
-        answers["GET /about"] = Reply(200, {"is_not": "a safety function"})
+        document = {"format": "leeway-mechanism/1", "name": "a", "joints": [
+            {"name": "j1", "type": "revolute", "axis": [0, 0, 1]}]}
+        answers[f"{get}/a"] = Reply(200, {"mechanism": "a", "answering": 2, "revisions": 3})
+        answers[f"{get}/b"] = Reply(200, {"mechanism": "b", "answering": None, "revisions": 1})
+        answers[f"{get}/a/revisions/2"] = Reply(200, document)
+        answers[f"{get}/b/revisions/1"] = Reply(200, document)
+        answers[f"{get}/a/revisions/2/report"] = Reply(200, {"mobility": {"computed": 3},
+                                                            "findings": []})
+        answers[f"{get}/a/revisions"] = Reply(200, {"revisions": [
+            {"revision": 2, "digest": "cd" * 32, "state": "published"}], "next": None})
+        answers[f"{get}/a/history"] = Reply(200, {"events": [
+            {"no": 1, "action": "publish", "by": "local", "reason": "measured"}], "next": None})
+        answers[f"{get}/a/difference?from=1&to=2"] = Reply(200, {
+            "mechanism": "a", "from": {"revision": 1, "state": "draft", "digest": "12" * 32},
+            "to": {"revision": 2, "state": "published", "digest": "34" * 32},
+            "changes": [{"of": "joint", "name": "j1", "what": "at", "text": "joint j1: moved"}]})
+        answers["GET /about"] = Reply(200, {"what_it_is_not": ["no safety function"]})
         self.assertIn("revolute", self.leeway("show", "a", "2").out)
-        self.assertRegex(self.leeway("show", "a").out, r"published +2")
-        self.assertRegex(self.leeway("report", "a").out, r"mobility +3\n\nfindings\n  none")
-        self.assertEqual(self.leeway("report", "a", "--json").out,
-                         '{"mobility": 3, "findings": []}\n')
-        self.assertIn("revisions", self.leeway("history", "a").out)
-        self.assertIn("m1 moved", self.leeway("difference", "a", "1", "2").out)
-        self.assertIn("safety function", self.leeway("about").out)
+        shown = self.leeway("show", "a").out
+        self.assertRegex(shown, r"answering +2")
+        self.assertIn("document of revision 2", shown)
+        self.assertIn("document of revision 1", self.leeway("show", "b").out)
+        self.assertEqual(json.loads(self.leeway("show", "a", "--json").out), document)
+        report = self.leeway("report", "a").out
+        self.assertRegex(report, r"^revision +2\n")
+        self.assertRegex(report, r"mobility +computed 3\n\nfindings\n  none\n$")
+        history = self.leeway("history", "a").out
+        self.assertIn("cdcdcdcd", history)
+        self.assertIn("measured", history)
+        difference = self.leeway("difference", "a", "1", "2").out
+        self.assertIn("to    revision 2, published, digest 34343434", difference)
+        self.assertIn("  joint j1: moved", difference)
+        self.assertIn("no safety function", self.leeway("about").out)
+        self.assertEqual(self.leeway("show", "c").status, 2)
 
 
 if __name__ == "__main__":

@@ -54,8 +54,7 @@ class Use(Case):
         self.assertEqual(self.service.asked, [])
 
     def test_takes_options_before_and_after_the_command(self):
-        self.service.answers["GET /v1/mechanisms"] = Reply(
-            200, {"mechanisms": []})
+        self.service.answers["GET /v1/mechanisms"] = Reply(200, {"mechanisms": []})
         for words in (["--json", "list"], ["list", "--json"],
                       ["list", "--json", f"--server={self.service.url}/"]):
             with self.subTest(words=words):
@@ -133,7 +132,8 @@ class Completion(Case):
 
     def test_completes_names_of_the_catalog(self):
         self.service.answers["GET /v1/mechanisms"] = Reply(200, {
-            "mechanisms": [{"name": "label-stage"}, {"name": "lid-turner"}, {"name": "tilt-table"}]})
+            "mechanisms": [{"mechanism": name} for name in ("label-stage", "lid-turner", "tilt-table")],
+            "next": None})
         self.assertEqual(self.complete("show", "l"), ["label-stage", "lid-turner"])
         self.assertEqual(self.complete("ask", "inverse", "tilt"), ["tilt-table"])
         host, port = self.service.url[len("http://"):].split(":")
