@@ -54,9 +54,10 @@ static bool read_moves(const lwd_reader *r, const lwd_document *doc, lw_spec_dri
 }
 
 /* The reading a drive shows in the reference posture unless it says otherwise: the lengths of the
- * rods it moves. */
-static double default_reference(const lwd_decode *d, const lw_spec_drive *drive)
+ * rods it moves. False if such a length is not known (told where the rod is read). */
+static bool default_reference(const lwd_decode *d, const lw_spec_drive *drive, double *out)
 {
+    bool known = true;
     double sum = 0.0;
     for (size_t i = 0; i < drive->n_term; i++) {
         size_t joint = 0;
@@ -65,9 +66,11 @@ static double default_reference(const lwd_decode *d, const lw_spec_drive *drive)
         if (lw_spec_coord_owner(&d->doc->spec, drive->term[i].coord, &joint, &part, &rod) &&
             joint == SIZE_MAX) {
             sum += drive->term[i].factor * d->rod_length[rod];
+            known = known && d->rod_length[rod] > 0.0;
         }
     }
-    return sum;
+    *out = sum;
+    return known;
 }
 
 static bool read_reading(const lwd_reader *r, const lwd_decode *d, const lw_spec_drive *drive,
@@ -78,15 +81,15 @@ static bool read_reading(const lwd_reader *r, const lwd_decode *d, const lw_spec
     lwd_units units = d->doc->units;
     lwd_reader m[3];
     const char *unit = NULL;
-    bool good = true;
-    out->at_reference = default_reference(d, drive);
+    bool good = default_reference(d, drive, &out->at_reference);
     out->per_unit = 1.0;
     if (lwd_is_given(r)) {
         if (!lwd_read_members(r, table, 3, m)) {
             return false;
         }
-        good = lwd_read_number(&m[0], -figure_most, figure_most, &out->at_reference) ||
-               !lwd_is_given(&m[0]);
+        if (lwd_is_given(&m[0])) {
+            good = lwd_read_number(&m[0], -figure_most, figure_most, &out->at_reference);
+        }
         good = (lwd_read_number(&m[1], -figure_most, figure_most, &out->per_unit) ||
                 !lwd_is_given(&m[1])) && good;
         if (good && !(fabs(out->per_unit) >= 1e-9)) {

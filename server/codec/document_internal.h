@@ -40,6 +40,7 @@ typedef struct lwd_decode {
     bool bodies_known; /* every body has a name, so references can be looked up */
     bool coords_known; /* every joint has a name and a type, every rod a name */
     bool drives_known; /* every drive has a name and a reading */
+    bool outputs_known; /* every output was understood */
     double rod_length[LW_MAX_RODS]; /* reference length as written, document units; 0 = not known */
 } lwd_decode;
 

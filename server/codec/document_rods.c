@@ -69,7 +69,8 @@ static void read_rod_range(const lwd_reader *r, const lwd_document *doc, double 
     rod->range_m = lwd_range_in(written, doc->units, false);
 }
 
-/* At both ends the axis is held against the rod's direction from its first end to its second. */
+/* A swivel's axis is the line of its pin; whichever way it is written, it is kept pointing along the
+ * rod as the rod leaves this end, and the angle between the two must be within the cone. */
 static void read_swivel(const lwd_reader *r, const lwd_document *doc, lw_spec_rod *rod, size_t k)
 {
     static const lwd_member table[2] = {{"axis", true}, {"cone", true}};
@@ -81,15 +82,20 @@ static void read_swivel(const lwd_reader *r, const lwd_document *doc, lw_spec_ro
     }
     bool has_axis = lwd_read_axis(&m[0], swivel->axis);
     bool has_cone =
-        lwd_read_positive(&m[1], doc->units.radians ? 3.141592653589793 : 180.0, &cone);
+        lwd_read_positive(&m[1], doc->units.radians ? 1.5707963267948966 : 90.0, &cone);
     if (!has_axis || !has_cone) {
         return;
     }
     swivel->present = true;
     swivel->cone_rad = lwd_angle_in(doc->units, cone);
     double along[3];
+    double dot = 0.0;
     for (int i = 0; i < 3; i++) {
-        along[i] = rod->end_m[1][i] - rod->end_m[0][i];
+        along[i] = rod->end_m[1 - k][i] - rod->end_m[k][i];
+        dot += along[i] * swivel->axis[i];
+    }
+    for (int i = 0; i < 3 && dot < 0.0; i++) {
+        swivel->axis[i] = -swivel->axis[i];
     }
     double at = lwd_angle_between(swivel->axis, along);
     if (!(at <= swivel->cone_rad)) {
@@ -98,8 +104,8 @@ static void read_swivel(const lwd_reader *r, const lwd_document *doc, lw_spec_ro
                        lwd_num_short(lwd_angle_out(doc->units, at)).text,
                        lwd_angle_word(doc->units));
         LWD_TELL(r, "reference-outside", "a cone that holds the reference posture", got,
-                 "In the reference posture the rod, seen from its first end to its second, stands "
-                 "at %s to the swivel's axis, outside its cone.", got);
+                 "In the reference posture the rod stands at %s to the swivel's axis, outside its "
+                 "cone.", got);
     }
 }
 

@@ -84,9 +84,11 @@ void lwd_decode_outputs(lwd_decode *d)
     if (!lwd_want_array(r, 1, LW_MAX_OUTPUTS, "outputs")) {
         return;
     }
+    d->outputs_known = true;
     for (bool more = lwd_first(r, &e); more; more = lwd_next(&e)) {
         lw_spec_output out = {LW_OUT_X, 0};
         if (!read_output(&e, d, &out)) {
+            d->outputs_known = false;
             continue;
         }
         for (size_t i = 0; i < spec->n_output; i++) {
@@ -121,6 +123,9 @@ static void read_joint_need(const lwd_reader *r, lwd_decode *d)
     for (size_t i = 0; i < doc->spec.n_output; i++) {
         output = output ||
                  (doc->spec.output[i].kind == LW_OUT_COORD && doc->spec.output[i].coord == coord);
+    }
+    if (!output && !d->outputs_known) {
+        return;
     }
     if (!output) {
         LWD_TELL(r, "not-an-output", "a joint coordinate among the outputs", r->name,

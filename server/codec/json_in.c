@@ -276,7 +276,9 @@ bool lwd_want_array(const lwd_reader *r, size_t least, size_t most, const char *
     size_t n = lwd_count(r);
     if (n < least || n > most) {
         LWD_TELL(r, n > most ? "too-many" : "too-few", expected, NULL,
-                 "Here stand %zu %s where %zu to %zu may stand.", n, of_what, least, most);
+                 "Here stand %zu, but %s %zu %s belong here.", n,
+                 least == most ? "just" : n > most ? "at most" : "at least",
+                 n > most ? most : least, of_what);
         return false;
     }
     return true;
