@@ -1,0 +1,27 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#ifndef LWI_MARGIN_H
+#define LWI_MARGIN_H
+
+#include "rates.h"
+
+/* Which margins the document's needs and drive figures make answerable. */
+bool lwi_accuracy_asked(const lw_model *model);
+bool lwi_load_asked(const lw_model *model);
+bool lwi_speed_asked(const lw_model *model);
+
+/* All margins and classes at a finished solution, into work->margin. */
+void lwi_margin_at(lw_margin_answer *out, const lw_model *model, const lw_spec_tool *tool,
+                   const lw_solution *solution, lw_work *work);
+
+/* One file a margin. They read the rates in work and write out->margin[...]. */
+void lwi_margin_accuracy(lw_margin_answer *out, const lw_model *model, const lwi_rates *rates,
+                         lw_work *work);
+void lwi_margin_load(lw_margin_answer *out, const lw_model *model, const lwi_rates *rates,
+                     lw_work *work);
+void lwi_margin_speed(lw_margin_answer *out, const lw_model *model, const lwi_rates *rates,
+                      lw_work *work);
+void lwi_margin_travel(lw_margin_answer *out, const lw_model *model, const lw_solution *solution);
+
+#define LWI_MARGIN_CAP 1e6
+
+#endif

@@ -1,0 +1,176 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Rates: null space, drive rates, output rates, tool twist. */
+#include "rates.h"
+
+#include "../math/tol.h"
+#include "../math/vec3.h"
+
+static void through_k(double *out, const double *row, const lw_model *m, const lw_work *work)
+{
+    size_t n = m->whole->n_var;
+    size_t left = m->mobility;
+    for (size_t j = 0; j < left; j++) {
+        out[j] = 0.0;
+    }
+    for (size_t v = 0; v < n; v++) {
+        double r = row[v];
+        const double *k = work->k + v * left;
+        for (size_t j = 0; r != 0.0 && j < left; j++) {
+            out[j] += r * k[j];
+        }
+    }
+}
+
+/* Body rotation rates that change yaw, pitch or roll of the tool alone. */
+static void zyx_rate(double rate[3], const double rot[9], lw_output_kind kind)
+{
+    double a[3];
+    lw_zyx_from_rot(a, rot);
+    double cp = cos(a[1]);
+    cp = fabs(cp) < 1e-9 ? (cp < 0.0 ? -1e-9 : 1e-9) : cp;
+    if (kind == LW_OUT_RZ) {
+        rate[0] = cos(a[0]) * sin(a[1]) / cp;
+        rate[1] = sin(a[0]) * sin(a[1]) / cp;
+        rate[2] = 1.0;
+    } else if (kind == LW_OUT_RY) {
+        rate[0] = -sin(a[0]);
+        rate[1] = cos(a[0]);
+        rate[2] = 0.0;
+    } else {
+        rate[0] = cos(a[0]) / cp;
+        rate[1] = sin(a[0]) / cp;
+        rate[2] = 0.0;
+    }
+}
+
+static void output_rates(const lw_model *m, const lw_spec_tool *tool, lwi_rates *r, lw_work *work)
+{
+    const lw_spec *spec = m->spec;
+    size_t left = m->mobility;
+    size_t turns = 0;
+    double rot[9];
+    double *row = work->vector[0];
+    for (size_t o = 0; o < spec->n_output; o++) {
+        turns += spec->output[o].kind >= LW_OUT_RX && spec->output[o].kind <= LW_OUT_RZ;
+    }
+    lwi_rot_mul(rot, work->ev.node[m->whole->body_node[tool->body]].rot, tool->frame.rot);
+    for (size_t o = 0; o < spec->n_output; o++) {
+        lw_output_kind kind = spec->output[o].kind;
+        double *out = work->tk + o * left;
+        if (kind == LW_OUT_COORD) {
+            double value;
+            lw_term term = {.coord = spec->output[o].coord, .factor = 1.0};
+            (void)lwi_terms(&value, row, m->whole, &work->state, &work->ev, &term, 1);
+            through_k(out, row, m, work);
+        } else if (kind <= LW_OUT_Z) {
+            memcpy(out, work->twist + (size_t)kind * left, left * sizeof *out);
+        } else {
+            /* All three rotations: the angular velocity itself, which has no singular attitude. */
+            double rate[3] = {0, 0, 0};
+            if (turns == 3) {
+                rate[kind - LW_OUT_RX] = 1.0;
+            } else {
+                zyx_rate(rate, rot, kind);
+            }
+            for (size_t j = 0; j < left; j++) {
+                out[j] = rate[0] * work->twist[3 * left + j] + rate[1] * work->twist[4 * left + j] +
+                         rate[2] * work->twist[5 * left + j];
+            }
+        }
+    }
+    r->n_output = spec->n_output;
+}
+
+void lwi_rates_at(lwi_rates *r, const lw_model *m, const lw_spec_tool *tool,
+                  const lw_config *config, const double point_m[3], lw_work *work)
+{
+    const lwi_system *sys = m->whole;
+    size_t left = m->mobility;
+    double *row = work->vector[0];
+    lwi_state_from_config(&work->state, sys, config);
+    lwi_eval_nodes(&work->ev, sys, &work->state);
+    r->m = left;
+    r->closure_ratio =
+        lwi_null_space(work->k, sys, m->rank, &work->state, &work->ev, &work->newton);
+    r->n_drive = m->spec->n_drive;
+    for (size_t d = 0; d < r->n_drive; d++) {
+        double value;
+        (void)lwi_terms(&value, row, sys, &work->state, &work->ev, m->spec->drive[d].term,
+                        m->spec->drive[d].n_term);
+        through_k(work->ak + d * left, row, m, work);
+    }
+    size_t node = sys->body_node[tool->body];
+    for (size_t c = 0; c < 6; c++) {
+        double f[3] = {0, 0, 0};
+        double w[3] = {0, 0, 0};
+        (c < 3 ? f : w)[c % 3] = 1.0;
+        lwi_twist_row(row, sys, &work->ev, node, point_m, f, w);
+        through_k(work->twist + c * left, row, m, work);
+    }
+    output_rates(m, tool, r, work);
+}
+
+void lwi_scaled_drives(double *out, const lw_model *m, const lwi_rates *r, const lw_work *work)
+{
+    for (size_t d = 0; d < r->n_drive; d++) {
+        double scale = m->spec->drive[d].turning ? 1.0 : 1.0 / m->length_m;
+        for (size_t j = 0; j < r->m; j++) {
+            out[d * r->m + j] = scale * work->ak[d * r->m + j];
+        }
+    }
+}
+
+void lwi_scaled_outputs(double *out, const lw_model *m, const lwi_rates *r, const lw_work *work)
+{
+    for (size_t o = 0; o < r->n_output; o++) {
+        lw_output_kind kind = m->spec->output[o].kind;
+        bool length = kind <= LW_OUT_Z ||
+                      (kind == LW_OUT_COORD &&
+                       !lw_spec_coord_turning(m->spec, m->spec->output[o].coord));
+        double scale = length ? 1.0 / m->length_m : 1.0;
+        for (size_t j = 0; j < r->m; j++) {
+            out[o * r->m + j] = scale * work->tk[o * r->m + j];
+        }
+    }
+}
+
+bool lwi_solve_through(double *out, const double *a, size_t n_in, const double *b, size_t n_out,
+                       size_t m, const double *weight, lw_work *work)
+{
+    /* One QR of the weighted A; then A^+ column by column. */
+    double *qr = work->matrix[0];
+    double *tau = work->vector[0];
+    double *e = work->vector[1];
+    size_t *perm = work->index;
+    double x[LWI_MAX_VARS];
+    for (size_t i = 0; i < n_in; i++) {
+        double w = weight != NULL ? 1.0 / weight[i] : 1.0;
+        for (size_t j = 0; j < m; j++) {
+            qr[i * m + j] = w * a[i * m + j];
+        }
+    }
+    size_t steps = lwi_qrp(qr, n_in, m, m, tau, perm);
+    if (steps < m || !(fabs(qr[(m - 1) * m + m - 1]) > 1e-12 * fabs(qr[0]))) {
+        return false;
+    }
+    for (size_t i = 0; i < n_in; i++) {
+        memset(e, 0, n_in * sizeof *e);
+        e[i] = weight != NULL ? 1.0 / weight[i] : 1.0;
+        lwi_qrp_qt(qr, n_in, steps, m, tau, e);
+        for (size_t k = m; k-- > 0;) {
+            double s = e[k];
+            for (size_t j = k + 1; j < m; j++) {
+                s -= qr[k * m + j] * x[perm[j]];
+            }
+            x[perm[k]] = s / qr[k * m + k];
+        }
+        for (size_t o = 0; o < n_out; o++) {
+            double s = 0.0;
+            for (size_t j = 0; j < m; j++) {
+                s += b[o * m + j] * x[j];
+            }
+            out[o * n_in + i] = s;
+        }
+    }
+    return true;
+}

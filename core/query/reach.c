@@ -1,0 +1,210 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Reach question: can the tool be there, in the mode asked for, with the margins asked for. Judged in
+ * the fixed order: readings that contradict, no real solution, the asked mode (hold, margins), other
+ * modes, limits. What is not settled is undecided. */
+#include "../math/tol.h"
+#include "../math/vec3.h"
+#include "margin.h"
+
+#include <stdint.h>
+
+bool lwi_inverse_one(lw_solution **sol, const lw_model *m, const lw_spec_tool *tool,
+                     const lwi_pose_known *pose, const lw_mode *mode, const lw_config *hint,
+                     lw_work *work);
+
+static void take_solution(lw_reach_answer *a, const lw_model *m, const lw_solution *sol,
+                          lw_work *work)
+{
+    lw_solution *slot = lwi_slot(work, LWI_SLOT_REACH);
+    lwi_solution_copy(slot, m, sol);
+    a->solution = slot;
+}
+
+/* A posture within limits in an allowed mode: hold, then thresholds. */
+static void judge_margins(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
+                          const lw_reach_ask *ask, lw_work *work)
+{
+    lwi_margin_at(&work->margin, m, tool, a->solution, work);
+    a->margin = &work->margin;
+    a->failed_margin = -1;
+    if ((work->margin.classes & (LW_CLASS_FORWARD | LW_CLASS_CONSTRAINT)) != 0) {
+        a->outcome = LW_OUTCOME_SINGULAR;
+        a->reason = work->margin.reason;
+        return;
+    }
+    double worst = 1e300;
+    for (int i = 0; i < LW_MARGIN_COUNT; i++) {
+        const lw_margin_value *v = &work->margin.margin[i];
+        if (!ask->margin_min.asked[i] || !v->asked) {
+            continue;
+        }
+        double least = ask->margin_min.value[i];
+        double relative = least > 0.0 ? v->value / least : 1e300;
+        if (!(v->value >= least) && relative < worst) {
+            worst = relative;
+            a->failed_margin = i;
+        }
+    }
+    a->outcome = a->failed_margin >= 0 ? LW_OUTCOME_LOW_MARGIN : LW_OUTCOME_OK;
+    a->reason = a->failed_margin >= 0 ? "reachable, but a margin is below its threshold" : NULL;
+    if (ask->from != NULL && a->outcome == LW_OUTCOME_OK) {
+        a->outcome = LW_OUTCOME_UNDECIDED;
+        a->reason = "the posture is good, but the move to it is not proved: moves are not examined "
+                    "by this version; ask without \"from\" for the posture alone";
+    }
+}
+
+static lw_code judge_from(lw_reach_answer *a, bool *stop, lw_mode *mode, const lw_model *m,
+                          const lw_reach_ask *ask, lw_work *work, lw_err *err)
+{
+    const lw_posture_answer *p;
+    *stop = false;
+    lw_code rc = lw_posture(&p, m, ask->tool, ask->tool_written, ask->from, work, err);
+    if (rc != LW_OK) {
+        return rc;
+    }
+    a->from = ask->from->kind == LW_BY_DRIVES ? &work->forward : NULL;
+    if (p->outcome == LW_OUTCOME_INCONSISTENT || p->solution == NULL) {
+        a->outcome = p->outcome == LW_OUTCOME_INCONSISTENT ? p->outcome : LW_OUTCOME_UNDECIDED;
+        a->reason = p->reason != NULL ? p->reason : "\"from\" names no posture";
+        *stop = true;
+        return LW_OK;
+    }
+    *mode = p->solution->mode;
+    lw_solution *start = lwi_slot(work, LWI_SLOT_START);
+    lwi_solution_copy(start, m, p->solution);
+    return LW_OK;
+}
+
+/* Explicit mechanisms: one branch per limb, no list. True when that settles the question. */
+static bool fast_path(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
+                      const lw_reach_ask *ask, const lw_config *hint, lw_work *work)
+{
+    lwi_pose_known pose;
+    lw_solution *sol;
+    lw_err unused = {0};
+    if (ask->any_mode || !m->explicit_inverse || !m->completion.usable ||
+        m->fused[tool->body] != m->fused[m->spec->tool[0].body] ||
+        lwi_pose_complete(&pose, m, tool, &ask->pose, &unused) != LW_OK ||
+        pose.off_by_position_m > 0.0 || pose.off_by_angle_rad > 1e-12) {
+        return false;
+    }
+    if (!lwi_inverse_one(&sol, m, tool, &pose, &a->asked_mode, hint, work) ||
+        !sol->within_limits) {
+        return false;
+    }
+    a->found.complex_count = a->found.real = a->found.within_limits = -1;
+    a->complete = true;
+    a->basis = LW_BASIS_EXPLICIT;
+    take_solution(a, m, sol, work);
+    return true;
+}
+
+static void list_others(lw_reach_answer *a, const lw_inverse_answer *inv)
+{
+    for (size_t i = 0; i < inv->n_solution && a->n_other < LW_MAX_MODES; i++) {
+        const lw_solution *s = &inv->solution[i];
+        if (s->within_limits && !lw_mode_same(&s->mode, &a->asked_mode)) {
+            a->other[a->n_other++] = s->mode;
+        }
+    }
+}
+
+static const lw_solution *in_mode(const lw_inverse_answer *inv, const lw_mode *mode, bool within)
+{
+    for (size_t i = 0; i < inv->n_solution; i++) {
+        const lw_solution *s = &inv->solution[i];
+        if ((mode == NULL || lw_mode_same(&s->mode, mode)) && (!within || s->within_limits)) {
+            return s;
+        }
+    }
+    return NULL;
+}
+
+static lw_code full_path(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
+                         const lw_reach_ask *ask, lw_work *work, lw_err *err)
+{
+    const lw_inverse_answer *inv;
+    lw_inverse_ask question = {
+        .tool = ask->tool, .tool_written = ask->tool_written, .pose = ask->pose};
+    lw_code rc = lw_inverse(&inv, m, &question, work, err);
+    if (rc != LW_OK) {
+        return rc;
+    }
+    a->found = inv->found;
+    a->complete = inv->complete;
+    a->basis = inv->basis;
+    a->off_by_position_m = inv->off_by_position_m;
+    a->off_by_angle_rad = inv->off_by_angle_rad;
+    a->off_by_limb = inv->off_by_limb;
+    a->off_by_limb_m = inv->off_by_limb_m;
+    if (inv->n_solution == 0) {
+        a->outcome = inv->outcome;
+        a->reason = inv->reason;
+        return LW_OK;
+    }
+    const lw_mode *wanted = ask->any_mode ? NULL : &a->asked_mode;
+    const lw_solution *good = in_mode(inv, wanted, true);
+    if (good != NULL) {
+        take_solution(a, m, good, work);
+        judge_margins(a, m, tool, ask, work);
+        return LW_OK;
+    }
+    list_others(a, inv);
+    const lw_solution *beyond = in_mode(inv, wanted, false);
+    if (a->n_other > 0) {
+        a->outcome = LW_OUTCOME_OTHER_MODE;
+        a->reason = beyond != NULL ? "the mode asked for is beyond a limit, another is not"
+                                   : "reachable, but not in the mode asked for";
+    } else if (!inv->complete) {
+        a->outcome = LW_OUTCOME_UNDECIDED;
+        a->reason = "what was found is beyond limits, but not every solution is known";
+    } else {
+        a->outcome = LW_OUTCOME_LIMIT;
+        a->reason = "every solution is beyond a limit";
+    }
+    take_solution(a, m, beyond != NULL ? beyond : inv->solution, work);
+    return LW_OK;
+}
+
+lw_code lw_reach(const lw_reach_answer **out, const lw_model *m, const lw_reach_ask *ask,
+                 lw_work *work, lw_err *err)
+{
+    lw_reach_answer *a = &work->reach;
+    lw_mode mode = m->home_mode;
+    bool stop = false;
+    *out = NULL;
+    memset(a, 0, sizeof *a);
+    a->failed_margin = -1;
+    a->off_by_limb = SIZE_MAX;
+    const lw_spec_tool *tool = lwi_tool(m, ask->tool, ask->tool_written, err);
+    if (tool == NULL) {
+        return LW_E_ARGUMENT;
+    }
+    if (ask->has_mode && ask->mode.count != m->n_limb) {
+        return LW_FAIL(err, LW_E_ARGUMENT, "/mode", "the mode needs %zu entries, one per limb",
+                       m->n_limb);
+    }
+    const lw_config *hint = &m->home;
+    if (ask->from != NULL && ask->from->kind != LW_BY_NOTHING) {
+        lw_code rc = judge_from(a, &stop, &mode, m, ask, work, err);
+        if (rc != LW_OK) {
+            return rc;
+        }
+        hint = &lwi_slot(work, LWI_SLOT_START)->config;
+    }
+    *out = a;
+    a->asked_mode = ask->has_mode ? ask->mode : mode;
+    if (stop) {
+        return LW_OK;
+    }
+    if (fast_path(a, m, tool, ask, hint, work)) {
+        judge_margins(a, m, tool, ask, work);
+        return LW_OK;
+    }
+    lw_code rc = full_path(a, m, tool, ask, work, err);
+    if (rc != LW_OK) {
+        *out = NULL;
+    }
+    return rc;
+}
