@@ -11,7 +11,8 @@ count=0
 while read -r file; do
   count=$((count + 1))
   if [[ $file =~ $c_files ]]; then
-    [ "$(sed -n 1p "$file")" = "/* $id */" ] || fault "$file:1" "the first line must be /* $id */"
+    first=$(sed -n 1p "$file")
+    [ "$first" = "/* $id */" ] || { [[ $file = *.cpp ]] && [ "$first" = "// $id" ]; } || fault "$file:1" "the first line must be /* $id */"
     [[ $(sed -n 2p "$file") =~ ^(/\*|//) ]] ||
       fault "$file:2" "the head comment is missing: what the file owns, and who may call"
   else
