@@ -67,8 +67,8 @@ static lwd_catalog_result take_lock(lwd_catalog *c, const char *dir, lwd_catalog
     char pid[24];
     int len = snprintf(pid, sizeof pid, "%ld\n", (long)getpid());
     /* The number is for the sentence above only; failing to write it harms nothing. */
-    if (ftruncate(fd, 0) == 0 && pwrite(fd, pid, (size_t)len, 0) != len)
-        (void)ftruncate(fd, 0);
+    if (ftruncate(fd, 0) == 0 && pwrite(fd, pid, (size_t)len, 0) != len && ftruncate(fd, 0) != 0)
+        pid[0] = '\0';
     c->lock_fd = fd;
     return LWD_CATALOG_OK;
 }

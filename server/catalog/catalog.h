@@ -75,7 +75,8 @@ const char *lwd_catalog_result_text(lwd_catalog_result result);
 /* Caller-owned; may be NULL everywhere. Filled on failure, `why` emptied on success. `why` is one
  * sentence for a person; it may name a path of this machine, so send it to administrators and to
  * the log, not to every client. For NOT_FOUND, NONE_PUBLISHED, NO_SOLUTIONS, CONFLICT, NOT_ALLOWED,
- * ARGUMENT, LIMIT, BUSY and CLOSING it names no path and may be sent to anybody. */
+ * ARGUMENT, LIMIT, BUSY and CLOSING it names no path and may be sent to anybody (but for the
+ * ARGUMENT of open and backup, which may name theirs). */
 typedef struct lwd_catalog_error {
     lwd_catalog_result result;
     int storage_code; /* extended code of the database library, 0 if it was not involved */

@@ -264,7 +264,8 @@ lwd_catalog_result lwd_catalog_connect(sqlite3 **out, const char *path, bool mem
     lwd_catalog_result result = LWD_CATALOG_OK;
     if (rc != SQLITE_OK)
         result = lwd_catalog_fail_db(err, db, rc, "open the catalog file");
-    /* recursive_triggers: else a replacing insert would delete rows past the triggers. */
+    /* Readers keep 512 KiB of pages each: the kernel caches the file, the daemon stays small.
+     * recursive_triggers: else a replacing insert would delete rows past the triggers. */
     if (result == LWD_CATALOG_OK)
         result = lwd_catalog_exec(db,
                                   "PRAGMA foreign_keys = ON; PRAGMA recursive_triggers = ON;"
@@ -272,7 +273,8 @@ lwd_catalog_result lwd_catalog_connect(sqlite3 **out, const char *path, bool mem
                                   "PRAGMA wal_autocheckpoint = 0; PRAGMA synchronous = FULL;",
                                   "set up the catalog file", err);
     if (result == LWD_CATALOG_OK && !writer)
-        result = lwd_catalog_exec(db, "PRAGMA query_only = ON", "set up a reader", err);
+        result = lwd_catalog_exec(db, "PRAGMA query_only = ON; PRAGMA cache_size = -512;",
+                                  "set up a reader", err);
     static const struct {
         const char *pragma;
         int64_t want;

@@ -456,7 +456,7 @@ static double seconds(void)
 }
 
 /* What a start of the daemon asks of the catalog: open, list, read every answering revision. */
-static void starts_with_200_mechanisms_in_far_less_than_a_second(void **state)
+static void starts_with_200_mechanisms_in_less_than_a_second(void **state)
 {
     (void)state;
     lwd_catalog *c = lab_open(base, NULL);
@@ -500,7 +500,7 @@ static void starts_with_200_mechanisms_in_far_less_than_a_second(void **state)
     lwd_catalog_close(c);
     free(text);
     print_message("opened and read 200 mechanisms in %.1f ms\n", 1e3 * taken);
-    assert_true(taken < 0.5);
+    assert_true(taken < 1.0);
 }
 
 #define CASE(f) cmocka_unit_test_setup_teardown(f, make_base, drop_base)
@@ -527,7 +527,7 @@ int main(void)
         CASE(the_log_stays_short),
         CASE(memory_that_runs_out_is_an_error_and_no_leak),
         cmocka_unit_test(the_library_out_of_memory_is_an_error_and_nothing_is_lost),
-        CASE(starts_with_200_mechanisms_in_far_less_than_a_second),
+        CASE(starts_with_200_mechanisms_in_less_than_a_second),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }
