@@ -200,7 +200,8 @@ def check_modes(m, home, random):
     verify(all(s > 0 for s in limb_signs(m, home)), "%s: home is not all plus", name)
     for mode, what in m.doc.get("modes", {}).items():
         example = what["example"]
-        state = m.assemble_near(example["drives"], example.get("near", {}), random)
+        joints = example.get("joints") or m.joints_of_readings(example["drives"])
+        state = m.assemble_near(joints, {}, random, 1)
         verify(state is not None, "%s %s: the example does not assemble", name, mode)
         if state is None:
             continue
@@ -301,7 +302,7 @@ def check_label_stage(m, random):
     holds = []
     for signs in ways.itertools.product([1, -1], repeat=4):
         readings = {k: home[k] if s > 0 else other[k] for k, s in zip(home, signs)}
-        state = m.assemble_near(readings, {"x": 0, "y": 0, "rz": 0}, random)
+        state = m.assemble_near(m.joints_of_readings(readings), {"x": 0, "y": 0, "rz": 0}, random)
         verify(state is not None and limb_signs(m, state) == list(signs)
                and not m.limits_broken(state), "label-stage: home's pose in mode %s", signs)
         holds.append(m.hold(state))
@@ -329,7 +330,7 @@ def check_lid_turner(m, home, random):
         show("  level circle of %s bounds the region over %.1f deg", d["name"], share)
     # The plane reading of ways.py against the full machine, at home and in the named modes.
     for mode, what in doc["modes"].items():
-        state = m.assemble_near(what["example"]["drives"], what["example"]["near"], random)
+        state = m.assemble_near(what["example"]["joints"], {}, random, 1)
         plane = ways.hold(doc, np.zeros((1, 2)), signs_of_name("lid-turner", mode))[0]
         verify(abs(plane - m.hold(state)) < 1e-6, "lid-turner %s: plane hold %g, full %g", mode,
                plane, m.hold(state))

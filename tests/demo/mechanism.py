@@ -220,7 +220,7 @@ class Mechanism:
         must close exactly. Between, spare readings may contradict one another."""
         for k in range(1, steps + 1):
             rows = rows_at(k / steps)
-            for _ in range(4):
+            for _ in range(2):
                 both = [(lambda s, f=f: 1e3 * f(s), n) for f, n in self.closure()] + rows
                 step = np.linalg.lstsq(self.jacobian(both, state), -self.residual(both, state),
                                        rcond=1e-12)[0]
@@ -250,18 +250,26 @@ class Mechanism:
             return rows
         return self.follow(state, rows_at, steps)
 
-    def assemble_near(self, readings, near, random, tries=40):
-        """The posture with these readings and, where given, this tool pose. Bodies driven from
-        the frame start where their reading puts them, the rest at random."""
-        rows = self.reading_rows(readings) + self.pose_rows(near)
+    def joints_of_readings(self, readings):
+        return {d["moves"]: (readings[d["name"]] - self.at_reference(d)) / self.per_unit(d)
+                for d in self.drives if d["name"] in readings}
+
+    def assemble_near(self, joints, near, random, tries=40):
+        """The posture with these joint coordinates (document units) and, where given, this tool
+        pose. Bodies start where the given joints put them, else as drawn, then at random."""
+        given = {k: v * self.unit_of(k) for k, v in joints.items()}
+        # Given to four decimals: coordinates beyond the freedoms are met by least squares only.
+        rows = []
+        for name, value in given.items():
+            f, names = self.coordinate(name)
+            rows.append((lambda s, f=f, value=value: f(s) - value, names))
+        rows += self.pose_rows(near)
         for trial in range(tries):
             bodies, q = self.reference()
             for j in self.joints:
                 name, (first, second) = j["name"], j["between"]
-                if name in self.moved:
-                    d = self.moved[name]
-                    q[name] = ((readings[d["name"]] - self.at_reference(d)) / self.per_unit(d)
-                               * self.unit_of(name))
+                if name in given:
+                    q[name] = given[name]
                 elif trial and j["type"] == "revolute":
                     q[name] = random.uniform(-3, 3)
                 else:
@@ -272,10 +280,25 @@ class Mechanism:
                 if second != self.tool["body"] or not near:
                     r1, p1 = bodies[first]
                     bodies[second] = (r1 @ r, r1 @ (at - r @ at + slide) + p1)
-            found = self.assemble((bodies, q), rows, 25)
+            found = self.settle((bodies, q), rows)
             if found is not None:
                 return found
         return None
+
+    def settle(self, state, rows, allowed=1e-4):
+        """Least squares of the rows under closure: closed to rounding, rows to `allowed`."""
+        both = [(lambda s, f=f: 1e3 * f(s), n) for f, n in self.closure()] + rows
+        for _ in range(25):
+            step = np.linalg.lstsq(self.jacobian(both, state), -self.residual(both, state),
+                                   rcond=1e-12)[0]
+            big = np.max(np.abs(step))
+            state = self.moved_by(state, step if big < 0.4 else step * (0.4 / big))
+            if big < 1e-12:
+                break
+        state = self.assemble(state)
+        if state is None or np.max(np.abs(self.residual(rows, state))) > allowed:
+            return None
+        return state
 
     # units ----------------------------------------------------------------------------------
     def unit_of(self, name):
