@@ -30,7 +30,8 @@ struct lwd_auth {
 static const struct {
     const char *text;
     lwd_role role;
-} role_table[] = {{"query", LWD_ROLE_QUERY}, {"author", LWD_ROLE_AUTHOR}, {"admin", LWD_ROLE_ADMIN}};
+} role_table[] = {
+    {"query", LWD_ROLE_QUERY}, {"author", LWD_ROLE_AUTHOR}, {"admin", LWD_ROLE_ADMIN}};
 
 bool lwd_role_parse(lwd_role *out, const char *text, size_t len)
 {
@@ -317,8 +318,8 @@ bool lwd_token_make(char token[LWD_TOKEN_TEXT_SIZE], lwd_buf *line, const char *
     lwd_role parsed;
 
     if (!name_ok(name, strlen(name))) {
-        snprintf(why, why_size, "the name must be 1 to 32 of a-z, 0-9, '-', '_' and '.', got \"%s\"",
-                 name);
+        snprintf(why, why_size,
+                 "the name must be 1 to 32 of a-z, 0-9, '-', '_' and '.', got \"%s\"", name);
         return false;
     }
     if (!lwd_role_parse(&parsed, role, strlen(role))) {

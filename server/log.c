@@ -159,13 +159,16 @@ static void *writer_main(void *unused)
         }
         while (ring.len > 0) {
             size_t n = ring_take(piece, sizeof piece);
+            pthread_mutex_unlock(&ring.lock);
+            write_all(piece, n);
+            pthread_mutex_lock(&ring.lock);
+        }
+        if (ring.dropped != ring.dropped_told) {
+            /* Only here, where what was written ends with a line. */
             uint64_t lost = ring.dropped - ring.dropped_told;
             ring.dropped_told = ring.dropped;
             pthread_mutex_unlock(&ring.lock);
-            write_all(piece, n);
-            if (lost != 0) {
-                tell_dropped(lost);
-            }
+            tell_dropped(lost);
             pthread_mutex_lock(&ring.lock);
         }
     }

@@ -193,14 +193,28 @@ static bool idle_received(lwd_conn *conn, int64_t now_ms)
         return false;
     }
     if (!conn->seen || conn->seen_served != served) {
-        /* Nothing has been read on a new connection, whatever has come by now. */
-        conn->seen_bytes = conn->seen ? info.tcpi_bytes_received : 0;
+        /* What came for requests that are answered does not count; a new connection, seen for the
+         * first time, has had none, so whatever has come is part of a head. */
+        conn->seen_bytes = served != 0 ? info.tcpi_bytes_received : 0;
         conn->seen = true;
         conn->seen_served = served;
         conn->idle_since_ms = now_ms;
         conn->head_since_ms = 0;
     }
     return info.tcpi_bytes_received != conn->seen_bytes;
+}
+
+/* A client may have closed its side together with the last bytes it sent; the library's epoll loop
+ * of 0.9.75 then hears of it no more (later releases do). Ending our reading side as well rouses
+ * it: it reads the end, and closes. Answers under way are not touched. */
+static void rouse_if_gone(lwd_conn *conn)
+{
+    char byte;
+
+    if (!conn->read_shut && recv(conn->fd, &byte, 1, MSG_PEEK | MSG_DONTWAIT) == 0) {
+        conn->read_shut = true;
+        (void)shutdown(conn->fd, SHUT_RD);
+    }
 }
 
 static void reap_idle(lwd_http *http, lwd_conn *conn, int64_t now_ms)
@@ -230,6 +244,10 @@ void lwd_conn_reap(lwd_http *http)
     pthread_mutex_lock(&http->lock);
     for (lwd_conn *c = http->conns; c != NULL; c = c->next) {
         int64_t doing = atomic_load(&c->doing);
+        if (doing == LWD_DOING_IDLE || (doing & 3) == LWD_PHASE_HEAD ||
+            (doing & 3) == LWD_PHASE_BODY) {
+            rouse_if_gone(c);
+        }
         if (doing == LWD_DOING_IDLE) {
             reap_idle(http, c, now_ms);
         } else if (doing > LWD_DOING_REAPED && now_ms >= doing >> 2) {

@@ -8,7 +8,7 @@
 #include <string.h>
 #include <strings.h>
 
-#include "negotiate.h"
+#include "../negotiate.h"
 
 static const struct {
     int code;
@@ -204,7 +204,8 @@ bool lwd_guard_framing(lwd_refusal *refusal, lwd_head *head)
     }
     head->chunked = head->n_transfer_encoding == 1;
     if (head->n_authorization > 1 || head->n_content_type > 1) {
-        return lwd_refuse(refusal, LWD_P_HEADER, LWD_REFUSED_MALFORMED, "%s is given more than once.",
+        return lwd_refuse(refusal, LWD_P_HEADER, LWD_REFUSED_MALFORMED,
+                          "%s is given more than once.",
                           head->n_authorization > 1 ? "Authorization" : "Content-Type");
     }
     if (head->n_expect > 1 ||
@@ -224,8 +225,8 @@ bool lwd_guard_uri(lwd_refusal *refusal, const lwd_uri *uri, lwd_uri_fault fault
         [LWD_URI_TOO_LONG] = "",
         [LWD_URI_FORM] = "The URL must begin with a slash.",
         [LWD_URI_PATH_NUL] = "The path holds %00; no name has a NUL in it.",
-        [LWD_URI_PATH_CHAR] = "Each part of the path may hold A-Z, a-z, 0-9, '.', '_' and '-' only, "
-                              "and may not be \".\" or \"..\".",
+        [LWD_URI_PATH_CHAR] = "Each part of the path may hold A-Z, a-z, 0-9, '.', '_' and '-' "
+                              "only, and may not be \".\" or \"..\".",
         [LWD_URI_DEPTH] = "The path has too many parts.",
         [LWD_URI_QUERY_NUL] = "The query holds %00; no member has a NUL in it.",
         [LWD_URI_QUERY_ESCAPE] = "In the query a '%' must be followed by two hexadecimal digits.",

@@ -44,6 +44,7 @@ static enum MHD_Result send_memory(lwd_call *call)
     (void)MHD_add_response_header(response, MHD_HTTP_HEADER_CONTENT_TYPE,
                                   "application/problem+json");
     (void)MHD_add_response_header(response, MHD_HTTP_HEADER_RETRY_AFTER, "1");
+    (void)MHD_add_response_header(response, MHD_HTTP_HEADER_CACHE_CONTROL, "no-store");
     call->bytes_out = sizeof memory_body - 1;
     return queue(call, response, 503);
 }

@@ -197,7 +197,7 @@ static const lwd_route routes[] = {
     {LWD_PUT, "/v1/things/{}", describe, LWD_ROLE_AUTHOR, false, 4 * MB, "put"},
     {LWD_POST, "/v1/things/{}/ask", describe, LWD_ROLE_QUERY, false, 64 * KB, "ask"},
     {LWD_GET, "/v1/things/{}/ask", describe, LWD_ROLE_QUERY, false, 0, "ask"},
-    {LWD_POST, "/v1/things/{}/parts/{}/publish", describe, LWD_ROLE_ADMIN, false, 1 * KB, "publish"},
+    {LWD_POST, "/v1/things/{}/parts/{}/publish", describe, LWD_ROLE_ADMIN, false, KB, "publish"},
 };
 
 lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_size)
