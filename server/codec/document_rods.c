@@ -69,8 +69,8 @@ static void read_rod_range(const lwd_reader *r, const lwd_document *doc, double 
     rod->range_m = lwd_range_in(written, doc->units, false);
 }
 
-/* A swivel's axis is the line of its pin; whichever way it is written, it is kept pointing along the
- * rod as the rod leaves this end, and the angle between the two must be within the cone. */
+/* A swivel's axis is the line of its pin; whichever way it is written, it is kept pointing along
+ * the rod as the rod leaves this end, and the angle between the two must be within the cone. */
 static void read_swivel(const lwd_reader *r, const lwd_document *doc, lw_spec_rod *rod, size_t k)
 {
     static const lwd_member table[2] = {{"axis", true}, {"cone", true}};
