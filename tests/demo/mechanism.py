@@ -70,7 +70,7 @@ def turn_of_zyx(yaw, pitch, roll):
 
 
 class Mechanism:
-    """State: x[body] = (R, p), displacement of each body from the reference posture, and q[joint]."""
+    """State: displacement (R, p) of each body from the reference posture, q of each joint."""
 
     def __init__(self, path):
         with open(path, encoding="utf-8") as file:
