@@ -278,6 +278,58 @@ static void four_arms_on_three_freedoms(void **state)
     cJSON_Delete(file);
 }
 
+/* Least squares by hand: readings off by d leave r = S^2 n (n d) / (n S^2 n), n the preload
+ * (n A = 0) and S the resolutions that weight them. To first order in d. */
+static void disagreement_lies_along_the_preload(void **state)
+{
+    (void)state;
+    cJSON *file = lwt_case_file("own-2026/cases.json");
+    const cJSON *set = lwt_member(file, "four_rrr");
+    const cJSON *item = cJSON_GetArrayItem(lwt_member(set, "cases"), 1);
+    double base[8];
+    double platform[8];
+    double preload[4];
+    double pose[3];
+    double theta_ref[4];
+    double link = lwt_number(set, "link");
+    (void)lwt_numbers(set, "base", base, 8);
+    (void)lwt_numbers(set, "platform", platform, 8);
+    (void)lwt_numbers(item, "preload", preload, 4);
+    (void)lwt_numbers(item, "pose", pose, 3);
+    const int elbow[4] = {1, 1, 1, 1};
+    static const double resolution[2][4] = {{1e-3, 1e-3, 1e-3, 1e-3}, {1e-3, 2e-3, 4e-3, 1.5e-3}};
+    for (size_t k = 0; k < 2; k++) {
+        lwt_machine *m = lwt_kit_planar_rrr("four-rrr", 4, base, platform, link, link, pose, elbow,
+                                            theta_ref);
+        for (size_t i = 0; i < 4; i++) {
+            m->spec->drive[i].has_resolution = true;
+            m->spec->drive[i].resolution = resolution[k][i];
+        }
+        lwt_machine_load(m);
+        for (size_t at = 0; at < 4; at++) {
+            double drive[4] = {0};
+            drive[at] = 1e-5;
+            double weight = 0.0;
+            for (size_t i = 0; i < 4; i++) {
+                double s = resolution[k][i];
+                weight += preload[i] * preload[i] * s * s;
+            }
+            const lw_forward_answer *forward = lwt_forward(m, drive, NULL);
+            assert_int_equal(forward->n_disagreement, 4);
+            for (size_t i = 0; i < 4; i++) {
+                double s = resolution[k][i];
+                double want = s * s * preload[i] * preload[at] * drive[at] / weight;
+                lwt_near(forward->disagreement[i], want, 1e-9);
+                assert_true(forward->allowed[i] > fabs(want));
+            }
+            assert_true(forward->chi_square > 0.0);
+            assert_true(forward->chi_square < forward->chi_square_limit);
+        }
+        lwt_machine_free(m);
+    }
+    cJSON_Delete(file);
+}
+
 int main(void)
 {
     lw_init();
@@ -286,6 +338,7 @@ int main(void)
         cmocka_unit_test(two_freedoms_on_three_arms),
         cmocka_unit_test(three_ropes_pull_evenly),
         cmocka_unit_test(four_arms_on_three_freedoms),
+        cmocka_unit_test(disagreement_lies_along_the_preload),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -18,7 +18,7 @@ static lwt_machine *make_three_rrr(void)
 {
     double theta[3];
     return lwt_kit_planar_rrr("three-rrr", 3, SQUARE_BASE, SQUARE_PLATE, 0.8, 0.75,
-                              (const double[3]){0.03, 0.02, 0.1}, (const int[3]){1, -1, 1}, theta);
+                              (const double[3]){0.03, 0.02, 0.6}, (const int[3]){1, 1, 1}, theta);
 }
 
 static lwt_machine *make_four_rrr(void)
@@ -33,7 +33,7 @@ static lwt_machine *make_planar_struts(void)
 {
     static const double base[6] = {-1, -0.8, 1.1, -0.7, 0.1, 1.2};
     static const double plate[6] = {-0.3, -0.1, 0.35, -0.15, 0.05, 0.3};
-    return lwt_kit_planar_struts("planar-struts", base, plate, (const double[3]){0.05, 0.1, 0.4});
+    return lwt_kit_planar_struts("planar-struts", base, plate, (const double[3]){0.05, 0.1, -1.3});
 }
 
 static lwt_machine *make_five_bar(void)
@@ -204,7 +204,7 @@ static lwt_machine *make_ball_loop(void)
     size_t coupler = lwt_add_body(m);
     size_t rocker = lwt_add_body(m);
     size_t input = lwt_add_revolute(m, 0, crank, ORIGIN, Z_AXIS);
-    (void)lwt_add_spherical(m, crank, coupler, (const double[3]){0.2, 0.05, 0.05});
+    (void)lwt_add_spherical(m, crank, coupler, (const double[3]){0.1, 0.05, 0.2});
     (void)lwt_add_spherical(m, coupler, rocker, (const double[3]){0.7, 0.3, 0.4});
     size_t output = lwt_add_revolute(m, 0, rocker, (const double[3]){0.8, 0, 0.1},
                                      (const double[3]){1, 0.1, 0.2});
@@ -317,8 +317,54 @@ static lwt_machine *make_spindle(void)
     return m;
 }
 
+/* One stage of the two: carriages on three columns, a pair of rods from each to a plate. */
+static void add_stage_rods(lwt_machine *m, size_t plate, const size_t carriage[3], double column_m,
+                           double plate_m, double rod_m, double height_m)
+{
+    double rise = sqrt(rod_m * rod_m - (column_m - plate_m) * (column_m - plate_m));
+    for (size_t i = 0; i < 3; i++) {
+        double c = cos(120.0 * LWT_DEG * (double)i);
+        double s = sin(120.0 * LWT_DEG * (double)i);
+        for (int k = -1; k <= 1; k += 2) {
+            double w = 0.05 * k;
+            const double top[3] = {column_m * c - w * s, column_m * s + w * c, height_m + rise};
+            const double end[3] = {plate_m * c - w * s, plate_m * s + w * c, height_m};
+            (void)lwt_add_rod(m, carriage[i], top, plate, end);
+        }
+    }
+}
+
+/* Two plates on one guide, each hung from three carriages; both engage one spindle with different
+ * leads: six drives for x, y, z and the spindle's turn. */
+static lwt_machine *make_two_stages(void)
+{
+    lwt_machine *m = lwt_machine_new("two-stages");
+    size_t upper = lwt_add_body(m);
+    size_t lower = lwt_add_body(m);
+    size_t spindle = lwt_add_body(m);
+    size_t carriage[6];
+    size_t slide[6];
+    for (size_t i = 0; i < 6; i++) {
+        carriage[i] = lwt_add_body(m);
+        slide[i] = lwt_add_prismatic(m, 0, carriage[i], Z_AXIS);
+    }
+    (void)lwt_add_prismatic(m, upper, lower, Z_AXIS);
+    size_t turn = lwt_add_helical(m, upper, spindle, (const double[3]){0, 0, 0.3}, Z_AXIS, 0.02);
+    (void)lwt_add_helical(m, lower, spindle, ORIGIN, Z_AXIS, 0.012);
+    add_stage_rods(m, upper, carriage, 0.55, 0.38, 0.27, 0.3);
+    add_stage_rods(m, lower, carriage + 3, 0.55, 0.16, 0.52, 0.0);
+    for (size_t i = 0; i < 6; i++) {
+        (void)lwt_drive_joint(m, slide[i]);
+    }
+    lw_frame tool = lwt_frame_zyx((const double[3]){0, 0, -0.2}, 0, 0, 0);
+    (void)lwt_add_tool(m, spindle, &tool);
+    lwt_add_outputs(m, "x y z");
+    lwt_add_output_coord(m, lwt_coord(m, turn, 0));
+    return m;
+}
+
 const lwt_subject lwt_subjects[LWT_SUBJECTS] = {
-    {"three-rrr", make_three_rrr, 0.35, true, 1500},
+    {"three-rrr", make_three_rrr, 0.3, true, 1500},
     {"four-rrr", make_four_rrr, 0.15, true, 1500},
     {"planar-struts", make_planar_struts, 0.2, true, 1500},
     {"five-bar", make_five_bar, 0.4, true, 1000},
@@ -329,10 +375,11 @@ const lwt_subject lwt_subjects[LWT_SUBJECTS] = {
     {"wrist-arm", make_wrist_arm, 2.5, false, 1500},
     {"skew-arm", make_skew_arm, 2.5, false, 1000},
     {"open-chain", make_open_chain, 0.8, false, 1000},
-    {"cylinder-loop", make_cylinder_loop, 0.25, false, 500},
-    {"ball-loop", make_ball_loop, 0.4, false, 500},
+    {"cylinder-loop", make_cylinder_loop, 0.15, false, 500},
+    {"ball-loop", make_ball_loop, 0.2, false, 500},
     {"three-upu", make_three_upu, 0.12, false, 500},
     {"three-rps", make_three_rps, 0.12, false, 500},
     {"gears", make_gears, 0.6, false, 500},
     {"spindle", make_spindle, 0.05, true, 1000},
+    {"two-stages", make_two_stages, 0.06, false, 1000},
 };
