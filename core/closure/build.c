@@ -513,10 +513,14 @@ static bool cut_rows(builder *b, size_t j, size_t u, size_t v)
     return true;
 }
 
-/* True where every element of the loop turns about, or slides along, one line. */
-static bool loop_is_coaxial(const builder *b, const lwi_link *link, size_t n, const double u[3],
-                            const double p[3])
+/* True where every element of the loop turns about, or slides along, one line of direction u. */
+static bool loop_is_coaxial(const builder *b, const lwi_link *link, size_t n, const double u[3])
 {
+    const double *p = NULL; /* a point of the line: on the first turning axis */
+    for (size_t k = 0; k < n && p == NULL; k++) {
+        const lwi_element *el = &b->sys->element[link[k].element];
+        p = el->kind == LWI_SLIDE ? NULL : el->at;
+    }
     for (size_t k = 0; k < n; k++) {
         const lwi_element *el = &b->sys->element[link[k].element];
         double c[3];
@@ -528,10 +532,12 @@ static bool loop_is_coaxial(const builder *b, const lwi_link *link, size_t n, co
         if (lwi_norm(c) > 1e-6) {
             return false;
         }
-        lwi_sub(d, el->at, p);
-        lwi_cross(c, d, u);
-        if (el->kind != LWI_SLIDE && lwi_norm(c) > 1e-6 * b->sys->length_m) {
-            return false;
+        if (el->kind != LWI_SLIDE) {
+            lwi_sub(d, el->at, p);
+            lwi_cross(c, d, u);
+            if (lwi_norm(c) > 1e-6 * b->sys->length_m) {
+                return false;
+            }
         }
     }
     return true;
@@ -598,7 +604,7 @@ static bool kept_cut(builder *b, size_t j)
     }
     given_apart = root_u != root_v;
     if (!given_apart &&
-        loop_is_coaxial(b, b->sys->link + link, n_link, joint->axis, joint->at_m)) {
+        loop_is_coaxial(b, b->sys->link + link, n_link, joint->axis)) {
         return coaxial_rows(b, j, b->sys->link + link, n_link, joint->axis);
     }
     double e1[3];
@@ -724,14 +730,64 @@ static bool number_vars(builder *b)
             bool length = el->kind == LWI_SLIDE || (el->kind == LWI_FREE && i < 3);
             double scale = length ? sys->length_m : 1.0;
             if (el->kind == LWI_HELIX) {
-                /* A turn of a screw that also travels: keep its scaled step near one. */
-                scale = 1.0;
+                /* A screw counts by its travel, so that many turns are not many lengths. */
+                scale = fmax(1.0, fmin(sys->length_m / fmax(fabs(el->pitch), 1e-12), 1e3));
             }
             sys->var_element[sys->n_var] = (int)k;
             sys->var_scale[sys->n_var++] = scale;
         }
     }
     return true;
+}
+
+/* Linear rows are scaled so that their largest derivative is one, as geometric rows have it. */
+static void scale_linear_rows(lwi_system *sys)
+{
+    for (size_t i = 0; i < sys->n_row; i++) {
+        lwi_row *row = &sys->row[i];
+        double size = 0.0;
+        for (size_t t = 0; t < row->n_term; t++) {
+            int var = sys->element[row->term_element[t]].var;
+            double scale = var >= 0 ? sys->var_scale[var] : 1.0;
+            size = fmax(size, fabs(row->term_factor[t]) * scale);
+        }
+        for (size_t t = 0; t < row->n_rod_term; t++) {
+            size = fmax(size, fabs(row->rod_factor[t]) * sys->length_m);
+        }
+        for (size_t t = 0; t < row->n_term && size > 0.0; t++) {
+            row->term_factor[t] /= size;
+        }
+        for (size_t t = 0; t < row->n_rod_term && size > 0.0; t++) {
+            row->rod_factor[t] /= size;
+        }
+    }
+}
+
+/* Unknowns that enter only sums of coordinates (a spindle, a gear train) are straight: any step along
+ * them is exact. */
+static void mark_curved(builder *b)
+{
+    lwi_system *sys = b->sys;
+    bool curved[LWI_MAX_ELEMENTS] = {false};
+    for (size_t i = 0; i < sys->n_row; i++) {
+        for (size_t k = 0; sys->row[i].kind != LWI_ROW_LINEAR && k < sys->row[i].n_link; k++) {
+            curved[sys->link[sys->row[i].link + k].element] = true;
+        }
+    }
+    for (size_t r = 0; r < b->spec->n_rod; r++) {
+        for (size_t k = 0; k < sys->rod[r].n_link; k++) {
+            curved[sys->link[sys->rod[r].link + k].element] = true;
+        }
+    }
+    for (size_t t = 0; t < b->spec->n_tool; t++) {
+        size_t node = sys->body_node[b->spec->tool[t].body];
+        for (size_t k = 0; k < sys->n_element; k++) {
+            curved[k] = curved[k] || ((b->ancestor[node][k / 64] >> (k % 64)) & 1);
+        }
+    }
+    for (size_t v = 0; v < sys->n_var; v++) {
+        sys->var_curved[v] = curved[sys->var_element[v]];
+    }
 }
 
 lw_code lwi_system_build(lwi_system *out, const lwi_build_ask *ask, lw_err *err)
@@ -759,10 +815,14 @@ lw_code lwi_system_build(lwi_system *out, const lwi_build_ask *ask, lw_err *err)
     choose_tree(b);
     bool good = grow_tree(b) && add_cuts(b) && add_rods(b) && add_couplings(b) &&
                 add_spin_locks(b) && number_vars(b);
+    if (good) {
+        mark_curved(b);
+    }
     free(b);
     if (!good) {
         return err != NULL && err->code != LW_OK ? err->code : LW_E_LIMIT;
     }
+    scale_linear_rows(out);
     lwi_system_blocks(out);
     return LW_OK;
 }

@@ -90,6 +90,7 @@ typedef struct lwi_system {
     size_t n_var;
     double var_scale[LWI_MAX_VARS]; /* physical step = scale * scaled step */
     int var_element[LWI_MAX_VARS];
+    bool var_curved[LWI_MAX_VARS]; /* moves something that rows, rods or tools see */
     size_t n_row;
     lwi_row row[LWI_MAX_ROWS];
     size_t n_row_dropped;

@@ -201,6 +201,7 @@ void lwi_mode_of(lw_mode *mode, const lw_model *model, const lw_config *config)
 static void describe(lw_limb_info *info, const lw_model *m, const lwi_limb *limb)
 {
     const lw_spec *spec = m->spec;
+    memset(info, 0, sizeof *info);
     const char *first = limb->n_joint > 0 ? spec->joint[limb->joint[0]].name
                                           : spec->rod[limb->rod[0]].name;
     (void)snprintf(info->name, sizeof info->name, "%s", first);

@@ -30,7 +30,7 @@ static void gather_facts(motion_facts *f, const lw_model *m, lwi_samples *s)
         lwi_eval_nodes(&s->ev, m->whole, &s->state[k]);
         const lw_frame *x = &s->ev.node[node];
         double v[3];
-        double u[3];
+        double u[3] = {0, 0, 0};
         lwi_rot_log(v, x->rot);
         if (lwi_norm(v) > 1e-4) {
             (void)lwi_unit(u, v);

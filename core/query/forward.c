@@ -128,15 +128,6 @@ static bool guard_passes(guard *g, const lw_model *m, const lwi_goal *goal, size
     return sign != 0;
 }
 
-static double largest_move(const lwi_goal *goal, const double *from, size_t n)
-{
-    double most = 0.0;
-    for (size_t i = 0; i < n; i++) {
-        most = fmax(most, fabs(goal[i].value - from[i]) * goal[i].weight);
-    }
-    return most;
-}
-
 void lwi_track(lwi_track_info *info, const lw_model *m, const lw_config *start,
                const lwi_goal *goal, size_t n_goal, lw_work *work)
 {
@@ -160,9 +151,6 @@ void lwi_track(lwi_track_info *info, const lw_model *m, const lw_config *start,
     }
     double done = 0.0;
     double size = 1.0;
-    if (largest_move(goal, from, n_goal) > 4.0) {
-        size = 4.0 / largest_move(goal, from, n_goal);
-    }
     while (done < 1.0) {
         size = fmin(size, 1.0 - done);
         double next = done + size >= 1.0 - 1e-12 ? 1.0 : done + size;

@@ -144,6 +144,21 @@ static lw_code by_bodies(lw_posture_answer *a, lw_solution *sol, const lw_model 
             memcpy(g->rot, ask->body[b].rot, sizeof g->rot);
         }
     }
+    /* Joints between given bodies start where the bodies say, screws with their whole turns. */
+    size_t coord = 0;
+    size_t ball = 0;
+    for (size_t j = 0; j < m->spec->n_joint; j++) {
+        const lw_spec_joint *joint = &m->spec->joint[j];
+        size_t p = joint->body[0];
+        size_t q = joint->body[1];
+        if ((ask->has_body[p] || p == m->spec->frame) && (ask->has_body[q] || q == m->spec->frame)) {
+            lwi_joint_from_frames(joint, &work->scratch.body[p], &work->scratch.body[q],
+                                  start->coord + coord, work->scratch.coord + coord,
+                                  joint->type == LW_SPHERICAL ? work->scratch.ball[ball] : NULL);
+        }
+        coord += lw_joint_coords(joint->type);
+        ball += joint->type == LW_SPHERICAL;
+    }
     lwi_state_from_config(&work->state, m->whole, &work->scratch);
     if (!lwi_settle(sol, &info, m, tool, goal, n, start, work) || !(info.goal <= LWI_CLOSED)) {
         return LW_FAIL(err, LW_E_POSTURE, "/bodies",

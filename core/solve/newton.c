@@ -256,6 +256,37 @@ static void make_step(const lwi_system *sys, size_t rank, size_t n_goal, lwi_new
     }
 }
 
+static double curved_size(const lwi_system *sys, const double *y)
+{
+    double s = 0.0;
+    for (size_t i = 0; i < sys->n_var; i++) {
+        s += sys->var_curved[i] ? y[i] * y[i] : 0.0;
+    }
+    return sqrt(s);
+}
+
+/* Share of a step that stays where the linearisation means something: 0.7 rad of all turns together,
+ * three characteristic lengths of slides and screws, which are straighter. */
+static double trust(const lwi_system *sys, const double *y)
+{
+    double turn = 0.0;
+    double slide = 0.0;
+    for (size_t i = 0; i < sys->n_var; i++) {
+        bool length = sys->var_scale[i] != 1.0;
+        if (sys->var_curved[i]) {
+            *(length ? &slide : &turn) += y[i] * y[i];
+        }
+    }
+    double share = 1.0;
+    if (turn > 0.49) {
+        share = 0.7 / sqrt(turn);
+    }
+    if (slide > 9.0) {
+        share = fmin(share, 3.0 / sqrt(slide));
+    }
+    return share;
+}
+
 void lwi_newton(lwi_newton_info *info, const lwi_system *sys, size_t rank, const lwi_goal *goal,
                 size_t n_goal, int max_iterations, lwi_state *state, lwi_eval *ev,
                 lwi_newton_work *nw)
@@ -271,19 +302,20 @@ void lwi_newton(lwi_newton_info *info, const lwi_system *sys, size_t rank, const
         }
         make_step(sys, rank, n_goal, nw, &info->free_left);
         double size = norm_of(nw->step, n);
-        if (!(size < 1e3)) {
+        if (!(size < 1e6)) {
             break;
         }
-        if (size > 0.7) { /* stay where the linearisation means something */
+        double share = trust(sys, nw->step);
+        if (share < 1.0) {
             for (size_t i = 0; i < n; i++) {
-                nw->step[i] *= 0.7 / size;
+                nw->step[i] *= share;
             }
-            size = 0.7;
+            size *= share;
         }
         lwi_state_step(state, sys, nw->step);
         lwi_eval_nodes(ev, sys, state);
         info->iterations = it + 1;
-        info->moved += size;
+        info->moved += curved_size(sys, nw->step);
         if (it == 0) {
             info->first_step = size;
         } else if (last > 1e-6 && size / last > info->contraction) {

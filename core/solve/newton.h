@@ -40,7 +40,7 @@ typedef struct lwi_newton_info {
     double first_step;   /* scaled size of the first step */
     double last_step;
     double contraction;  /* worst ratio of successive steps while they mattered */
-    double moved;        /* scaled size of all steps together */
+    double moved;        /* scaled size of all steps together, straight unknowns left out */
     double residual;     /* worst closure row at the end, relative */
     double goal;         /* norm of weighted goal residuals at the end */
     size_t free_left;    /* freedoms neither closure nor goals determine */
