@@ -23,8 +23,10 @@ lw_code lwi_pose_goals(lwi_goal *goal, size_t *n_goal, const lw_model *model,
                        const lw_spec_tool *tool, const lw_pose_ask *pose, lw_err *err);
 
 /* The configuration `near` names, or home. Fills slot LWI_SLOT_START and returns its config; NULL
- * with *outcome and *reason where near itself has no posture. */
-const lw_config *lwi_near_config(const lw_model *model, const lw_posture_ask *near, lw_work *work,
+ * with *outcome and *reason where near itself has no posture. Where near is a bare pose, `readings`
+ * (may be NULL) pick among its working modes. */
+const lw_config *lwi_near_config(const lw_model *model, const lw_posture_ask *near,
+                                 const lw_posture_ask *readings, lw_work *work,
                                  lw_outcome *outcome, const char **reason, lw_code *rc, lw_err *err);
 
 /* Follows straight readings from the configuration `start` to the target coordinates. */

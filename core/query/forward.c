@@ -312,8 +312,8 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
     /* `near` may itself be a forward question and use the answer's storage: it comes first. */
     lw_outcome outcome = LW_OUTCOME_NONE;
     const char *reason = NULL;
-    const lw_config *start =
-        lwi_near_config(m, ask->readings->near, work, &outcome, &reason, &rc, err);
+    const lw_config *start = lwi_near_config(m, ask->readings->near, ask->readings, work, &outcome,
+                                             &reason, &rc, err);
     if (rc != LW_OK) {
         return rc;
     }

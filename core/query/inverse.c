@@ -432,7 +432,7 @@ lw_code lw_inverse(const lw_inverse_answer **out, const lw_model *m, const lw_in
     /* `near` may itself be an inverse question and use the answer's storage: it comes first. */
     lw_outcome outcome = LW_OUTCOME_NONE;
     const char *reason = NULL;
-    const lw_config *hint = lwi_near_config(m, ask->near, work, &outcome, &reason, &rc, err);
+    const lw_config *hint = lwi_near_config(m, ask->near, NULL, work, &outcome, &reason, &rc, err);
     if (rc != LW_OK) {
         return rc;
     }

@@ -222,25 +222,60 @@ static lw_code one_posture(lw_posture_answer *a, lw_solution *sol, const lw_mode
     return rc;
 }
 
-const lw_config *lwi_near_config(const lw_model *m, const lw_posture_ask *near, lw_work *work,
+/* Of all inverse solutions at a bare pose, the one whose readings are nearest to those asked about: a
+ * pose alone names no working mode, the readings do. */
+static const lw_solution *nearest_readings(const lw_model *m, const lw_posture_ask *near,
+                                           const lw_posture_ask *readings, lw_work *work,
+                                           lw_code *rc, lw_err *err)
+{
+    const lw_inverse_answer *inv;
+    const lw_solution *best = NULL;
+    double best_gap = 1e300;
+    lw_inverse_ask question = {.tool = 0, .pose = near->pose};
+    *rc = lw_inverse(&inv, m, &question, work, err);
+    for (size_t i = 0; *rc == LW_OK && i < inv->n_solution; i++) {
+        double gap = 0.0;
+        for (size_t d = 0; d < m->spec->n_drive; d++) {
+            if (readings->has_drive[d]) {
+                double x = inv->solution[i].drive[d] - readings->drive[d];
+                x = m->spec->drive[d].turning ? x : x / m->length_m;
+                gap += x * x;
+            }
+        }
+        if (gap < best_gap) {
+            best_gap = gap;
+            best = &inv->solution[i];
+        }
+    }
+    return best;
+}
+
+const lw_config *lwi_near_config(const lw_model *m, const lw_posture_ask *near,
+                                 const lw_posture_ask *readings, lw_work *work,
                                  lw_outcome *outcome, const char **reason, lw_code *rc, lw_err *err)
 {
+    const lw_posture_answer *answer;
+    const lw_solution *found;
     *rc = LW_OK;
     if (near == NULL || near->kind == LW_BY_NOTHING) {
         return &m->home;
     }
-    const lw_posture_answer *answer;
-    *rc = lw_posture(&answer, m, 0, NULL, near, work, err);
+    if (readings != NULL && near->kind == LW_BY_POSE && !near->has_mode && near->near == NULL) {
+        found = nearest_readings(m, near, readings, work, rc, err);
+    } else {
+        *rc = lw_posture(&answer, m, 0, NULL, near, work, err);
+        found = *rc == LW_OK ? answer->solution : NULL;
+    }
     if (*rc != LW_OK) {
         return NULL;
     }
-    if (answer->solution == NULL) {
-        *outcome = answer->outcome;
+    if (found == NULL) {
+        *outcome = LW_OUTCOME_UNDECIDED;
         *reason = "\"near\" names no posture of this mechanism";
         return NULL;
     }
     lw_solution *start = lwi_slot(work, LWI_SLOT_START);
-    lwi_solution_copy(start, m, answer->solution);
+    lwi_solution_copy(start, m, found);
     return &start->config;
 }
 
@@ -266,7 +301,7 @@ lw_code lw_posture(const lw_posture_answer **out, const lw_model *m, size_t tool
         }
     } else {
         const lw_config *start =
-            lwi_near_config(m, ask->near, work, &a->outcome, &a->reason, &rc, err);
+            lwi_near_config(m, ask->near, NULL, work, &a->outcome, &a->reason, &rc, err);
         if (rc == LW_OK && start != NULL) {
             rc = one_posture(a, sol, m, tool, written, ask, start, work, err);
         }
