@@ -101,7 +101,8 @@ typedef struct lwd_route {
     const char *pattern;  /* "/v1/mechanisms/{}/inverse": each {} captures one segment */
     lwd_handler handler;
     lwd_role role;        /* the least role that may call it; LWD_ROLE_NONE = open to all */
-    bool slow;            /* runs in a worker (suspended connection), not on the event thread */
+    bool slow;            /* runs in a worker (suspended connection), not on the event thread; so
+                           * does any request whose body exceeds 2 kB (a batch) */
     size_t body_max;      /* largest body in bytes; 0 = takes no body */
     const char *name;     /* for metrics and log: "inverse" */
 } lwd_route;

@@ -19,6 +19,7 @@ enum {
     LINGER_MAX = 32,     /* refused clients whose answer must not be cut off by a reset */
     LINGER_MS = 1000,
     ACCEPT_BATCH = 64,
+    BACKLOG_BATCHES = 5, /* enough for the 256 that a listening socket holds */
     RETRY_AFTER_S = 1
 };
 
@@ -134,7 +135,9 @@ static void stop_listening(acceptor *a)
 
     a->pause_until_ms = 0;
     for (size_t i = 0; i < list->n; i++) {
-        accept_some(a, list->item[i].fd);
+        for (int batch = 0; batch < BACKLOG_BATCHES; batch++) {
+            accept_some(a, list->item[i].fd);
+        }
     }
     lwd_listen_close(list);
     a->listening = false;

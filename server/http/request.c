@@ -16,6 +16,8 @@ enum {
     LATE_BODY_MS = 15,     /* a body this late was held back by Nagle's algorithm and our own
                             * delayed acknowledgement (40 ms); the clock has a grain of 4 ms */
     CHUNKED_FIRST = 4096,
+    LARGE_BODY = 2048, /* a single question is shorter: this is a batch, milliseconds of work, and
+                        * goes to a worker even where the route is a fast one */
     LIST_HEADER_MAX = 4096
 };
 
@@ -493,10 +495,15 @@ static enum MHD_Result finish(lwd_call *call)
     if (call->request.method == LWD_HEAD) {
         call->request.method = LWD_GET;
     }
-    if (call->hit.route->slow) {
+    if (call->hit.route->slow || call->body_len > LARGE_BODY) {
         return dispatch(call);
     }
+    call->request.may_defer = true;
     job_run(&call->job, 0);
+    call->request.may_defer = false;
+    if (call->reply.status == LWD_DEFER) { /* slow this once: a mechanism has to be loaded */
+        return dispatch(call);
+    }
     return lwd_reply_send(call);
 }
 

@@ -56,5 +56,14 @@ def fast_routes_run_on_lane_0_and_slow_ones_on_others():
         expect(lanes and lanes <= {1, 2, 3}, lanes)
 
 
+def a_batch_runs_on_another_lane_though_its_route_is_fast():
+    """A body of more than 2 kB holds many questions: milliseconds, which others must not wait."""
+    with Daemon() as daemon, daemon.wire() as wire:
+        expect(wire.ask("POST", "/v1/things/x/ask", b"x" * 2048).json()["lane"] == 0, "2048 bytes")
+        got = wire.ask("POST", "/v1/things/x/ask", b"x" * 2049).json()
+        expect(got["lane"] > 0 and got["body_len"] == 2049, got)
+
+
 run(names_the_methods_of_a_path, an_unknown_path_is_404_for_any_method, head_is_get_without_a_body,
-    routes_capture_what_stands_between, fast_routes_run_on_lane_0_and_slow_ones_on_others)
+    routes_capture_what_stands_between, fast_routes_run_on_lane_0_and_slow_ones_on_others,
+    a_batch_runs_on_another_lane_though_its_route_is_fast)
