@@ -14,7 +14,7 @@
  * surrogates d800..dfff and so come before U+E000..U+FFFF (lead bytes ee and ef). */
 static int weight(unsigned char c)
 {
-    return c >= 0xf0 ? c - 0xf0 + 0xee : c >= 0xee ? c - 0xee + 0xf8 : c;
+    return c == 0xee || c == 0xef ? c + 0x10 : c;
 }
 
 static int compare(const void *a, const void *b)

@@ -299,6 +299,11 @@ static void warns_where_parts_disagree(void **state)
               "\"range\":[-80,120]", ""));
     expect_one(LW_WARNING, "range-leaves-joint", "/drives/0/range", "shows 100");
     lwd_document_free(doc);
+    doc = read_text(
+        small("mm", "deg", ",\"type\":\"revolute\",\"at\":[0,0,0],\"axis\":[0,0,1],"
+              "\"range\":[-90,90]", ",\"moves\":{\"sum\":{\"j\":-2}},\"range\":[-181,180]", ""));
+    expect_one(LW_WARNING, "range-leaves-joint", "/drives/0/range", "shows -180");
+    lwd_document_free(doc);
 
     static const char rod[] =
         ",\"rods\":[{\"name\":\"r\",\"between\":[\"bed\",\"arm\"],\"ends\":[[0,0,0],[0,0,300]]%s}]";
@@ -313,6 +318,11 @@ static void warns_where_parts_disagree(void **state)
     (void)snprintf(text, sizeof text, more, ",\"length\":300.02"); /* within a tenth of 0.3 mm */
     doc = read_text(small("mm", "deg", turn, ",\"moves\":\"j\"", text));
     assert_int_equal(findings.n, 0);
+    lwd_document_free(doc);
+
+    (void)snprintf(text, sizeof text, more, ",\"length\":299.96"); /* beyond it */
+    doc = read_text(small("mm", "deg", turn, ",\"moves\":\"j\"", text));
+    expect_one(LW_WARNING, "length-differs", "/rods/0/length", "not 299.96");
     lwd_document_free(doc);
 
     (void)snprintf(more, sizeof more, rod, ",\"range\":[200,400]");

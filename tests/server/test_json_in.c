@@ -337,10 +337,10 @@ static void tells_faults_of_groups_at_their_own_place(void **state)
     assert_false(lwd_read_range(&r, 10.0, &range));
     expect_finding(0, "empty-range", "", "from 5 to 5 is empty");
     close_text();
-    r = open_text("{\"w\":1.01,\"x\":0,\"y\":0,\"z\":0}");
+    r = open_text("{\"w\":1.002,\"x\":0,\"y\":0,\"z\":0}");
     double q[4];
     assert_false(lwd_read_quaternion(&r, q));
-    expect_finding(0, "quaternion-length", "", "length 1.01");
+    expect_finding(0, "quaternion-length", "", "length 1.002");
     close_text();
     r = open_text("{\"w\":1,\"x\":0,\"y\":0}");
     assert_false(lwd_read_quaternion(&r, q));
