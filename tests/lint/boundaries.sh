@@ -37,12 +37,16 @@ never() {
   fi
 }
 
-# Does a quoted include find its header inside the folder?
+# Does a quoted include find its header inside the folder? Without a process for each, since there
+# are a thousand.
 resolves_in() {
-  [ -e "$(dirname "$file")/$header" ] || [ -e "$1/$header" ] || return 1
-  local base=$1 path
-  path=$(realpath -m --relative-to=. "$(dirname "$file")/$header")
-  [ -e "$base/$header" ] || case $path in "$base"/*) return 0 ;; *) return 1 ;; esac
+  local base=$1 path=${file%/*}/$header
+  [ ! -e "$base/$header" ] || [[ $header == *..* ]] || return 0
+  [ -e "$path" ] || return 1
+  while [[ $path =~ ^(.*/)?[^/.]+[^/]*/\.\./(.*)$ ]]; do
+    path=${BASH_REMATCH[1]}${BASH_REMATCH[2]}
+  done
+  [[ $path == "$base"/* ]]
 }
 
 seen=0
@@ -80,7 +84,8 @@ while IFS=: read -r file line text; do
   fi
   if in_any "$file" clients; then
     [[ ! $header =~ ^leeway/ ]] || fault "$file:$line" "includes $header; clients speak HTTP only"
-    [ "$kind" = '<' ] || resolves_in clients/"$(cut -d/ -f2 <<<"$file")" ||
+    client=${file#clients/}
+    [ "$kind" = '<' ] || resolves_in "clients/${client%%/*}" ||
       fault "$file:$line" "includes $header, which is not that client's own"
   fi
 done < <(files "$c_files" core server clients tests | xargs -r grep -nE '^\s*#\s*include' /dev/null)

@@ -15,11 +15,11 @@ for room in "${rooms[@]}"; do
     map=/dev/null
   fi
   named=$(grep -oE '[A-Za-z0-9_][A-Za-z0-9_./-]*' "$map" | sed 's/[.]$//' | LC_ALL=C sort -u || true)
-  mapfile -t here < <(files "$source_files" "$room" | sed "s|^$room/||")
-  for file in "${here[@]}"; do
-    count=$((count + 1))
-    grep -qxF -- "$file" <<<"$named" || fault "$room/$file" "not named in $room/MAP.md"
-  done
+  here=$(files "$source_files" "$room" | sed "s|^$room/||")
+  count=$((count + $(grep -c . <<<"$here" || true)))
+  while read -r file; do
+    [ -z "$file" ] || fault "$room/$file" "not named in $room/MAP.md"
+  done < <(LC_ALL=C comm -23 <(LC_ALL=C sort -u <<<"$here") <(printf '%s\n' "$named"))
   while read -r name; do
     [ -n "$name" ] || continue
     [ -e "$room/$name" ] || [ -e "$name" ] || [ -e "$room/include/$name" ] ||

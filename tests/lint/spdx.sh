@@ -6,20 +6,33 @@ set -euo pipefail
 # shellcheck source=tests/lint/files.sh
 source "$(dirname "${BASH_SOURCE[0]}")/files.sh"
 
-id='SPDX-License-Identifier: GPL-3.0-or-later'
-count=0
-while read -r file; do
-  count=$((count + 1))
-  if [[ $file =~ $c_files ]]; then
-    first=$(sed -n 1p "$file")
-    [ "$first" = "/* $id */" ] || { [[ $file = *.cpp ]] && [ "$first" = "// $id" ]; } || fault "$file:1" "the first line must be /* $id */"
-    [[ $(sed -n 2p "$file") =~ ^(/\*|//) ]] ||
-      fault "$file:2" "the head comment is missing: what the file owns, and who may call"
-  else
-    grep -qF "$id" <(head -n 3 "$file") || fault "$file:1" "no $id in the first three lines"
-  fi
-done < <(files "$source_files" "${rooms[@]}")
+export id='SPDX-License-Identifier: GPL-3.0-or-later'
+mapfile -t all < <(files "$source_files" "${rooms[@]}")
+
+# One line a fault: place, tab, sentence.
+look() {
+  [ "$#" -gt 0 ] || return 0
+  perl -e '
+    my $id = $ENV{id};
+    for my $file (@ARGV) {
+      open my $in, "<", $file or die "$file: $!";
+      my @top = map { scalar(<$in>) // "" } 1 .. 3;
+      chomp @top;
+      if ($file =~ /$ENV{c_files}/) {
+        my $ok = $top[0] eq "/* $id */" || ($file =~ /\.cpp$/ && $top[0] eq "// $id");
+        print "$file:1\tthe first line must be /* $id */\n" unless $ok;
+        print "$file:2\tthe head comment is missing: what the file owns, and who may call\n"
+          unless $top[1] =~ m{^(/\*|//)};
+      } else {
+        print "$file:1\tno $id in the first three lines\n" unless "@top" =~ /\Q$id\E/;
+      }
+    }' "$@"
+}
+
+while IFS=$'\t' read -r place what; do
+  fault "$place" "$what"
+done < <(look "${all[@]}")
 
 grep -qs 'GNU GENERAL PUBLIC LICENSE' LICENSE ||
   fault LICENSE "the text of the GNU General Public License, version 3, is missing"
-finish "licence lines ($count files)"
+finish "licence lines (${#all[@]} files)"
