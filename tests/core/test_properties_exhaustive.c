@@ -257,6 +257,55 @@ static void check_inverse_derivative(lwt_machine *m, lwt_copy *at, const lw_jaco
     }
 }
 
+/* The same rates about another point, and seen in the tool's own frame. */
+static void check_reference_point(lwt_machine *m, lwt_copy *at, const lw_jacobian_answer *j,
+                                  lwt_random *rng)
+{
+    size_t n = m->spec->n_drive;
+    lw_config config = lwt_config_of(at);
+    lw_jacobian_ask ask;
+    memset(&ask, 0, sizeof ask);
+    ask.posture = lwt_by_config(m, &config);
+    ask.has_point = true;
+    double local[3];
+    double arm[3];
+    for (size_t i = 0; i < 3; i++) {
+        local[i] = lwt_random_in(rng, -1.0, 1.0);
+    }
+    lwt_frame_vector(arm, &at->tool, local);
+    lw_frame back = lwt_frame_inverse(&at->tool);
+    double tol = 1e-12 * fmax(1.0, largest(j->twist, 6 * n));
+    for (int in_tool = 0; in_tool < 2; in_tool++) {
+        ask.in_tool = in_tool == 1;
+        for (size_t i = 0; i < 3; i++) {
+            ask.point_m[i] = in_tool ? local[i] : at->tool.pos_m[i] + arm[i];
+        }
+        const lw_jacobian_answer *other = NULL;
+        assert_int_equal(lw_jacobian(&other, m->model, &ask, m->work, &m->err), LW_OK);
+        for (size_t d = 0; d < n; d++) {
+            double v[3];
+            double w[3];
+            double across[3];
+            for (size_t i = 0; i < 3; i++) {
+                v[i] = j->twist[i * n + d];
+                w[i] = j->twist[(3 + i) * n + d];
+            }
+            lwt_cross(across, w, arm);
+            for (size_t i = 0; i < 3; i++) {
+                v[i] += across[i];
+            }
+            if (in_tool) {
+                lwt_frame_vector(v, &back, v);
+                lwt_frame_vector(w, &back, w);
+            }
+            for (size_t i = 0; i < 3; i++) {
+                lwt_near(other->twist[i * n + d], v[i], 10.0 * tol);
+                lwt_near(other->twist[(3 + i) * n + d], w[i], tol);
+            }
+        }
+    }
+}
+
 static void check_derivatives(lwt_machine *m, lwt_copy *at, lwt_random *rng)
 {
     lw_config config = lwt_config_of(at);
@@ -276,6 +325,9 @@ static void check_derivatives(lwt_machine *m, lwt_copy *at, lwt_random *rng)
                 lwt_near(product[r * kept.n_output + c], r == c ? 1.0 : 0.0, 1e-10 * size);
             }
         }
+    }
+    if (kept.has_forward) {
+        check_reference_point(m, at, &kept, rng);
     }
     bool square = m->report->redundancy_drives == 0;
     if (square && kept.has_forward &&
@@ -334,6 +386,10 @@ static void check_carried(lwt_machine *m, lwt_machine *moved, const lw_frame *by
         lwt_forward(moved, at->drive, lwt_by_config(moved, &there_config));
     lwt_near(lwt_frame_distance(&forward->solution[0].tool, &there.tool), 0.0, slack);
     lwt_near(lwt_frame_angle(&forward->solution[0].tool, &there.tool), 0.0, slack);
+    assert_int_equal(forward->solution[0].mode_known, at->mode_known);
+    if (at->mode_known) {
+        assert_true(lw_mode_same(&forward->solution[0].mode, &at->mode));
+    }
     const lw_jacobian_answer *again = lwt_jacobian(moved, lwt_by_config(moved, &there_config));
     assert_int_equal(again->has_forward, has);
     if (!has) {

@@ -14,7 +14,7 @@
 #include <string.h>
 #include <unistd.h>
 
-enum { JOINTS_MAX = 8, CONFIGURATIONS = 3000, NUMBERS_MAX = 12 + 6 * JOINTS_MAX };
+enum { JOINTS_MAX = 8, CONFIGURATIONS = 2000, NUMBERS_MAX = 12 + 6 * JOINTS_MAX };
 
 typedef struct chain {
     const char *name;

@@ -363,6 +363,72 @@ static lwt_machine *make_two_stages(void)
     return m;
 }
 
+/* Six driven carriages or cranks, one rod each, to a platform with six freedoms: 64 inverse
+ * solutions. */
+static lwt_machine *make_six_rods(bool cranks)
+{
+    static const double foot_deg[6] = {5, 115, 125, 235, 245, 355};
+    static const double top_deg[6] = {45, 75, 165, 195, 285, 315};
+    lwt_machine *m = lwt_machine_new(cranks ? "six-cranks" : "six-rails");
+    lw_frame ref = lwt_frame_zyx((const double[3]){0.02, -0.01, 0.8}, 0.05, 0.04, -0.03);
+    size_t plate = lwt_add_body(m);
+    size_t mover[6];
+    size_t joint[6];
+    double tip[6][3];
+    for (size_t i = 0; i < 6; i++) {
+        double c = cos(foot_deg[i] * LWT_DEG);
+        double s = sin(foot_deg[i] * LWT_DEG);
+        mover[i] = lwt_add_body(m);
+        if (cranks) {
+            double t = 0.4 + 0.1 * (double)i; /* the crank's rise */
+            joint[i] = lwt_add_revolute(m, 0, mover[i], (const double[3]){0.7 * c, 0.7 * s, 0},
+                                        (const double[3]){-s, c, 0.1 * (double)(i % 2)});
+            tip[i][0] = (0.7 + 0.25 * cos(t)) * c;
+            tip[i][1] = (0.7 + 0.25 * cos(t)) * s;
+            tip[i][2] = 0.25 * sin(t);
+        } else {
+            joint[i] = lwt_add_prismatic(m, 0, mover[i], (const double[3]){-0.3 * c, -0.3 * s, 1});
+            tip[i][0] = 0.8 * c;
+            tip[i][1] = 0.8 * s;
+            tip[i][2] = 0.1 * (double)(i % 3);
+        }
+    }
+    for (size_t i = 0; i < 6; i++) {
+        const double local[3] = {0.3 * cos(top_deg[i] * LWT_DEG), 0.3 * sin(top_deg[i] * LWT_DEG),
+                                 0.02 * (double)i};
+        double top[3];
+        lwt_frame_point(top, &ref, local);
+        (void)lwt_add_rod(m, mover[i], tip[i], plate, top);
+    }
+    for (size_t i = 0; i < 6; i++) {
+        (void)lwt_drive_joint(m, joint[i]);
+    }
+    (void)lwt_add_tool(m, plate, &ref);
+    lwt_add_outputs(m, "x y z rx ry rz");
+    return m;
+}
+
+static lwt_machine *make_six_rails(void)
+{
+    return make_six_rods(false);
+}
+
+static lwt_machine *make_six_cranks(void)
+{
+    return make_six_rods(true);
+}
+
+/* A wrist of skew twists on an arm with every offset there is. */
+static lwt_machine *make_offset_arm(void)
+{
+    lwt_table table = {.n = 6,
+                       .a = {0.12, 0.5, 0.09, 0, 0, 0},
+                       .alpha = {-90 * LWT_DEG, 0, 90 * LWT_DEG, -70 * LWT_DEG, 65 * LWT_DEG, 0},
+                       .d = {0.4, 0.15, -0.06, 0.55, 0, 0.1}};
+    static const double ref[6] = {0.2, -1.0, 0.3, 0.4, 0.8, -0.3};
+    return lwt_kit_arm("offset-arm", &table, ref, "x y z rx ry rz");
+}
+
 const lwt_subject lwt_subjects[LWT_SUBJECTS] = {
     {"three-rrr", make_three_rrr, 0.3, true, 1500},
     {"four-rrr", make_four_rrr, 0.15, true, 1500},
@@ -373,9 +439,12 @@ const lwt_subject lwt_subjects[LWT_SUBJECTS] = {
     {"rails", make_rails, 0.1, false, 1500},
     {"sarrus", make_sarrus, 0.5, true, 500},
     {"wrist-arm", make_wrist_arm, 2.5, false, 1500},
+    {"offset-arm", make_offset_arm, 2.5, false, 1000},
+    {"six-rails", make_six_rails, 0.08, false, 500},
+    {"six-cranks", make_six_cranks, 0.2, false, 500},
     {"skew-arm", make_skew_arm, 2.5, false, 1000},
     {"open-chain", make_open_chain, 0.8, false, 1000},
-    {"cylinder-loop", make_cylinder_loop, 0.15, false, 500},
+    {"cylinder-loop", make_cylinder_loop, 0.1, false, 500},
     {"ball-loop", make_ball_loop, 0.2, false, 500},
     {"three-upu", make_three_upu, 0.12, false, 500},
     {"three-rps", make_three_rps, 0.12, false, 500},

@@ -14,7 +14,7 @@ typedef struct lwt_subject {
     int count;
 } lwt_subject;
 
-enum { LWT_SUBJECTS = 18 };
+enum { LWT_SUBJECTS = 21 };
 extern const lwt_subject lwt_subjects[LWT_SUBJECTS];
 
 #endif
