@@ -99,6 +99,27 @@ static void closure_holds(const lwt_machine *m, const lw_config *config)
     lwt_near(angle, 0.0, 1e-10);
 }
 
+/* No solution stands twice in a list: scalar coordinates tell them apart (turns modulo a turn); what
+ * differs by the idle spin of a ball-ended member alone is the same solution. */
+static void check_listed_once(const lwt_machine *m, const lw_inverse_answer *inverse)
+{
+    size_t n = lw_spec_coord_count(m->spec);
+    for (size_t a = 0; a < inverse->n_solution; a++) {
+        for (size_t b = 0; b < a; b++) {
+            double worst = 0.0;
+            for (size_t i = 0; i < n; i++) {
+                double d = inverse->solution[a].config.coord[i] -
+                           inverse->solution[b].config.coord[i];
+                bool turning = lw_spec_coord_turning(m->spec, i);
+                worst = fmax(worst, fabs(turning ? lwt_wrap(d) : d));
+            }
+            if (!(worst > 1e-7)) {
+                lwt_fail("solutions %zu and %zu of %zu are the same", b, a, inverse->n_solution);
+            }
+        }
+    }
+}
+
 /* ---- inverse and forward undo each other ----------------------------------------------------- */
 
 /* `condition` scales what a closure error of 1e-12 may do to the drives or the pose. */
@@ -132,6 +153,7 @@ static void check_round_trip(lwt_machine *m, lwt_copy *at, double condition)
         }
         off = fmin(off, drives_apart(m->spec, solution->drive, at->drive));
     }
+    check_listed_once(m, inverse);
     /* A complete list holds the posture that we came from. */
     if (inverse->complete) {
         lwt_near(off, 0.0, slack);
