@@ -19,7 +19,7 @@
 enum {
     CONNECTION_MEMORY = 16 * 1024,
     SPARE_CONNECTIONS = 32, /* the library frees a connection a little after telling us */
-    QUIET_MS = 150,         /* without a new request before idle connections are closed */
+    QUIET_MS = 250,         /* without a new request before idle connections are closed */
     CLOSE_MS = 1000,        /* for idle connections to go */
     WORKER_WAIT_MS = 5000,
     LOG_LINES_A_SECOND = 5
