@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Lists that are called complete miss nothing, and walls stand where they are said to stand. Both are
- * judged by calculations of the test's own: Newton from many random starts, and the closed form of
- * a linkage. */
+/* Lists that are called complete miss nothing, and walls stand where they are said to stand. Both
+ * are judged by calculations of the test's own: Newton from many random starts, and the closed form
+ * of a linkage. */
 #include "lwt.h"
 #include "lwt_kit.h"
 #include "lwt_subjects.h"

@@ -354,7 +354,7 @@ static void check_rrr_forward(rrr_case *c, const double *theta_deg, const double
     }
     lw_mode mode = there->mode;
     assert_true(there->mode_known);
-    /* Some listed poses stand at the edge of reach: shake to the side where the mode still exists. */
+    /* Some listed poses stand at the edge of reach: shake to where the mode still exists. */
     lw_frame start = lwt_frame_identity();
     size_t exists = 0;
     for (int side = 0; side < 8 && exists == 0; side++) {

@@ -99,8 +99,8 @@ static void closure_holds(const lwt_machine *m, const lw_config *config)
     lwt_near(angle, 0.0, 1e-10);
 }
 
-/* No solution stands twice in a list: scalar coordinates tell them apart (turns modulo a turn); what
- * differs by the idle spin of a ball-ended member alone is the same solution. */
+/* No solution stands twice in a list: scalar coordinates tell them apart (turns modulo a turn);
+ * what differs by the idle spin of a ball-ended member alone is the same solution. */
 static void check_listed_once(const lwt_machine *m, const lw_inverse_answer *inverse)
 {
     size_t n = lw_spec_coord_count(m->spec);
