@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Questions in: from a JSON body or from a query string to lwd_question. Two steps, since the
  * mechanism is looked up between them: the head says which revision is asked, the rest is
- * understood with that revision's names and units. Faults are told in the findings with JSON pointers into the
- * body ("" and the member's name for query strings). One thread a call; nothing is kept. */
+ * understood with that revision's names and units. Faults are told in the findings with JSON
+ * pointers into the body ("/" and the member's name for query strings). One thread a call. */
 #ifndef LWD_QUESTION_IN_H
 #define LWD_QUESTION_IN_H
 

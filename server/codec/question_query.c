@@ -295,7 +295,8 @@ static void read_margin_min(query *in, const lwd_pair *at, lwd_question *q)
     int i = lwd_margin_of(at->name + 11);
     if (i < 0) {
         tell(in, at, "unknown-member",
-             "margin_min. and accuracy, load, speed, spare, travel or hold", "There is no margin of this name.");
+             "margin_min. and accuracy, load, speed, spare, travel or hold",
+             "There is no margin of this name.");
         return;
     }
     q->margin_min.asked[i] = true;

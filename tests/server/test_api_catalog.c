@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Documents in, revisions, states, tags, pages, differences: the catalog routes without a socket. */
+/* Documents in, revisions, states, tags, pages, differences: the catalog routes, no socket. */
 #include "api_rig.h"
 
 static int setup(void **state)

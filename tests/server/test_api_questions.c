@@ -152,7 +152,8 @@ static void a_mode_is_named_by_signs_or_by_its_name(void **state)
 {
     rig *r = *state;
     rig_wants(r, 200, rig_post(r, STAGE "inverse",
-                               "{\"pose\":{\"x\":15,\"y\":-10,\"rz\":6},\"mode\":\"elbows-left\"}"));
+                               "{\"pose\":{\"x\":15,\"y\":-10,\"rz\":6},"
+                               "\"mode\":\"elbows-left\"}"));
     char signs[64];
     (void)snprintf(signs, sizeof signs, "%s", rig_text(r, "asked/mode"));
     assert_string_equal(rig_text(r, "solutions/0/mode"), signs);
