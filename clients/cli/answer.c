@@ -115,33 +115,56 @@ static void flatten_pose(cJSON *row, const cJSON *pose)
     }
 }
 
-/* "drive m2 171.5 is 1.5 over [-170, 170]" for each limit. */
-static void limits_line(lwc_text *out, const cJSON *limits)
+/* "drive m2 171.5 is 1.5 beyond [-170, 170]". */
+static void limit_line(lwc_text *out, const cJSON *limit)
+{
+    const char *of = lwc_json_string(limit, "of");
+    const char *name = lwc_json_string(limit, "name");
+    if (name == NULL) {
+        lwc_value_line(out, limit);
+        return;
+    }
+    lwc_text_printf(out, "%s %s ", of != NULL ? of : "", name);
+    lwc_value_line(out, lwc_json_get(limit, "value"));
+    if (lwc_json_get(limit, "over") != NULL) {
+        lwc_text_puts(out, " is ");
+        lwc_value_line(out, lwc_json_get(limit, "over"));
+        lwc_text_puts(out, " beyond");
+    }
+    if (lwc_json_get(limit, "range") != NULL) {
+        lwc_text_puts(out, " [");
+        lwc_value_line(out, lwc_json_get(limit, "range"));
+        lwc_text_putc(out, ']');
+    }
+}
+
+/* The names alone, for a cell of a table. */
+static void limit_names(lwc_text *out, const cJSON *limits)
 {
     const cJSON *limit = NULL;
     cJSON_ArrayForEach(limit, limits)
     {
-        if (out->len > 0) {
-            lwc_text_puts(out, "; ");
-        }
-        const char *of = lwc_json_string(limit, "of");
         const char *name = lwc_json_string(limit, "name");
-        if (name == NULL) {
-            lwc_value_line(out, limit);
-            continue;
+        lwc_text_puts(out, out->len > 0 ? ", " : "");
+        lwc_text_puts(out, name != NULL ? name : "?");
+    }
+}
+
+/* One line a limit, for solution `no` (0: there is only one). */
+static void show_limits(lwc_text *out, const cJSON *limits, size_t no)
+{
+    const cJSON *limit = NULL;
+    cJSON_ArrayForEach(limit, limits)
+    {
+        lwc_text line = {0};
+        limit_line(&line, limit);
+        lwc_text_puts(out, "  ");
+        if (no > 0) {
+            lwc_text_printf(out, "%zu: ", no);
         }
-        lwc_text_printf(out, "%s %s ", of != NULL ? of : "", name);
-        lwc_value_line(out, lwc_json_get(limit, "value"));
-        if (lwc_json_get(limit, "over") != NULL) {
-            lwc_text_puts(out, " is ");
-            lwc_value_line(out, lwc_json_get(limit, "over"));
-            lwc_text_puts(out, " beyond");
-        }
-        if (lwc_json_get(limit, "range") != NULL) {
-            lwc_text_puts(out, " [");
-            lwc_value_line(out, lwc_json_get(limit, "range"));
-            lwc_text_putc(out, ']');
-        }
+        lwc_text_safe(out, line.data, line.len);
+        lwc_text_putc(out, '\n');
+        lwc_text_clear(&line);
     }
 }
 
@@ -172,7 +195,7 @@ static void solution_row(cJSON *rows, const cJSON *solution, size_t no, bool nam
                      ? lwc_json_copy(lwc_json_get(solution, "within_limits"))
                      : cJSON_CreateNull());
     lwc_text limits = {0};
-    limits_line(&limits, lwc_json_get(solution, "limits_broken"));
+    limit_names(&limits, lwc_json_get(solution, "limits_broken"));
     lwc_json_put_string(row, "limits broken", limits.len > 0 ? limits.data : "-");
     lwc_text_clear(&limits);
 }
@@ -196,6 +219,11 @@ static void show_solutions(lwc_text *out, const char *kind, const cJSON *solutio
     lwc_text_puts(out, no > 0 ? "\nsolutions\n" : "\nsolutions     none\n");
     (void)lwc_object_table(out, rows, 2);
     cJSON_Delete(rows);
+    no = 0;
+    cJSON_ArrayForEach(solution, solutions)
+    {
+        show_limits(out, lwc_json_get(solution, "limits_broken"), ++no);
+    }
 }
 
 /* A single solution under its own title, as a table of one row. */
@@ -209,6 +237,7 @@ static void show_single(lwc_text *out, const char *title, const cJSON *solution)
     lwc_json_drop(rows->child, "no");
     lwc_text_printf(out, "\n%s\n", title);
     (void)lwc_object_table(out, rows, 2);
+    show_limits(out, lwc_json_get(solution, "limits_broken"), 0);
     cJSON_Delete(rows);
 }
 
@@ -414,10 +443,30 @@ static bool is_shown_already(const char *name)
     return false;
 }
 
+/* Members without a place of their own: the short ones before the tables, the long ones after. */
+static void show_others(lwc_text *out, const cJSON *answer, bool shorts)
+{
+    const cJSON *member = NULL;
+    bool first = !shorts;
+    cJSON_ArrayForEach(member, answer)
+    {
+        if (!is_shown_already(member->string) && lwc_value_is_short(member) == shorts) {
+            lwc_text_puts(out, first ? "\n" : "");
+            first = false;
+            lwc_value_block(out, member->string, member, 0);
+        }
+    }
+}
+
 static void show_one(lwc_text *out, const char *kind, const cJSON *answer, bool colour)
 {
-    if (code_of(answer) >= 1000 || lwc_json_get(answer, "outcome") == NULL) {
-        lwc_value_block(out, "refused", answer, 0);
+    if (code_of(answer) >= 1000) {
+        lwc_text_puts(out, "refused       ");
+        lwc_show_problem(out, answer);
+        return;
+    }
+    if (lwc_json_get(answer, "outcome") == NULL) {
+        lwc_value_block(out, "answer", answer, 0);
         return;
     }
     lwc_text head = {0};
@@ -428,18 +477,10 @@ static void show_one(lwc_text *out, const char *kind, const cJSON *answer, bool 
     show_found(out, answer);
     const cJSON *limits = lwc_json_get(answer, "limits_broken");
     if (cJSON_IsArray(limits) && limits->child != NULL) {
-        lwc_text line = {0};
-        limits_line(&line, limits);
-        lwc_text_printf(out, "limits broken %s\n", line.data);
-        lwc_text_clear(&line);
+        lwc_text_puts(out, "limits broken\n");
+        show_limits(out, limits, 0);
     }
-    const cJSON *member = NULL;
-    cJSON_ArrayForEach(member, answer)
-    {
-        if (!is_shown_already(member->string)) {
-            lwc_value_block(out, member->string, member, 0);
-        }
-    }
+    show_others(out, answer, true);
     if (cJSON_IsArray(lwc_json_get(answer, "solutions"))) {
         show_solutions(out, kind, lwc_json_get(answer, "solutions"));
     }
@@ -448,6 +489,7 @@ static void show_one(lwc_text *out, const char *kind, const cJSON *answer, bool 
     if (cJSON_IsObject(lwc_json_get(answer, "margins"))) {
         show_margins(out, lwc_json_get(answer, "margins"), lwc_json_get(answer, "least"));
     }
+    show_others(out, answer, false);
 }
 
 void lwc_show_answer(lwc_text *out, const char *kind, const cJSON *answer, bool colour)

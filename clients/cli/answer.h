@@ -24,6 +24,12 @@ const cJSON *lwc_findings(const cJSON *answer);
 /* The findings one by one, the worst first. Returns their number. */
 size_t lwc_show_findings(lwc_text *out, const cJSON *findings);
 
+/* Their codes, each once, with commas between; those of one severity, or all for NULL. */
+void lwc_finding_codes(lwc_text *out, const cJSON *findings, const char *severity);
+
+/* A problem document in words, one of a batch for example. */
+void lwc_show_problem(lwc_text *out, const cJSON *problem);
+
 /* A refusal in words: sentence, pointer, expected, got, next. `asked` names the command for
  * hints. `problem` is NULL where the body was no JSON. */
 void lwc_show_refusal(lwc_text *out, const lwc_http *http, const char *asked,

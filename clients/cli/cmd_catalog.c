@@ -22,23 +22,6 @@ static int finish(lwc_session *session, cJSON *tree, lwc_text *text, int status)
 
 /* ---- load ----------------------------------------------------------------------------------- */
 
-/* Codes of the warnings, as --accept wants them; empty where there are none. */
-static void warning_codes(lwc_text *out, const cJSON *findings)
-{
-    const cJSON *finding = NULL;
-    cJSON_ArrayForEach(finding, findings)
-    {
-        const char *severity = lwc_json_string(finding, "severity");
-        const char *code = lwc_json_string(finding, "code");
-        code = code != NULL ? code : lwc_json_string(finding, "finding");
-        if (severity != NULL && strcmp(severity, "warning") == 0 && code != NULL &&
-            strstr(lwc_text_string(out), code) == NULL) {
-            lwc_text_puts(out, out->len > 0 ? "," : "");
-            lwc_text_safe(out, code, strlen(code));
-        }
-    }
-}
-
 static void show_loaded(lwc_text *out, const char *file, const char *name, long status,
                         const cJSON *answer)
 {
@@ -62,7 +45,7 @@ static void show_loaded(lwc_text *out, const char *file, const char *name, long 
     lwc_text_putc(out, '\n');
     size_t count = lwc_show_findings(out, lwc_findings(answer));
     lwc_text codes = {0};
-    warning_codes(&codes, lwc_findings(answer));
+    lwc_finding_codes(&codes, lwc_findings(answer), "warning");
     if (count == 0) {
         lwc_text_puts(out, "  no findings\n");
     }

@@ -210,8 +210,11 @@ static int ask_again(lwc_session *session, const lwc_replay *replay, const lwc_r
     if (answer == NULL || (refused && reply.status != entry->status)) {
         sum->unanswered++;
         if (contact == LWC_ANSWERED) {
+            lwc_args quiet = *session->args; /* standard output is for the differences */
+            lwc_session told = {.args = &quiet, .http = session->http};
+            quiet.json = false;
             lwc_complain("line %zu was not answered", entry->line);
-            (void)lwc_refused(session, "ask", &reply, answer);
+            (void)lwc_refused(&told, "ask", &reply, answer);
         }
         status = contact == LWC_UNUSABLE ? LWC_EXIT_YES : contact == LWC_ANSWERED ? 0 : status;
     } else {

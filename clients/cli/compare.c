@@ -86,7 +86,8 @@ static lwc_unit_kind kind_of(const char *name, lwc_unit_kind outer)
         const char *names;
         lwc_unit_kind kind;
     } TABLE[] = {
-        {"code,no,mode_no,revision,complex,real,not_converged,rank,ranks,dimension,from,to,mobility",
+        {"code,no,mode_no,revision,complex,real,not_converged,rank,ranks,dimension,from,to,"
+         "mobility",
          LWC_COUNT},
         {"drives,joints,disagreement,allowed,readings", LWC_READING},
         {"quaternion,direction,margins,least,margin", LWC_RATIO},

@@ -129,8 +129,8 @@ _leeway() {
       else
         case $kind in
           forward) _leeway_words "near." ;;
-          inverse) _leeway_words "x= y= z= rz= yaw= pitch= roll= qw= qx= qy= qz= joint. near." ;;
-          *) _leeway_words "x= y= z= rz= yaw= pitch= roll= qw= qx= qy= qz= joint. from. near." ;;
+          reach) _leeway_words "x= y= z= rz= yaw= pitch= roll= qw= qx= qy= qz= joint. from." ;;
+          *) _leeway_words "x= y= z= rz= yaw= pitch= roll= qw= qx= qy= qz= joint. near." ;;
         esac
         compopt -o nospace 2>/dev/null
       fi

@@ -77,7 +77,8 @@ static const struct topic {
     [LWC_HEALTH] = {"health",
                     "Says whether the service is alive and ready. Exit status 0 only if both.\n\n"
                     "  leeway health --server http://cell-7:8470\n"},
-    [LWC_ABOUT] = {"about", "Shows what the service says of itself: versions, and what it is not.\n"},
+    [LWC_ABOUT] = {"about",
+                   "Shows what the service says of itself: versions, and what it is not.\n"},
     [LWC_REPLAY] =
         {"replay FILE",
          "Asks the questions of a file again, compares the answers with those recorded and\n"

@@ -247,6 +247,26 @@ static bool put_near(cJSON *body, place *near)
     return put_posture(lwc_json_room(body, "near"), near, "near");
 }
 
+/* Where a move starts, and for reach the posture near it: readings alone name no assembly mode. */
+static bool put_from_and_near(cJSON *body, lwc_kind kind, place *from, place *near)
+{
+    if (has_any(from) && !put_posture(lwc_json_room(body, "from"), from, "from")) {
+        return false;
+    }
+    if (!has_any(near)) {
+        return true;
+    }
+    if (kind != LWC_REACH) {
+        return put_near(body, near);
+    }
+    if (lwc_json_get(body, "from") == NULL) {
+        lwc_complain("reach takes near only for where a move starts; give from.NAME=.. as well, or "
+                     "ask inverse for the solution nearby");
+        return false;
+    }
+    return put_near(lwc_json_room(body, "from"), near);
+}
+
 static bool put_main(cJSON *body, lwc_kind kind, place *main_place, const char *mode)
 {
     bool wants_pose = kind == LWC_INVERSE || kind == LWC_REACH;
@@ -472,8 +492,7 @@ cJSON *lwc_question_build(lwc_kind kind, const char *const *words, size_t n_word
               (args->from == NULL || place_put_list(&from, args->from, &from_text)) &&
               only_for(has_any(&from), "from", kind == LWC_REACH, kind, "reach") &&
               put_main(body, kind, &main_place, args->mode) &&
-              (!has_any(&near) || put_near(body, &near)) &&
-              (!has_any(&from) || put_posture(lwc_json_room(body, "from"), &from, "from")) &&
+              put_from_and_near(body, kind, &from, &near) &&
               put_options(body, kind, args, &point_text);
     place_clear(&main_place);
     place_clear(&near);

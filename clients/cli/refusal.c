@@ -47,11 +47,12 @@ static void show_place(lwc_text *out, const cJSON *item, const char *indent)
         {"next", "next"}};
     for (size_t i = 0; i < sizeof NAMES / sizeof NAMES[0]; i++) {
         const cJSON *member = lwc_json_get(item, NAMES[i][0]);
-        if (member == NULL || cJSON_IsNull(member)) {
+        bool empty = cJSON_IsString(member) && member->valuestring[0] == '\0';
+        if (member == NULL || cJSON_IsNull(member) || (empty && i > 0)) {
             continue;
         }
         lwc_text_printf(out, "%s%-10s", indent, NAMES[i][1]);
-        if (i == 0 && cJSON_IsString(member) && member->valuestring[0] == '\0') {
+        if (empty) {
             lwc_text_puts(out, "the document as a whole");
         } else {
             lwc_value_line(out, member);
@@ -76,12 +77,14 @@ static void show_finding(lwc_text *out, const cJSON *finding)
     code = code != NULL ? code : lwc_json_get(finding, "code");
     const char *text = sentence(finding);
     lwc_text_puts(out, "  ");
-    put_safe(out, severity != NULL ? severity : "error");
-    if (code != NULL) {
-        lwc_text_puts(out, " ");
-        lwc_value_line(out, code);
+    if (severity != NULL) {
+        put_safe(out, severity);
+        lwc_text_putc(out, ' ');
     }
-    lwc_text_puts(out, ": ");
+    if (code != NULL) {
+        lwc_value_line(out, code);
+        lwc_text_puts(out, ": ");
+    }
     if (text != NULL) {
         put_safe(out, text);
     } else {
@@ -107,6 +110,22 @@ size_t lwc_show_findings(lwc_text *out, const cJSON *findings)
     return count;
 }
 
+void lwc_finding_codes(lwc_text *out, const cJSON *findings, const char *severity)
+{
+    const cJSON *finding = NULL;
+    cJSON_ArrayForEach(finding, findings)
+    {
+        const char *own = lwc_json_string(finding, "severity");
+        const char *code = lwc_json_string(finding, "finding");
+        code = code != NULL ? code : lwc_json_string(finding, "code");
+        bool fits = severity == NULL || (own != NULL && strcmp(own, severity) == 0);
+        if (fits && code != NULL && strstr(lwc_text_string(out), code) == NULL) {
+            lwc_text_puts(out, out->len > 0 ? "," : "");
+            put_safe(out, code);
+        }
+    }
+}
+
 /* What to do next where the status alone says it. */
 static void show_next(lwc_text *out, const lwc_http *http, const char *asked, long status,
                       long retry_after_s)
@@ -130,11 +149,8 @@ static void show_next(lwc_text *out, const lwc_http *http, const char *asked, lo
         next = "see what is there: leeway list, leeway history NAME";
         break;
     case 409:
-        next = strcmp(asked, "publish") == 0
-                   ? "read the report (leeway report NAME REV); accept its warnings by name: "
-                     "--accept CODE,..."
-                   : "see which revision is published: leeway history NAME; "
-                     "publish one: leeway publish NAME REV; or name one: --revision N";
+        next = "see which revision is published: leeway history NAME; "
+               "publish one: leeway publish NAME REV; or name one: --revision N";
         break;
     case 412:
         next = "somebody changed it meanwhile; look again (leeway history NAME), then repeat";
@@ -180,6 +196,16 @@ static void show_foreign(lwc_text *out, const lwc_http *http, const lwc_reply *r
     }
 }
 
+/* How the warnings that stand in the way of publishing are accepted. */
+static void show_accept(lwc_text *out, const cJSON *findings)
+{
+    lwc_text codes = {0};
+    lwc_finding_codes(&codes, findings, NULL);
+    lwc_text_printf(out, "  %-10sif they may stand, publish with --accept %s\n", "next",
+                    lwc_text_string(&codes));
+    lwc_text_clear(&codes);
+}
+
 /* Whether one of the findings says this sentence already. */
 static bool repeats(const cJSON *findings, const char *detail)
 {
@@ -194,6 +220,36 @@ static bool repeats(const cJSON *findings, const char *detail)
     return false;
 }
 
+void lwc_show_problem(lwc_text *out, const cJSON *problem)
+{
+    const char *title = lwc_json_string(problem, "title");
+    const char *detail = lwc_json_string(problem, "detail");
+    const cJSON *findings = lwc_findings(problem);
+    double status = 0.0;
+    double code = 0.0;
+    put_safe(out, title != NULL ? title : "the service refused");
+    if (lwc_json_number(problem, "status", &status)) {
+        lwc_text_printf(out, " (status %.0f", status);
+        if (lwc_json_number(problem, "code", &code)) {
+            lwc_text_printf(out, ", code %.0f", code);
+        }
+        lwc_text_putc(out, ')');
+    }
+    lwc_text_putc(out, '\n');
+    if (detail != NULL && (title == NULL || strcmp(detail, title) != 0) &&
+        !repeats(findings, detail)) {
+        lwc_text_puts(out, "  ");
+        put_safe(out, detail);
+        lwc_text_putc(out, '\n');
+    }
+    /* A single finding says the same as the problem itself, with more: then it speaks alone. */
+    if (cJSON_IsArray(findings) && cJSON_IsObject(findings->child)) {
+        (void)lwc_show_findings(out, findings);
+    } else {
+        show_place(out, problem, "  ");
+    }
+}
+
 void lwc_show_refusal(lwc_text *out, const lwc_http *http, const char *asked,
                       const lwc_reply *reply, const cJSON *problem)
 {
@@ -202,28 +258,15 @@ void lwc_show_refusal(lwc_text *out, const lwc_http *http, const char *asked,
         show_next(out, http, asked, reply->status, reply->retry_after_s);
         return;
     }
-    const char *title = lwc_json_string(problem, "title");
-    const char *detail = lwc_json_string(problem, "detail");
-    double code = 0.0;
-    lwc_text_puts(out, "leeway: ");
-    put_safe(out, title != NULL ? title : "the service refused");
-    if (lwc_json_number(problem, "code", &code)) {
-        lwc_text_printf(out, " (status %ld, code %.0f)\n", reply->status, code);
-    } else {
-        lwc_text_printf(out, " (status %ld)\n", reply->status);
-    }
-    if (detail != NULL && (title == NULL || strcmp(detail, title) != 0) &&
-        !repeats(lwc_findings(problem), detail)) {
-        lwc_text_puts(out, "  ");
-        put_safe(out, detail);
-        lwc_text_putc(out, '\n');
-    }
-    /* A single finding says the same as the problem itself, with more: then it speaks alone. */
     const cJSON *findings = lwc_findings(problem);
-    if (cJSON_IsObject(cJSON_IsArray(findings) ? findings->child : NULL)) {
-        (void)lwc_show_findings(out, findings);
-    } else {
-        show_place(out, problem, "  ");
+    lwc_text_puts(out, "leeway: ");
+    lwc_show_problem(out, problem);
+    if (lwc_json_get(problem, "status") == NULL) {
+        lwc_text_printf(out, "  %-10s%ld\n", "status", reply->status);
     }
-    show_next(out, http, asked, reply->status, reply->retry_after_s);
+    if (strcmp(asked, "publish") == 0 && reply->status == 409 && cJSON_IsArray(findings)) {
+        show_accept(out, findings);
+    } else {
+        show_next(out, http, asked, reply->status, reply->retry_after_s);
+    }
 }

@@ -133,9 +133,9 @@ static bool check_names(const cJSON *tree, const char *const *known, size_t coun
             found = found || strcmp(item->string, known[i]) == 0;
         }
         if (!found) {
-            const char *near = lwc_starts(item->string, "expect") ? "unknown member; it is \"expect\""
-                                                                  : "unknown member";
-            return blame_at(why, line, item->string, NULL, near);
+            return blame_at(why, line, item->string, NULL,
+                            lwc_starts(item->string, "expect") ? "unknown member; it is \"expect\""
+                                                               : "unknown member");
         }
     }
     return true;

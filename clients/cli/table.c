@@ -2,6 +2,7 @@
 /* Laying out tables and values; see table.h. */
 #include "table.h"
 
+#include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -31,14 +32,6 @@ void lwc_table_text(lwc_table *table, const char *text)
     lwc_text_safe(&safe, text, strlen(text));
     table->cell[table->n_cells++] = lwc_copy(lwc_text_string(&safe));
     lwc_text_clear(&safe);
-}
-
-void lwc_table_number(lwc_table *table, double value)
-{
-    lwc_text text = {0};
-    lwc_text_number(&text, value, LWC_DIGITS);
-    lwc_table_text(table, lwc_text_string(&text));
-    lwc_text_clear(&text);
 }
 
 void lwc_table_value(lwc_table *table, const cJSON *item)
@@ -113,7 +106,8 @@ void lwc_value_line(lwc_text *out, const cJSON *item)
     } else if (cJSON_IsString(item)) {
         lwc_text_safe(out, item->valuestring, strlen(item->valuestring));
     } else if (cJSON_IsNumber(item)) {
-        lwc_text_number(out, item->valuedouble, LWC_DIGITS);
+        double value = item->valuedouble;
+        lwc_text_number(out, fabs(value) < 1e-12 ? 0.0 : value, LWC_DIGITS);
     } else if (cJSON_IsBool(item)) {
         lwc_text_puts(out, cJSON_IsTrue(item) ? "yes" : "no");
     } else if (item->child == NULL) {
@@ -140,6 +134,18 @@ void lwc_value_line(lwc_text *out, const cJSON *item)
             }
         }
     }
+}
+
+bool lwc_value_is_short(const cJSON *item)
+{
+    if (is_scalar(item)) {
+        return true;
+    }
+    lwc_text line = {0};
+    lwc_value_line(&line, item);
+    bool fits = lwc_columns(lwc_text_string(&line)) <= LINE_COMFORT;
+    lwc_text_clear(&line);
+    return fits && !(cJSON_IsArray(item) && cJSON_IsObject(item->child));
 }
 
 /* All members are objects: then their member names are the columns, in the order first met. */
@@ -283,8 +289,6 @@ static void put_name(lwc_text *out, const char *name, size_t indent)
 
 void lwc_value_block(lwc_text *out, const char *name, const cJSON *item, size_t indent)
 {
-    lwc_text line = {0};
-    lwc_value_line(&line, item);
     bool rows = cJSON_IsArray(item) && cJSON_IsObject(item->child);
     const cJSON *values = matrix_values(item);
     put_name(out, name, indent);
@@ -292,8 +296,8 @@ void lwc_value_block(lwc_text *out, const char *name, const cJSON *item, size_t 
         trim_blanks(out);
         lwc_text_putc(out, '\n');
         matrix_table(out, item, values, indent + 2);
-    } else if (is_scalar(item) || (!rows && lwc_columns(lwc_text_string(&line)) <= LINE_COMFORT)) {
-        lwc_text_puts(out, lwc_text_string(&line));
+    } else if (lwc_value_is_short(item)) {
+        lwc_value_line(out, item);
         lwc_text_putc(out, '\n');
     } else {
         trim_blanks(out);
@@ -310,5 +314,4 @@ void lwc_value_block(lwc_text *out, const char *name, const cJSON *item, size_t 
             }
         }
     }
-    lwc_text_clear(&line);
 }

@@ -30,7 +30,8 @@ class Questions(Case):
              {"pose": {"quaternion": {"w": 1, "x": 0, "y": 0, "z": 0}}}),
             (["inverse", "rvx=1", "rvy=2", "rvz=3"],
              {"pose": {"rotation_vector": {"x": 1, "y": 2, "z": 3}}}),
-            (["inverse", "dx=0", "dy=0", "dz=1"], {"pose": {"direction": {"x": 0, "y": 0, "z": 1}}}),
+            (["inverse", "dx=0", "dy=0", "dz=1"],
+             {"pose": {"direction": {"x": 0, "y": 0, "z": 1}}}),
             (["inverse", "x=1", "joint.shaft=720", "--mode", "+-++"],
              {"pose": {"x": 1, "joints": {"shaft": 720}}, "mode": "+-++"}),
             (["inverse", "x=1", "mode=+-"], {"pose": {"x": 1}, "mode": "+-"}),
@@ -59,6 +60,8 @@ class Questions(Case):
             (["reach", "x=1", "--from", "m1=3"], {"pose": {"x": 1}, "from": {"drives": {"m1": 3}}}),
             (["reach", "x=1", "--from", "x=0 y=0 mode=++"],
              {"pose": {"x": 1}, "from": {"pose": {"x": 0, "y": 0}, "mode": "++"}}),
+            (["reach", "x=1", "from.m1=3", "near.m1=2"],
+             {"pose": {"x": 1}, "from": {"drives": {"m1": 3}, "near": {"drives": {"m1": 2}}}}),
             (["reach", "x=1", "--margin-min", "1.5", "--budget", "9"],
              {"pose": {"x": 1}, "margin_min": 1.5, "budget": 9}),
             (["reach", "x=1", "--margin-min", "load=1.2,travel=0.05"],
@@ -126,6 +129,7 @@ class Questions(Case):
             (["margin", "m1=1", "--budget", "5"], "--distance"),
             (["jacobian", "m1=1", "--point", "x=1"], "x=..,y=..,z=.."),
             (["jacobian", "m1=1", "--point", "x=1,y=2,z=3,rz=4"], "x=..,y=..,z=.."),
+            (["reach", "x=1", "near.m1=2"], "from.NAME"),
             (["reach", "x=1", "--margin-min", "much"], "expected a number"),
             (["reach", "x=1", "--margin-min", "load=1,load=2"], "expected a number"),
             (["reach", "x=1", "--budget", "-5"], "whole number"),
@@ -211,9 +215,11 @@ class Answers(Case):
         lines = [line for line in got.splitlines() if line.startswith("  ")]
         self.assertEqual(lines[0].split(), ["no", "mode", "name", "m1", "m2", "within", "limits",
                                             "limits", "broken"])
-        self.assertEqual(lines[1].split(), ["1", "++", "elbows-left", "12.345679", "-5", "yes", "-"])
+        self.assertEqual(lines[1].split(), ["1", "++", "elbows-left", "12.345679", "-5", "yes",
+                                            "-"])
         self.assertEqual(lines[2].split()[:5], ["2", "+-", "-", "-100.5", "171.5"])
-        self.assertIn("drive m2 171.5 is 1.5 beyond [-170, 170]", lines[2])
+        self.assertEqual(lines[2].split()[5:], ["no", "m2"])
+        self.assertEqual(lines[3], "  2: drive m2 171.5 is 1.5 beyond [-170, 170]")
         self.assertRegex(got, r"complete +yes, no solution is missing \(explicit\)")
         ends = [line.index(number) + len(number) for line, number in
                 zip(lines[1:], ("12.345679", "-100.5"))]
@@ -258,11 +264,12 @@ class Answers(Case):
         got = self.ask("jacobian", answer(forward={
             "rows": [{"name": "x", "unit": "mm/s"}, {"name": "rz", "unit": "deg/s"}],
             "columns": [{"name": "m1", "unit": "deg/s"}, {"name": "m2", "unit": "deg/s"}],
-            "values": [[1.5, -2], [0, 1e-9]]})).out
+            "values": [[1.5, -2], [-1e-16, 1e-9]]})).out
         lines = got.splitlines()
         at = lines.index("forward")
         self.assertEqual(lines[at + 1].split(), ["m1", "[deg/s]", "m2", "[deg/s]"])
         self.assertEqual(lines[at + 2].split(), ["x", "[mm/s]", "1.5", "-2"])
+        # What is below 1e-12 is the rounding of a zero and shown so.
         self.assertEqual(lines[at + 3].split(), ["rz", "[deg/s]", "0", "1e-09"])
 
     def test_members_nobody_foresaw_are_shown(self):
@@ -274,13 +281,15 @@ class Answers(Case):
 
     def test_batch_counts_as_its_worst_member(self):
         refused = {"status": 422, "code": 1021, "title": "No such drive.", "pointer": "/batch/1"}
-        for members, status in (([answer(), answer()], 0), ([answer(), answer(4, "out_of_reach")], 1),
+        for members, status in (([answer(), answer()], 0),
+                                ([answer(), answer(4, "out_of_reach")], 1),
                                 ([answer(4, "out_of_reach"), refused], 2)):
             got = self.ask("inverse", {"mechanism": "label-stage", "count": 2,
                                        "answers": members})
             self.assertEqual(got.status, status)
             self.assertIn("answer 2 of 2", got.out)
-        self.assertIn("No such drive.", got.out)
+        self.assertIn("refused       No such drive. (status 422, code 1021)", got.out)
+        self.assertIn("/batch/1", got.out)
 
 
 class Catalog(Case):
@@ -345,7 +354,8 @@ class Catalog(Case):
         path = "/v1/mechanisms/label-stage/revisions/4/"
         self.service.answers[f"POST {path}publish"] = Reply(200, {"state": "published"})
         self.service.answers[f"POST {path}withdraw"] = Reply(200, {"state": "withdrawn"})
-        got = self.leeway("publish", "label-stage", "4", "--accept", "one,two", "--reason", "Größe")
+        got = self.leeway("publish", "label-stage", "4", "--accept", "one,two", "--reason",
+                          "Größe")
         self.assertEqual((got.status, got.err), (0, ""))
         self.assertEqual(self.asked_body(), {"accept": ["one", "two"], "reason": "Größe"})
         self.assertIn("answers from now on", got.out)
@@ -373,6 +383,17 @@ class Catalog(Case):
         self.assertIn("leeway load FILE", self.leeway("list").out)
         answers[get] = Reply(200, {"machines": []})
         self.assertEqual(self.leeway("list").status, 2)
+
+    def test_publish_tells_which_warnings_to_accept(self):
+        self.service.answers["POST /v1/mechanisms/a/revisions/1/publish"] = problem(
+            409, 1065, "Warnings.", findings=[
+                {"finding": "singular-reference", "pointer": "", "text": "Singular.",
+                 "expected": "", "got": ""},
+                {"finding": "mode-named-twice", "pointer": "/modes/b", "text": "Twice."}])
+        got = self.leeway("publish", "a", "1")
+        self.assertEqual(got.status, 2)
+        self.assertIn("--accept singular-reference,mode-named-twice", got.err)
+        self.assertNotIn("expected", got.err)
 
     def test_looking(self):
         get = "GET /v1/mechanisms"

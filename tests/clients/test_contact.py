@@ -2,6 +2,7 @@
 """The talk with the service when it goes wrong: nobody there, late, foreign, huge, refused, busy,
 interrupted; and what must never reach a terminal or another server."""
 
+import json
 import os
 import pty
 import re
@@ -289,6 +290,17 @@ class Terminal(Case):
         self.assertNotIn("\x1b", self.leeway(*ASK, env={"TERM": "xterm"}).out)
         self.assertIn("\x1b[", self.on_terminal(*ASK))
         self.assertNotIn("\x1b", self.on_terminal(*ASK, NO_COLOR="1"))
+
+    def test_progress_of_a_long_replay_is_shown_on_a_terminal(self):
+        path = "/v1/mechanisms/label-stage/reach"
+        line = json.dumps({"method": "POST", "path": path, "body": {"pose": {"x": 1}},
+                           "expect": {"code": 1}})
+        file = self.write("slow.replay", '{"format":"leeway-replay/1"}\n' + (line + "\n") * 3)
+        self.service.answers[REACH] = Reply(200, answer(), wait_s=0.3)
+        shown = self.on_terminal("replay", file)
+        self.assertIn("\r2 of 3 asked, 0 differ", shown)
+        self.assertIn("3 questions: 3 same, 0 differ", shown)
+        self.assertNotIn("\x1b", shown)
 
     def test_foreign_text_cannot_drive_the_terminal(self):
         nasty = "red \u001b[31m bell \u0007 csi \u009b2J del \u007f end"

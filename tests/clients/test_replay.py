@@ -183,6 +183,11 @@ class Replay(Case):
         self.assertEqual(got.status, 2)
         self.assertIn("2 questions: 1 same, 0 differ, 1 not answered", got.out)
         self.assertIn("line 2 was not answered", got.err)
+        self.service.answers[f"POST {PATH}"] = [problem(500, 1090, "Broken."), Reply(200, answer())]
+        got = self.leeway("replay", self.path("q.replay"), "--json")
+        self.assertEqual([json.loads(line) for line in got.out.splitlines()], [
+            {"questions": 2, "asked": 2, "same": 1, "differ": 0, "differences": 0,
+             "not_answered": 1}])
         for reply in (problem(401, 1010, "Token."), Reply(200, b"<html>", "text/html")):
             self.assertEqual(self.replay(answer(), reply).status, 2)
 
@@ -220,8 +225,10 @@ class Replay(Case):
             ("", "the file is empty"), ("{}\n", "line 1: expected the head"),
             ('{"format": "leeway-replay/2"}\n', "line 1: expected the head"),
             (self.text({"expectt": 1}), "line 2: /expectt: unknown member"),
-            (self.text(drop="expect"), "line 2: /expect"), (self.text(drop="body"), "line 2: /body"),
-            (self.text({"expect": 3}), "line 2: /expect"), (self.text({"body": []}), "line 2: /body"),
+            (self.text(drop="expect"), "line 2: /expect"),
+            (self.text(drop="body"), "line 2: /body"),
+            (self.text({"expect": 3}), "line 2: /expect"),
+            (self.text({"body": []}), "line 2: /body"),
             (self.text({"method": "PUT"}), "line 2: /method"),
             (self.text({"method": "GET"}), "line 2: /path"),
             (self.text({"method": "GET", "path": "/v1/mechanisms/a/reach"}), "line 2: /body"),

@@ -132,7 +132,8 @@ class Completion(Case):
 
     def test_completes_names_of_the_catalog(self):
         self.service.answers["GET /v1/mechanisms"] = Reply(200, {
-            "mechanisms": [{"mechanism": name} for name in ("label-stage", "lid-turner", "tilt-table")],
+            "mechanisms": [{"mechanism": "label-stage"}, {"mechanism": "lid-turner"},
+                           {"mechanism": "tilt-table"}],
             "next": None})
         self.assertEqual(self.complete("show", "l"), ["label-stage", "lid-turner"])
         self.assertEqual(self.complete("ask", "inverse", "tilt"), ["tilt-table"])
@@ -142,7 +143,8 @@ class Completion(Case):
                          ["tilt-table"])
 
     def test_completes_nothing_where_nobody_answers(self):
-        self.assertEqual(self.complete("show", "l", env={"LEEWAY_SERVER": "http://127.0.0.1:1"}), [])
+        nobody = {"LEEWAY_SERVER": "http://127.0.0.1:1"}
+        self.assertEqual(self.complete("show", "l", env=nobody), [])
 
     def test_completes_exactly_the_options_the_program_takes(self):
         for command in COMMANDS:
