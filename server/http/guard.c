@@ -225,8 +225,8 @@ bool lwd_guard_uri(lwd_refusal *refusal, const lwd_uri *uri, lwd_uri_fault fault
         [LWD_URI_TOO_LONG] = "",
         [LWD_URI_FORM] = "The URL must begin with a slash.",
         [LWD_URI_PATH_NUL] = "The path holds %00; no name has a NUL in it.",
-        [LWD_URI_PATH_CHAR] = "Each part of the path may hold A-Z, a-z, 0-9, '.', '_' and '-' "
-                              "only, and may not be \".\" or \"..\".",
+        [LWD_URI_PATH_CHAR] = ("Each part of the path may hold A-Z, a-z, 0-9, '.', '_' and '-' "
+                               "only, and may not be \".\" or \"..\"."),
         [LWD_URI_DEPTH] = "The path has too many parts.",
         [LWD_URI_QUERY_NUL] = "The query holds %00; no member has a NUL in it.",
         [LWD_URI_QUERY_ESCAPE] = "In the query a '%' must be followed by two hexadecimal digits.",
