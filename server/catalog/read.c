@@ -37,13 +37,13 @@ const char *const lwd_catalog_read_sql[LWD_CATALOG_R_COUNT] = {
     [LWD_CATALOG_R_REVISION] = "SELECT " REVISION_COLUMNS
                                ", r.checksum, r.report, r.document" REVISION_FROM REVISION_NUMBER,
     [LWD_CATALOG_R_EVENTS] =
-        "SELECT e.serial, e.number, e.action, e.at_ms, e.who, e.reason, e.accepted"
-        " FROM mechanism m JOIN state_event e ON e.mechanism_id = m.id"
-        " WHERE m.name = ?1 AND e.serial > ?2 AND (?3 = 0 OR e.number = ?3)"
-        " ORDER BY e.serial LIMIT ?4",
+        ("SELECT e.serial, e.number, e.action, e.at_ms, e.who, e.reason, e.accepted"
+         " FROM mechanism m JOIN state_event e ON e.mechanism_id = m.id"
+         " WHERE m.name = ?1 AND e.serial > ?2 AND (?3 = 0 OR e.number = ?3)"
+         " ORDER BY e.serial LIMIT ?4"),
     [LWD_CATALOG_R_SOLUTIONS] =
-        "SELECT q.created_ms, q.checksum, q.content FROM mechanism m"
-        " JOIN solution_set q ON q.mechanism_id = m.id WHERE m.name = ?1 AND q.number = ?2",
+        ("SELECT q.created_ms, q.checksum, q.content FROM mechanism m"
+         " JOIN solution_set q ON q.mechanism_id = m.id WHERE m.name = ?1 AND q.number = ?2"),
 };
 
 lwd_catalog_reader *lwd_catalog_reader_take(lwd_catalog *c)
