@@ -3,6 +3,7 @@
 #include "../math/vec3.h"
 #include "build.h"
 
+#include <stddef.h>
 #include <stdlib.h>
 
 static lw_code build_whole(lw_model *m, lw_err *err)
@@ -106,19 +107,28 @@ static lw_code build_steps(lw_model *m, unsigned long long seed, lw_err *err)
     return rc;
 }
 
+/* Copies what is in use: untouched pages of the large tables cost no memory. */
+static void copy_used(lw_spec *to, const lw_spec *from)
+{
+    memcpy(to, from, offsetof(lw_spec, mode));
+    memcpy(to->mode, from->mode, from->n_mode * sizeof to->mode[0]);
+    to->n_check = from->n_check;
+    memcpy(to->check, from->check, from->n_check * sizeof to->check[0]);
+}
+
 lw_code lw_model_new(lw_model **out, const lw_spec *spec, unsigned long long seed,
                      lw_report *report, lw_err *err)
 {
     *out = NULL;
     memset(report, 0, sizeof *report);
     lw_model *m = calloc(1, sizeof *m);
-    lw_spec *copy = malloc(sizeof *copy);
+    lw_spec *copy = calloc(1, sizeof *copy);
     if (m == NULL || copy == NULL) {
         free(m);
         free(copy);
         return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
     }
-    *copy = *spec;
+    copy_used(copy, spec);
     m->spec = copy;
     lw_err local = {0};
     lw_err *e = err != NULL ? err : &local;
