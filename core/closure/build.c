@@ -894,6 +894,27 @@ void lwi_system_blocks(lwi_system *sys)
     }
 }
 
+void lwi_system_fix_rod(lwi_system *sys, size_t r)
+{
+    lwi_rod_info *info = &sys->rod[r];
+    if (info->fixed || sys->n_row >= LWI_MAX_ROWS) {
+        return;
+    }
+    lwi_row *row = &sys->row[sys->n_row++];
+    memset(row, 0, sizeof *row);
+    row->kind = LWI_ROW_ROD;
+    row->a = info->a;
+    row->b = info->b;
+    row->rod = (int)r;
+    row->joint = row->coupling = -1;
+    lwi_copy3(row->pa, info->end[0]);
+    lwi_copy3(row->pb, info->end[1]);
+    row->link = info->link;
+    row->n_link = info->n_link;
+    info->fixed = true;
+    lwi_system_blocks(sys);
+}
+
 void lwi_system_drop_row(lwi_system *sys, size_t i)
 {
     sys->row_dropped[sys->n_row_dropped++] = sys->row[i];

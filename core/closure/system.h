@@ -135,6 +135,8 @@ bool lwi_rod_moves(const lw_spec *spec, size_t rod);
 lw_code lwi_system_build(lwi_system *out, const lwi_build_ask *ask, lw_err *err);
 /* Recomputes blocks after rows were dropped. */
 void lwi_system_blocks(lwi_system *sys);
+/* Makes a rod that moves an equation with a given length. */
+void lwi_system_fix_rod(lwi_system *sys, size_t rod);
 /* Takes row i out of the solved rows; it stays checked. */
 void lwi_system_drop_row(lwi_system *sys, size_t i);
 

@@ -161,6 +161,8 @@ void lw_model_free(lw_model *m)
     free(m->whole);
     free(m->inverse);
     free(m->config_store);
+    lwi_set_free(m->set[0]);
+    lwi_set_free(m->set[1]);
     free(m);
 }
 

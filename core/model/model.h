@@ -5,6 +5,7 @@
 #define LWI_MODEL_H
 
 #include "../closure/system.h"
+#include "../homotopy/sets.h"
 #include "../limb/limb.h"
 #include "../math/linalg.h"
 
@@ -64,6 +65,7 @@ struct lw_model {
     lwi_limb limb[LW_MAX_LIMBS];
     bool explicit_inverse;
     size_t max_solutions;
+    lwi_set *set[2]; /* forward, inverse; NULL = none prepared */
     lw_config reference, home; /* owned */
     double *config_store;
     lw_mode home_mode;
@@ -109,6 +111,7 @@ struct lw_work {
     double *matrix[4];         /* square-ish scratch, side max(n_var, n_row, 64) */
     double *vector[4];
     size_t *index;
+    lwi_set_work *set; /* NULL where the model has no sets */
     lw_inverse_answer inverse;
     lw_forward_answer forward;
     lw_posture_answer posture;
@@ -133,6 +136,9 @@ size_t lwi_config_doubles(const lw_model *model);
 void lwi_config_bind(lw_config *config, const lw_model *model, double *store);
 void lwi_config_copy(lw_config *to, const lw_model *model, const lw_config *from);
 void lwi_solution_copy(lw_solution *to, const lw_model *model, const lw_solution *from);
+
+/* What the report says of the sets. */
+void lwi_sets_report(lw_model *model);
 
 /* Drive coordinates, tool pose, mode and limits of a solution whose config is filled. */
 void lwi_solution_finish(lw_solution *sol, const lw_model *model, const lw_spec_tool *tool);

@@ -117,6 +117,7 @@ void lwi_solution_finish(lw_solution *sol, const lw_model *model, const lw_spec_
     lwi_tool_pose(&sol->tool, tool, &sol->config);
     lwi_mode_of(&sol->mode, model, &sol->config);
     sol->mode_known = true;
+    sol->contradicted = false;
     lwi_limits_judge(sol, model);
 }
 

@@ -9,6 +9,9 @@ void lwi_solution_from_state(lw_solution *sol, const lw_model *model, const lw_s
                              const lwi_state *state, const lwi_eval *ev, const lw_config *hint);
 double lwi_config_distance(const lw_model *model, const lw_config *a, const lw_config *b);
 
+/* Same places of tool, rods and joints; idle spins and whole turns do not count. */
+bool lwi_same_posture(const lw_model *model, const lw_config *a, const lw_config *b);
+
 /* A tool pose as asked, completed to the displacement of the tool body and the output coordinates.
  * off_by tells how far given members that are no outputs contradict. */
 typedef struct lwi_pose_known {

@@ -5,7 +5,7 @@
  * all readings are met by weighted least squares and each one's disagreement is told. */
 #include "../math/tol.h"
 #include "../math/vec3.h"
-#include "finish.h"
+#include "all.h"
 
 #include <stdint.h>
 
@@ -275,6 +275,18 @@ static void judge_readings(lw_forward_answer *a, const lw_model *m, const lwi_go
     a->suspect = count == 1 ? explains : -1;
 }
 
+/* Chi-square of all readings against a solution fitted to them. */
+static bool readings_agree(const lw_solution *sol, const lw_model *m, const lwi_goal *goal,
+                           const size_t *drive, size_t n)
+{
+    double chi = 0.0;
+    for (size_t i = 0; i < n; i++) {
+        double r = (goal[i].value - sol->drive[drive[i]]) / lwi_drive_sigma(m, drive[i]);
+        chi += r * r;
+    }
+    return chi <= lwi_chi_square_quantile(0.999, (double)(n - m->mobility));
+}
+
 static lw_code missing_readings(const lw_model *m, const lw_posture_ask *ask, lw_err *err)
 {
     size_t n = 0;
@@ -285,6 +297,49 @@ static lw_code missing_readings(const lw_model *m, const lw_posture_ask *ask, lw
         return LW_FAIL(err, LW_E_POSTURE, "/drives",
                        "%zu readings given, at least %zu are needed to determine the posture", n,
                        m->mobility);
+    }
+    return LW_OK;
+}
+
+/* Every posture these readings allow, from the prepared set. */
+static lw_code all_solutions(lw_forward_answer *a, const lw_model *m, const lw_spec_tool *tool,
+                             const lw_forward_ask *ask, const lwi_goal *goal, size_t n,
+                             const size_t *drive, const lw_config *start, lw_work *work, lw_err *err)
+{
+    lwi_all_info info;
+    a->found.within_limits = 0;
+    if (m->set[0] == NULL) {
+        a->found.within_limits = -1;
+        a->outcome = LW_OUTCOME_UNDECIDED;
+        a->reason = "no solution set is prepared for this mechanism: ask with \"near\" for the "
+                    "posture next to a known one";
+        return LW_OK;
+    }
+    if (!lwi_forward_all_ready(m, ask->readings)) {
+        return LW_FAIL(err, LW_E_POSTURE, "/drives",
+                       "\"all\" needs the readings of the drives named in the report's solution set");
+    }
+    lwi_forward_all(&info, m, tool, ask->readings, goal, n, start, work);
+    a->found.complex_count = (int)info.finite;
+    a->found.real = (int)info.n;
+    a->found.not_converged = (int)info.unsettled;
+    a->complete = info.closed;
+    a->basis = m->set[0]->fibre.trace_closed ? LW_BASIS_TRACE : LW_BASIS_SATURATED;
+    a->n_solution = info.n;
+    a->solution = work->solution;
+    size_t agree = 0;
+    for (size_t i = 0; i < info.n; i++) {
+        lw_solution *sol = &work->solution[i];
+        a->found.within_limits += sol->within_limits;
+        sol->contradicted = n > m->mobility && !readings_agree(sol, m, goal, drive, n);
+        agree += sol->within_limits && !sol->contradicted;
+    }
+    a->outcome = agree > 0 ? LW_OUTCOME_OK : LW_OUTCOME_LIMIT;
+    a->reason = agree > 0 ? NULL : "every solution is beyond a limit or contradicted by a reading";
+    if (info.n == 0) {
+        a->outcome = a->complete ? LW_OUTCOME_OUT_OF_REACH : LW_OUTCOME_UNDECIDED;
+        a->reason = a->complete ? "the mechanism does not assemble with these readings"
+                                : "no real solution was found, but not every path was settled";
     }
     return LW_OK;
 }
@@ -328,6 +383,9 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
         return LW_OK;
     }
     size_t n = drive_goals(goal, drive, m, ask->readings);
+    if (ask->all) {
+        return all_solutions(a, m, tool, ask, goal, n, drive, start, work, err);
+    }
     lwi_track(&track, m, start, goal, n, work);
     a->iterations = track.iterations;
     if (!track.arrived) {

@@ -4,7 +4,7 @@
  * several starts gives what it finds and says so. */
 #include "../math/tol.h"
 #include "../math/vec3.h"
-#include "finish.h"
+#include "all.h"
 
 #include <stdint.h>
 
@@ -241,7 +241,7 @@ static bool run_one_mode(inverse_run *run, const lwi_pose_known *pose, const lw_
 static bool seen_before(const inverse_run *run, const lw_solution *sol)
 {
     for (size_t i = 0; i < run->n; i++) {
-        if (lwi_config_distance(run->m, &run->work->solution[i].config, &sol->config) < 1e-6) {
+        if (lwi_same_posture(run->m, &run->work->solution[i].config, &sol->config)) {
             return true;
         }
     }
@@ -390,6 +390,24 @@ static bool contradicts(const lw_model *m, const lwi_pose_known *pose)
     return pose->off_by_position_m > tolerance || pose->off_by_angle_rad > angle;
 }
 
+/* All solutions from the prepared set. */
+static void run_set(inverse_run *run, const lwi_pose_known *pose, const lwi_goal *goal,
+                    size_t n_goal)
+{
+    lwi_all_info info;
+    lwi_inverse_all(&info, run->m, run->tool, pose, goal, n_goal, run->hint, run->work);
+    run->n = info.n;
+    for (size_t i = 0; i < info.n; i++) {
+        lw_solution *sol = &run->work->solution[i];
+        drives_into_range(&sol->config, run->m);
+        lwi_solution_finish(sol, run->m, run->tool);
+    }
+    run->a->found.complex_count = (int)info.finite;
+    run->a->found.not_converged = (int)info.unsettled;
+    run->a->complete = info.closed;
+    run->a->basis = run->m->set[1]->fibre.trace_closed ? LW_BASIS_TRACE : LW_BASIS_SATURATED;
+}
+
 static void run_completed(inverse_run *run, const lwi_pose_known *pose)
 {
     const lw_model *m = run->m;
@@ -410,7 +428,11 @@ static void run_completed(inverse_run *run, const lwi_pose_known *pose)
         run_explicit(run, pose);
     } else {
         full_pose_goals(run->work->goal2, &n_goal, m, pose);
-        run_local(run, run->work->goal2, n_goal);
+        if (m->set[1] != NULL) {
+            run_set(run, pose, run->work->goal2, n_goal);
+        } else {
+            run_local(run, run->work->goal2, n_goal);
+        }
     }
     judge_list(run);
 }

@@ -66,6 +66,21 @@ static lw_code open_all(lw_work *w, const lw_model *m, lw_err *err)
     }
     lwi_config_bind(&w->scratch, m, w->config_store + n_slot * doubles);
     lwi_config_bind(&w->scratch2, m, w->config_store + (n_slot + 1) * doubles);
+    size_t points = 0;
+    for (int k = 0; k < 2; k++) {
+        const lwi_set *set = m->set[k];
+        size_t need = set != NULL ? set->fibre.n_solution * set->fibre.pack + 1 : 0;
+        points = points > need ? points : need;
+    }
+    if (points > 0) {
+        w->set = calloc(1, sizeof *w->set);
+        if (w->set != NULL) {
+            w->set->ends = calloc(points, sizeof *w->set->ends);
+        }
+        if (w->set == NULL || w->set->ends == NULL) {
+            return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
+        }
+    }
     return lwi_newton_work_open(&w->newton, n, m->whole->n_row, LWI_MAX_GOALS, err);
 }
 
@@ -106,6 +121,10 @@ void lw_work_free(lw_work *w)
         free(w->vector[i]);
     }
     lwi_newton_work_close(&w->newton);
+    if (w->set != NULL) {
+        free(w->set->ends);
+        free(w->set);
+    }
     free(w);
 }
 

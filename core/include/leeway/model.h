@@ -42,6 +42,18 @@ typedef struct lw_limb_info {
     char plus[96];                 /* what + means, in words */
 } lw_limb_info;
 
+/* A prepared solution set: all complex solutions at one generic point, which questions are tracked
+ * from. */
+typedef struct lw_set_info {
+    bool present;
+    bool closed;       /* the trace test says that none is missing */
+    size_t solutions;  /* isolated complex solutions */
+    size_t degree;     /* points of the witness set behind the trace test */
+    unsigned long paths; /* work of preparing it */
+    size_t n_drive;    /* forward: the drives whose readings are its inputs */
+    size_t drive[LW_MAX_DRIVES];
+} lw_set_info;
+
 /* What loading found out. */
 typedef struct lw_report {
     size_t n_finding;
@@ -64,6 +76,7 @@ typedef struct lw_report {
     lw_mode home_mode, reference_mode;
     size_t n_mode_name;            /* signs of the document's named modes, document order */
     lw_mode mode_name[LW_MAX_MODES];
+    lw_set_info forward_set, inverse_set;
     size_t samples;                /* random configurations the checks were run at */
     double worst_closure;          /* relative closure residual over the samples */
     double worst_derivative;       /* derivative against difference */
@@ -76,6 +89,17 @@ typedef struct lw_report {
 lw_code lw_model_new(lw_model **out, const lw_spec *spec, unsigned long long seed,
                      lw_report *report, lw_err *err);
 void lw_model_free(lw_model *model);
+
+/* Solution sets, made before the model is shared and its first work object exists: seconds of work,
+ * bounded by the number of paths tracked, the same on every machine for the same seed. Where a set is
+ * not served (screws among the unknowns, too large) the model stays without it and answers from
+ * starts. Sets can be kept and loaded again; damaged ones are refused with LW_E_MODEL. */
+lw_code lw_model_prepare(lw_model *model, unsigned long long seed, unsigned long max_paths,
+                         lw_err *err);
+size_t lw_model_sets_size(const lw_model *model);
+void lw_model_sets_save(void *out, const lw_model *model); /* lw_model_sets_size bytes */
+lw_code lw_model_sets_load(lw_model *model, unsigned long long seed, const void *data, size_t size,
+                           lw_err *err);
 
 /* Borrowed until the model is freed. */
 const lw_spec *lw_model_spec(const lw_model *model);

@@ -50,6 +50,7 @@ typedef struct lw_solution {
     lw_config config;
     double drive[LW_MAX_DRIVES];/* drive coordinates, m or rad */
     lw_frame tool;              /* pose of the tool asked for */
+    bool contradicted;          /* forward, all: spare readings disagree with this posture */
     bool within_limits;
     size_t n_limit;             /* limits broken, the first LW_MAX_LIMITS_BROKEN */
     lw_limit limit[LW_MAX_LIMITS_BROKEN];
