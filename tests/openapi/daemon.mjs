@@ -39,10 +39,11 @@ export class Daemon {
     this.process = spawn(program, [...options, ...this.options],
       { stdio: ['ignore', 'ignore', 'pipe'] });
     this.ended = new Promise((done) => { this.process.on('exit', (code) => done(code)); });
+    this.process.on('error', (error) => { this.log += error.message; this.failed = true; });
     this.process.stderr.on('data', (text) => { this.log += text; });
     const until = Date.now() + START_MS;
     while (!existsSync(portFile) || readFileSync(portFile, 'utf8') === '') {
-      if (this.process.exitCode !== null || Date.now() > until) {
+      if (this.failed || this.process.exitCode !== null || Date.now() > until) {
         throw new Error(`the daemon does not start:\n${this.log}`);
       }
       await new Promise((next) => { setTimeout(next, 10); });
@@ -53,6 +54,10 @@ export class Daemon {
   // Exit status 0, and nothing said by a sanitizer.
   async stop() {
     this.agent.destroy();
+    if (this.failed) {
+      rmSync(this.dir, { recursive: true, force: true });
+      return;
+    }
     if (this.process && this.process.exitCode === null) {
       this.process.kill('SIGTERM');
       const late = setTimeout(() => this.process.kill('SIGKILL'), STOP_MS);
@@ -96,7 +101,8 @@ export class Daemon {
         }));
       });
       request.on('timeout', () => request.destroy(new Error(`${method} ${target}: no answer`)));
-      // A refused body may be cut off while it is still being sent; the answer is there all the same.
+      // A refused body may be cut off while it is still being sent; its answer is there all the
+      // same.
       request.on('error', (error) => { if (!answered) { fail(error); } });
       request.end(sent);
     });

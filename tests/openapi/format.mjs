@@ -12,7 +12,8 @@ function flat(value) {
     return `[${value.map(flat).join(', ')}]`;
   }
   if (value !== null && typeof value === 'object') {
-    return `{${Object.entries(value).map(([k, v]) => `${JSON.stringify(k)}: ${flat(v)}`).join(', ')}}`;
+    const members = Object.entries(value).map(([k, v]) => `${JSON.stringify(k)}: ${flat(v)}`);
+    return `{${members.join(', ')}}`;
   }
   return JSON.stringify(value);
 }
@@ -43,7 +44,7 @@ if (process.argv[1] && import.meta.url === pathToFileURL(process.argv[1]).href) 
   const was = readFileSync(file, 'utf8');
   const is = format(JSON.parse(was));
   if (was !== is && check) {
-    console.error(`${file} is not written as tests/openapi/format.mjs writes it; run it on the file`);
+    console.error(`${file} is not written as tests/openapi/format.mjs writes it; run that on it`);
     process.exit(1);
   }
   if (was !== is) {

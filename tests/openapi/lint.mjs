@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: GPL-3.0-or-later
-// Two linters and the formatter over server/api/openapi.json, then the linters over a faulty copy of
-// it that they must refuse: a linter that lets everything pass would look the same as a
+// Two linters and the formatter over server/api/openapi.json, then the linters over a faulty copy
+// of it that they must refuse: a linter that lets everything pass would look the same as a
 // clean description.
 import { spawnSync } from 'node:child_process';
 import { mkdtempSync, readFileSync, rmSync, writeFileSync } from 'node:fs';
@@ -59,8 +59,8 @@ try {
     const path = join(dir, 'faulty.json');
     writeFileSync(path, JSON.stringify(document));
     const { clean, output } = run(name, path);
-    mine.forEach(([title, , text]) => say(!clean && output.includes(text), `${name} refuses ${title}`,
-      output));
+    mine.forEach(([title, , text]) => say(!clean && output.includes(text),
+      `${name} refuses ${title}`, output));
   }
 } finally {
   rmSync(dir, { recursive: true, force: true });

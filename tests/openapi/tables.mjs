@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: GPL-3.0-or-later
-// The daemon's own tables against the description: routes with their roles and bodies, problems with
-// their codes; and whether the checks would see a fault at all.
+// The daemon's own tables against the description: routes with their roles and bodies, problems
+// with their codes; and whether the checks would see a fault at all.
 import { readFileSync } from 'node:fs';
 import { join } from 'node:path';
 
