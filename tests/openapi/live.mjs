@@ -7,6 +7,7 @@
 import { readFileSync, writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 
+import { checkAgreement } from './agreement.mjs';
 import { Daemon } from './daemon.mjs';
 import { Description } from './description.mjs';
 import { compare, exampleAnswers } from './examples.mjs';
@@ -312,6 +313,7 @@ async function main() {
     checkRoutes(description, fault);
     await checkProblems(description, (...request) => good(...request), codes, not_here, fault);
     await checkBlindness(description, daemon, fault);
+    await checkAgreement(description, ask, fault);
   } finally {
     await daemon.stop();
   }
@@ -324,4 +326,7 @@ async function main() {
   process.exitCode = faults.length === 0 ? 0 : 1;
 }
 
-await main();
+await main().catch((error) => {
+  console.error(`  FAULT ${error.stack}`);
+  process.exitCode = 1;
+});
