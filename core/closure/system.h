@@ -107,14 +107,21 @@ typedef struct lwi_system {
     bool body_known[LW_MAX_BODIES];   /* known without solving */
 } lwi_system;
 
-/* lwi_state and lwi_eval for doubles; the same text serves complex numbers (complex.h). */
-#define LWI_NUM double
-#define LWI_NAME(x) lwi_##x
-#define LWI_FRAME lw_frame
-#include "values.inc"
-#undef LWI_NUM
-#undef LWI_NAME
-#undef LWI_FRAME
+/* Values of all elements: the point on the configuration manifold. */
+typedef struct lwi_state {
+    double value[LWI_MAX_ELEMENTS];
+    double quat[LWI_MAX_QUATS][4];
+    double pos_m[LWI_MAX_QUATS][3]; /* free bodies: displacement */
+    lw_frame given[LWI_MAX_NODES];  /* poses of given nodes; the frame's is the identity */
+    double rod_length_m[LW_MAX_RODS];
+} lwi_state;
+
+/* Displacements of nodes and world screws of elements at a state. */
+typedef struct lwi_eval {
+    lw_frame node[LWI_MAX_NODES];
+    double w[LWI_MAX_ELEMENTS][3]; /* axis direction, sign included */
+    double p[LWI_MAX_ELEMENTS][3]; /* point on the axis, ball centre, free reference point */
+} lwi_eval;
 
 typedef struct lwi_build_ask {
     const lw_spec *spec;
