@@ -30,6 +30,8 @@ double lwi_default_length(const lw_spec *spec);
 void lwi_keep_coords(bool *keep, const lw_spec *spec);
 /* Finds bodies held by two balls only and the axis they may idly spin about. */
 size_t lwi_idle_spins(bool *lock, double (*axis)[3], const lw_spec *spec, const size_t *fused);
+/* Couplings that repeat or contradict screw joints; needs the whole system. */
+void lwi_check_couplings(lw_model *model);
 int lwi_counted_mobility(const lw_spec *spec, const size_t *fused);
 
 /* Random closed configurations reached from the reference posture; learns the generic rank on the

@@ -85,6 +85,10 @@ static lw_code build_steps(lw_model *m, unsigned long long seed, lw_err *err)
     report->mobility_counted = lwi_counted_mobility(spec, m->fused);
     lwi_samples *samples = NULL;
     lw_code rc = build_whole(m, err);
+    if (rc == LW_OK) {
+        lwi_check_couplings(m);
+        rc = lwi_has_errors(report) ? LW_E_MODEL : LW_OK;
+    }
     rc = rc == LW_OK ? open_configs(m, err) : rc;
     rc = rc == LW_OK ? lwi_samples_open(&samples, m, seed, err) : rc;
     rc = rc == LW_OK ? lwi_samples_walk(samples, m, err) : rc;

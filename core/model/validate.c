@@ -381,47 +381,11 @@ static void check_round_trip(lw_model *m, lwi_samples *s, lw_work *work)
     }
 }
 
-/* Rods written with a check length, screws written twice. */
-static void check_couplings(lw_model *m)
-{
-    const lwi_system *sys = m->whole;
-    for (size_t c = 0; c < m->spec->n_coupling; c++) {
-        for (size_t i = 0; i < sys->n_row; i++) {
-            const lwi_row *row = &sys->row[i];
-            if (row->coupling != (int)c || row->n_rod_term > 0) {
-                continue;
-            }
-            for (size_t k = 0; k < sys->n_row; k++) {
-                /* A coaxial screw loop that ties the same coordinates. */
-                const lwi_row *loop = &sys->row[k];
-                size_t shared = 0;
-                if (loop->kind != LWI_ROW_LINEAR || loop->coupling >= 0) {
-                    continue;
-                }
-                for (size_t a = 0; a < row->n_term; a++) {
-                    for (size_t b = 0; b < loop->n_term; b++) {
-                        shared += row->term_element[a] == loop->term_element[b];
-                    }
-                }
-                if (shared == row->n_term && row->n_term > 1) {
-                    char where[96];
-                    (void)snprintf(where, sizeof where, "/couplings/%zu", c);
-                    lwi_find(&m->report, LW_WARNING, "screw-said-twice", where, NULL, NULL,
-                             "Coupling \"%s\" ties coordinates that screw joints tie already; "
-                             "they agree.",
-                             m->spec->coupling[c].name);
-                }
-            }
-        }
-    }
-}
-
 lw_code lwi_validate(lw_model *m, lwi_samples *s, lw_err *err)
 {
     lw_work *work;
     check_mobility(m);
     check_derivatives(m, s);
-    check_couplings(m);
     if (lwi_has_errors(&m->report)) {
         return LW_E_MODEL;
     }
