@@ -102,12 +102,12 @@ static lw_code by_joints(lw_posture_answer *a, lw_solution *sol, const lw_model 
         }
     }
     if (!lwi_settle(sol, &info, m, tool, all, kept, start, work)) {
-        return LW_FAIL(err, LW_E_POSTURE, "/joints",
+        return LW_FAIL(err, LW_E_NOT_CLOSED, "/joints",
                        "no closed posture was found from these joint values");
     }
     double gap = passive_gap(m, ask, &sol->config);
     if (!(gap <= LWI_CLOSED)) {
-        return LW_FAIL(err, LW_E_POSTURE, "/joints",
+        return LW_FAIL(err, LW_E_NOT_CLOSED, "/joints",
                        "the values do not close the loops: the nearest closed posture is %.3g rad "
                        "(or characteristic lengths) away, %.3g is allowed",
                        gap, LWI_CLOSED);
@@ -161,7 +161,7 @@ static lw_code by_bodies(lw_posture_answer *a, lw_solution *sol, const lw_model 
     }
     lwi_state_from_config(&work->state, m->whole, &work->scratch);
     if (!lwi_settle(sol, &info, m, tool, goal, n, start, work) || !(info.goal <= LWI_CLOSED)) {
-        return LW_FAIL(err, LW_E_POSTURE, "/bodies",
+        return LW_FAIL(err, LW_E_NOT_CLOSED, "/bodies",
                        "no closed posture has its bodies there (nearest is off by %.3g of the "
                        "characteristic length)",
                        info.goal);

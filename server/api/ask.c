@@ -100,6 +100,8 @@ static void fail_core(const lwd_request *request, lwd_reply *out, const lwd_ques
     }
     if (err->code == LW_E_POSTURE) {
         id = LWD_PROBLEM_POSTURE;
+    } else if (err->code == LW_E_NOT_CLOSED) {
+        id = LWD_PROBLEM_NOT_CLOSED;
     }
     lwd_fail(out, request, id, parts != NULL ? pointer : NULL, NULL, NULL, "%s", err->msg);
 }

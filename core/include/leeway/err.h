@@ -9,6 +9,7 @@
     X(LW_E_ARGUMENT, "argument out of range")                                                      \
     X(LW_E_MODEL, "inconsistent mechanism")                                                        \
     X(LW_E_POSTURE, "the question does not determine a posture")                                   \
+    X(LW_E_NOT_CLOSED, "the posture given does not close")                                         \
     X(LW_E_MEMORY, "out of memory")                                                                \
     X(LW_E_LIMIT, "a count is beyond what is served")                                              \
     X(LW_E_INTERNAL, "internal error")

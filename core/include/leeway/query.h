@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The questions: inverse, forward, jacobian, margin, reach. SI units, fixed frame. A query returns
- * LW_OK whatever the mechanism says; LW_E_POSTURE or LW_E_ARGUMENT when the question itself makes no
- * sense (err->where points into the question). Answers live in the work object and are borrowed
- * until the next query with the same work. No query allocates. */
+ * LW_OK whatever the mechanism says; LW_E_POSTURE, LW_E_NOT_CLOSED or LW_E_ARGUMENT when the
+ * question itself makes no sense (err->where points into the question). Answers live in the work
+ * object and are borrowed until the next query with the same work. No query allocates. */
 #ifndef LEEWAY_QUERY_H
 #define LEEWAY_QUERY_H
 
