@@ -2,6 +2,7 @@
 /* Start and stop of the daemon's inside, and the table of its routes. Main thread only. */
 #include "app.h"
 
+#include <malloc.h>
 #include <stdio.h>
 #include <stdlib.h>
 
@@ -91,8 +92,19 @@ static bool open_catalog(lwd_app *app, const char *dir, char *why, size_t why_si
     return true;
 }
 
+/* A document and its model reserve megabytes and touch little of them. The C library's heap would
+ * keep and clear such blocks whole once one has been freed; mapped blocks cost what is touched and
+ * go back when freed (the demo line loaded: 16 MB resident instead of 26). */
+static void keep_large_blocks_mapped(void)
+{
+#ifdef M_MMAP_THRESHOLD
+    (void)mallopt(M_MMAP_THRESHOLD, 128 * 1024);
+#endif
+}
+
 lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_size)
 {
+    keep_large_blocks_mapped();
     lwd_app *app = calloc(1, sizeof *app);
     (void)snprintf(why, why_size, "There is not enough memory to start.");
     if (app == NULL) {

@@ -187,7 +187,13 @@ bool lwd_query_members(lwd_reply *reply, const lwd_request *request, const char 
             i++;
         }
         if (i == n) {
-            lwd_fail(reply, request, LWD_PROBLEM_MEMBER_UNKNOWN, NULL, n > 0 ? name[0] : NULL, NULL,
+            char known[80] = "none";
+            size_t len = 0;
+            for (size_t j = 0; j < n && len < sizeof known; j++) {
+                len += (size_t)snprintf(known + len, sizeof known - len, "%s%s",
+                                        j > 0 ? ", " : "", name[j]);
+            }
+            lwd_fail(reply, request, LWD_PROBLEM_MEMBER_UNKNOWN, NULL, known, pair->name,
                      "This path takes no query member \"%.60s\".", pair->name);
             return false;
         }
