@@ -303,6 +303,10 @@ async function main() {
     for (const name of DEMO) {
       await load(demo(name));
     }
+    const about = await good('about', 'GET', '/about');
+    if (about.json.version !== description.document.info.version) {
+      fault('info/version', 'is not that of the daemon,', about.json.version);
+    }
     await examples();
     await questions();
     await catalog();
