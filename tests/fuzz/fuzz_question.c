@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Fuzzes the bodies of questions, through the decoder, the core and the writer. The first byte
- * picks the question ('0' inverse ... '4' reach), the rest is the body. The machine stays a draft: "revision": 1 is what a body must
- * say to reach the core, as the saved inputs do. */
+ * picks the question ('0' inverse ... '4' reach), the rest is the body. The machine stays a draft:
+ * "revision": 1 is what a body must say to reach the core, as the saved inputs do. */
 #include "fuzz_api.h"
 
 int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size);
