@@ -1,4 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
+/* What the margin files share: margin.c asks the others, one file a margin, at a finished solution.
+ * Called by the query functions only. */
 #ifndef LWI_MARGIN_H
 #define LWI_MARGIN_H
 
