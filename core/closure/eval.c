@@ -307,6 +307,55 @@ void lwi_twist_row(double *out, const lwi_system *sys, const lwi_eval *ev, size_
     }
 }
 
+/* Column of element k: velocity and turn of a body point p that moves with it. */
+static void screw_column(double *out, size_t n, const lwi_system *sys, const lwi_eval *ev, size_t k,
+                         const double p[3])
+{
+    const lwi_element *el = &sys->element[k];
+    const double *w = ev->w[k];
+    double scale = sys->var_scale[el->var];
+    double v[3];
+    double arm[3];
+    if (el->kind == LWI_SLIDE) {
+        for (size_t i = 0; i < 3; i++) {
+            out[i * n] = scale * w[i];
+        }
+        return;
+    }
+    lwi_sub(arm, p, ev->p[k]);
+    lwi_cross(v, w, arm);
+    for (size_t i = 0; i < 3; i++) {
+        double along = el->kind == LWI_HELIX ? v[i] + el->pitch * w[i] : v[i];
+        out[i * n] = scale * along;
+        out[(3 + i) * n] = scale * w[i];
+    }
+}
+
+void lwi_twist_rows(double *out, const lwi_system *sys, const lwi_eval *ev, size_t node,
+                    const double p[3])
+{
+    static const double zero[3] = {0.0, 0.0, 0.0};
+    size_t n = sys->n_var;
+    size_t at = node;
+    memset(out, 0, 6 * n * sizeof *out);
+    for (size_t k = sys->n_element; k-- > 0;) {
+        const lwi_element *el = &sys->element[k];
+        if (el->child != at) {
+            continue;
+        }
+        at = el->parent;
+        if (el->var >= 0 && (el->kind == LWI_BALL || el->kind == LWI_FREE)) {
+            for (size_t c = 0; c < 6; c++) {
+                double unit[3] = {c % 3 == 0, c % 3 == 1, c % 3 == 2};
+                add_screw(out + c * n, sys, ev, k, 1.0, p, c < 3 ? unit : zero,
+                              c < 3 ? zero : unit);
+            }
+        } else if (el->var >= 0) {
+            screw_column(out + el->var, n, sys, ev, k, p);
+        }
+    }
+}
+
 bool lwi_terms(double *value, double *out, const lwi_system *sys, const lwi_state *state,
                const lwi_eval *ev, const lw_term *term, size_t n_term)
 {

@@ -177,6 +177,9 @@ void lwi_closure_error(double *position_m, double *angle_rad, const lwi_system *
 /* Derivative of the functional (f at p, m) on the twist of node b against the frame. */
 void lwi_twist_row(double *out, const lwi_system *sys, const lwi_eval *ev, size_t node,
                    const double p[3], const double f[3], const double m[3]);
+/* All six at once, 6 x n_var: velocity of the point p of the node, then its turn. */
+void lwi_twist_rows(double *out, const lwi_system *sys, const lwi_eval *ev, size_t node,
+                    const double p[3]);
 /* Value and scaled derivative (NULL: none) of a sum of coordinates; false if a coordinate is not
  * carried by an element. Rod coordinates are changes of length. */
 bool lwi_terms(double *value, double *out, const lwi_system *sys, const lwi_state *state,
