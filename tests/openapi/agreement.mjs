@@ -12,11 +12,13 @@ import { asked } from './questions.mjs';
 const FORM = new Set(['unknown-member', 'missing-member', 'wrong-type', 'two-postures',
   'two-orientations', 'mode-without-pose', 'nested-near', 'no-posture', 'too-few', 'too-many']);
 
-// Every value inside, with the way to it; the value itself comes first.
+// Every value inside, with the way to it; the value itself comes first. Of a list of numbers or
+// names the first stands for all.
 function* places(value, way = []) {
   yield [way, value];
   if (value !== null && typeof value === 'object') {
-    for (const [key, child] of Object.entries(value)) {
+    const plain = Array.isArray(value) && value.every((v) => v === null || typeof v !== 'object');
+    for (const [key, child] of Object.entries(value).slice(0, plain ? 1 : undefined)) {
       yield* places(child, [...way, key]);
     }
   }
