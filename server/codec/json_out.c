@@ -134,6 +134,35 @@ static void put_text(lwd_json *json, const char *text, size_t len)
     put(json, "\"", 1);
 }
 
+/* The common case in one go: a key without anything to escape, with room for it. False, and nothing
+ * written, otherwise. */
+static bool put_plain_key(lwd_json *json, const char *key, bool comma)
+{
+    lwd_buf *buf = json->buf;
+    size_t n = strlen(key);
+    if (buf->failed || buf->cap - buf->len <= n + 4) {
+        return false;
+    }
+    char *at = buf->data + buf->len;
+    if (comma) {
+        *at++ = ',';
+    }
+    *at++ = '"';
+    for (size_t i = 0; i < n; i++) {
+        unsigned char c = (unsigned char)key[i];
+        if (c < 0x20 || c >= 0x7f || c == '"' || c == '\\') {
+            buf->data[buf->len] = '\0';
+            return false;
+        }
+        *at++ = key[i];
+    }
+    *at++ = '"';
+    *at++ = ':';
+    *at = '\0';
+    buf->len = (size_t)(at - buf->data);
+    return true;
+}
+
 void lwd_json_key(lwd_json *json, const char *key)
 {
     if (json->failed) {
@@ -143,11 +172,14 @@ void lwd_json_key(lwd_json *json, const char *key)
         json->failed = true;
         return;
     }
-    if (json->filled[json->depth]) {
-        put(json, ",", 1);
+    bool comma = json->filled[json->depth];
+    if (!put_plain_key(json, key, comma)) {
+        if (comma) {
+            put(json, ",", 1);
+        }
+        put_text(json, key, strlen(key));
+        put(json, ":", 1);
     }
-    put_text(json, key, strlen(key));
-    put(json, ":", 1);
     json->keyed = true;
 }
 
