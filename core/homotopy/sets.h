@@ -1,10 +1,11 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Solution sets of a model: one for forward questions (a square choice of drives given), one for
- * inverse questions of limbs without explicit solutions (tool pose given). Made or loaded before the
- * model is shared, immutable afterwards. */
+ * inverse questions of limbs without explicit solutions (tool pose given). Made or loaded before
+ * the model is shared, immutable afterwards. */
 #ifndef LWI_SETS_H
 #define LWI_SETS_H
 
+#include "certify.h"
 #include "fibre.h"
 
 #include <leeway/model.h>
@@ -24,6 +25,7 @@ typedef struct lwi_set_work {
     lwi_hpoint end;
     lwi_state state;
     lwi_eval ev;
+    lwi_certify_work certify;
     size_t n_end;
     lwi_cx *ends; /* packed ends of this question, LWI_HOM_POINTS at most */
 } lwi_set_work;

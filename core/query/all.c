@@ -17,7 +17,8 @@ typedef struct taking {
     lw_work *work;
 } taking;
 
-/* Same posture: tool, rods and the places of all joints; idle spins and whole turns do not count. */
+/* Same posture: tool, rods and the places of all joints; idle spins and whole turns do not
+ * count. */
 bool lwi_same_posture(const lw_model *m, const lw_config *a, const lw_config *b)
 {
     const lw_spec *spec = m->spec;
@@ -92,6 +93,13 @@ static bool take(void *context, const lwi_set *set, lwi_set_work *w)
             return false;
         }
     }
+    /* On the set's own system, with the inputs the solution has. */
+    lwi_certificate proof;
+    lwi_state_from_config(&w->state, set->sys, &sol->config);
+    lwi_frame_identity(&w->state.given[0]);
+    lwi_certify(&proof, set->sys, &w->state, &w->ev, &w->certify);
+    sol->certified = proof.holds;
+    sol->certified_radius = proof.radius;
     t->info->n++;
     return true;
 }
@@ -155,7 +163,8 @@ void lwi_forward_all(lwi_all_info *info, const lw_model *m, const lw_spec_tool *
         }
         target[par->first] = value;
     }
-    /* With spare readings a solution of the square choice counts even where the others contradict it. */
+    /* With spare readings a solution of the square choice counts even where the others
+     * contradict it. */
     taking t = {.info = info,
                 .m = m,
                 .tool = tool,

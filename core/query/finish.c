@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* What every solution carries besides its configuration: drive coordinates, tool pose, mode, limits. */
+/* What every solution carries besides its configuration: drive coordinates, tool pose, mode,
+ * limits. */
 #include "../math/tol.h"
 #include "../math/vec3.h"
 #include "finish.h"
@@ -41,8 +42,8 @@ static void judge(lw_solution *sol, lw_limit_of of, size_t index, size_t part, d
     }
 }
 
-static void judge_cone(lw_solution *sol, lw_limit_of of, size_t index, size_t end, const double a[3],
-                       const double b[3], double cone_rad)
+static void judge_cone(lw_solution *sol, lw_limit_of of, size_t index, size_t end,
+                       const double a[3], const double b[3], double cone_rad)
 {
     double c[3];
     lw_range range = {.has_low = false, .has_high = true, .high = cone_rad};
@@ -118,6 +119,8 @@ void lwi_solution_finish(lw_solution *sol, const lw_model *model, const lw_spec_
     lwi_mode_of(&sol->mode, model, &sol->config);
     sol->mode_known = true;
     sol->contradicted = false;
+    sol->certified = false;
+    sol->certified_radius = 0.0;
     lwi_limits_judge(sol, model);
 }
 

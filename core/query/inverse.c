@@ -373,7 +373,8 @@ static void judge_list(inverse_run *run)
         a->reason = "no posture takes the tool there";
     } else {
         a->outcome = LW_OUTCOME_UNDECIDED;
-        a->reason = "no solution was found from the starts tried; that is no proof that there is none";
+        a->reason = "no solution was found from the starts tried; that is no proof that there is "
+                    "none";
     }
 }
 
@@ -399,8 +400,12 @@ static void run_set(inverse_run *run, const lwi_pose_known *pose, const lwi_goal
     run->n = info.n;
     for (size_t i = 0; i < info.n; i++) {
         lw_solution *sol = &run->work->solution[i];
+        bool certified = sol->certified;
+        double radius = sol->certified_radius;
         drives_into_range(&sol->config, run->m);
         lwi_solution_finish(sol, run->m, run->tool);
+        sol->certified = certified;
+        sol->certified_radius = radius;
     }
     run->a->found.complex_count = (int)info.finite;
     run->a->found.not_converged = (int)info.unsettled;

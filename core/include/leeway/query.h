@@ -22,7 +22,12 @@ typedef enum lw_outcome { /* the numbers of the contract */
 } lw_outcome;
 const char *lw_outcome_word(lw_outcome outcome); /* "ok", "low_margin", ... */
 
-typedef enum lw_basis { LW_BASIS_LOCAL, LW_BASIS_EXPLICIT, LW_BASIS_TRACE, LW_BASIS_SATURATED } lw_basis;
+typedef enum lw_basis {
+    LW_BASIS_LOCAL,
+    LW_BASIS_EXPLICIT,
+    LW_BASIS_TRACE,
+    LW_BASIS_SATURATED
+} lw_basis;
 
 typedef enum lw_limit_of { LW_LIMIT_JOINT, LW_LIMIT_ROD, LW_LIMIT_DRIVE } lw_limit_of;
 
@@ -50,6 +55,8 @@ typedef struct lw_solution {
     lw_config config;
     double drive[LW_MAX_DRIVES];/* drive coordinates, m or rad */
     lw_frame tool;              /* pose of the tool asked for */
+    bool certified;             /* by Newton-Kantorovich: one solution lies within the radius, scaled */
+    double certified_radius;    /* (1 = one radian or one characteristic length) */
     bool contradicted;          /* forward, all: spare readings disagree with this posture */
     bool within_limits;
     size_t n_limit;             /* limits broken, the first LW_MAX_LIMITS_BROKEN */
@@ -142,7 +149,8 @@ typedef struct lw_jacobian_ask {
 } lw_jacobian_ask;
 
 typedef struct lw_jacobian_answer {
-    lw_outcome outcome;  /* OK; SINGULAR when one of the two matrices does not exist (which: flags) */
+    /* OK; SINGULAR when one of the two matrices does not exist (which: flags) */
+    lw_outcome outcome;
     const char *reason;
     const lw_solution *solution;
     size_t n_output;     /* mobility: rows are output rates */
