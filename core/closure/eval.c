@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The evaluator: displacements of nodes, rows with exact derivatives, twist rows, sums of coordinates,
- * closure errors told in metres and radians. core/homotopy/complex.c continues the same rows to
- * complex numbers. */
+/* The evaluator: displacements of nodes, rows with exact derivatives, twist rows, sums of
+ * coordinates, closure errors told in metres and radians. core/homotopy/complex.c continues the
+ * same rows to complex numbers. */
 #include "../math/vec3.h"
 #include "system.h"
 

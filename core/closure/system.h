@@ -1,13 +1,14 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* A closure system: a mechanism seen from one kind of question. Some bodies and coordinates are given
- * (the fixed frame always; the tool pose for inverse questions), the rest is unknown. Bodies hang on a
- * spanning tree of one-freedom screws, balls and free bodies; every joint or rod outside the tree
- * gives scalar rows. All geometry stands in the reference posture, so a node's displacement X is the
- * identity there and X_child = X_parent E(q) (product of exponentials, Brockett 1984).
+/* A closure system: a mechanism seen from one kind of question. Some bodies and coordinates are
+ * given (the fixed frame always; the tool pose for inverse questions), the rest is unknown.
+ * Bodies hang on a spanning tree of one-freedom screws, balls and free bodies; every joint or
+ * rod outside the tree gives scalar rows. All geometry stands in the reference posture, so a
+ * node's displacement X is the identity there and X_child = X_parent E(q) (product of
+ * exponentials, Brockett 1984).
  *
- * Each row is a functional (f at point p, m) on the twist of node b seen from node a, which makes its
- * derivative by any tree screw exact: w . ((p - P) x f + m). Rows are dimensionless: lengths over the
- * characteristic length. Immutable once built. */
+ * Each row is a functional (f at point p, m) on the twist of node b seen from node a, which
+ * makes its derivative by any tree screw exact: w . ((p - P) x f + m). Rows are dimensionless:
+ * lengths over the characteristic length. Immutable once built. */
 #ifndef LWI_SYSTEM_H
 #define LWI_SYSTEM_H
 
@@ -151,7 +152,8 @@ void lwi_system_drop_row(lwi_system *sys, size_t i);
 void lwi_state_reference(lwi_state *state, const lwi_system *sys);
 /* From a full configuration (coordinates, balls, bodies). */
 void lwi_state_from_config(lwi_state *state, const lwi_system *sys, const lw_config *config);
-/* Full configuration: bodies, then every joint coordinate; turns next to `hint` (NULL: (-pi, pi]). */
+/* Full configuration: bodies, then every joint coordinate; turns next to `hint` (NULL:
+ * (-pi, pi]). */
 void lwi_config_from_eval(lw_config *config, const lwi_system *sys, const lwi_state *state,
                           const lwi_eval *ev, const lw_config *hint);
 /* Coordinates of one joint from the displacements of its two bodies. */
@@ -161,9 +163,9 @@ void lwi_joint_from_frames(const lw_spec_joint *joint, const lw_frame *a, const 
 void lwi_state_step(lwi_state *state, const lwi_system *sys, const double *y);
 
 void lwi_eval_nodes(lwi_eval *ev, const lwi_system *sys, const lwi_state *state);
-/* Residuals of rows [and derivatives, ld columns, scaled] of the given block, -1 = all rows. Rows of a
- * block keep their order. Returns the number of rows. For one block, columns are those of
- * lwi_block_vars. */
+/* Residuals of rows [and derivatives, ld columns, scaled] of the given block, -1 = all rows.
+ * Rows of a block keep their order. Returns the number of rows. For one block, columns are those
+ * of lwi_block_vars. */
 size_t lwi_eval_rows(double *res, double *jac, size_t ld, const lwi_system *sys,
                      const lwi_state *state, const lwi_eval *ev);
 double lwi_row_residual(const lwi_system *sys, const lwi_row *row, const lwi_state *state,

@@ -472,7 +472,8 @@ void lwi_cobserve_gradient(lwi_cx *out, const lwi_cx *coef, const lwi_system *sy
             slot[0] = scale[0] * (c[1] * st->cs[k][0] - c[0] * st->cs[k][1]);
             n += 2;
         } else {
-            /* d R = [w] R column by column: row i of R changes by (e_i x ...): sum c_ij (w x r_j)_i */
+            /* d R = [w] R column by column: row i of R changes by (e_i x ...):
+             * sum c_ij (w x r_j)_i */
             lwi_cx r[9];
             lwi_cx g[3] = {0.0, 0.0, 0.0};
             quat_rot(r, st->quat[el->quat]);

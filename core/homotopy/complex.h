@@ -17,7 +17,8 @@ typedef struct lwi_cframe {
     lwi_cx pos_m[3];
 } lwi_cframe;
 
-/* A point on the complexified configuration manifold. Given elements and nodes hold their inputs. */
+/* A point on the complexified configuration manifold. Given elements and nodes hold their
+ * inputs. */
 typedef struct lwi_cstate {
     lwi_cx lin[LWI_MAX_ELEMENTS];     /* slides (m), turn count does not exist here */
     lwi_cx cs[LWI_MAX_ELEMENTS][2];   /* turns: cosine, sine */
@@ -52,9 +53,10 @@ void lwi_ceval_rows(lwi_cx *res, lwi_cx *jac, lwi_cx *rate, const lwi_system *sy
                     const lwi_cstate *st, const lwi_cinput *in, const lwi_ceval *ev);
 void lwi_cstate_step(lwi_cstate *to, const lwi_cstate *from, const lwi_system *sys,
                      const lwi_cx *y);
-/* Coordinates that tell solutions apart and embed the solution curve: rotation entries, positions over
- * the length, sines and cosines, slides over the length of all unknown elements. Returns their number;
- * value may be NULL. Derivative of f . value by the unknowns: lwi_cobserve_rate. */
+/* Coordinates that tell solutions apart and embed the solution curve: rotation entries,
+ * positions over the length, sines and cosines, slides over the length of all unknown elements.
+ * Returns their number; value may be NULL. Derivative of f . value by the unknowns:
+ * lwi_cobserve_rate. */
 size_t lwi_cobserve(lwi_cx *value, const lwi_system *sys, const lwi_cstate *st);
 /* out[n_var] = d (sum coef_i value_i) / d unknown, scaled. */
 void lwi_cobserve_gradient(lwi_cx *out, const lwi_cx *coef, const lwi_system *sys,
@@ -66,7 +68,8 @@ size_t lwi_cpack_size(const lwi_system *sys);
 void lwi_cpack(lwi_cx *out, const lwi_system *sys, const lwi_cstate *st);
 void lwi_cunpack(lwi_cstate *st, const lwi_system *sys, const lwi_cx *in);
 
-/* Dense complex LU with partial pivoting: a (n x n, destroyed), b <- solution. False if singular. */
+/* Dense complex LU with partial pivoting: a (n x n, destroyed), b <- solution. False if
+ * singular. */
 bool lwi_cx_solve(lwi_cx *a, size_t n, lwi_cx *b);
 
 #endif

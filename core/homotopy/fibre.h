@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Solution sets: all isolated solutions of a parametrised closure system at one generic complex
- * parameter point, found by monodromy and closed by a trace test. Deterministic in the seed; work is
- * counted in paths, never in time. */
+ * parameter point, found by monodromy and closed by a trace test. Deterministic in the seed;
+ * work is counted in paths, never in time. */
 #ifndef LWI_FIBRE_H
 #define LWI_FIBRE_H
 

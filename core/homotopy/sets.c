@@ -240,7 +240,7 @@ void lwi_sets_report(lw_model *m)
     }
 }
 
-/* ---- keeping ------------------------------------------------------------------------------------ */
+/* ---- keeping -------------------------------------------------------------------------------- */
 
 typedef struct set_head {
     char magic[8];
@@ -383,7 +383,7 @@ lw_code lw_model_sets_load(lw_model *m, unsigned long long seed, const void *dat
     return rc;
 }
 
-/* ---- using -------------------------------------------------------------------------------------- */
+/* ---- using ---------------------------------------------------------------------------------- */
 
 /* Real state of the set's system from a complex end whose imaginary parts are rounding. */
 static bool real_state(lwi_state *state, const lwi_system *sys, const lwi_hpoint *end,
@@ -458,7 +458,8 @@ void lwi_set_solve(lwi_set_count *count, const lwi_set *set, const lwi_cx *targe
     w->h.slices = false;
     memcpy(w->h.p0, f->p, sizeof w->h.p0);
     memcpy(w->h.p1, target, f->hom.n_par * sizeof *target);
-    /* All ends first: a coincidence means that a path jumped, then all are followed more closely. */
+    /* All ends first: a coincidence means that a path jumped, then all are followed more
+     * closely. */
     for (bool again = true; again;) {
         again = false;
         memset(count, 0, sizeof *count);

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Path tracking: Runge-Kutta of order four in Cayley coordinates (Munthe-Kaas 1998), exact derivatives
- * along the parameters, Newton corrector, step size by the first correction. */
+/* Path tracking: Runge-Kutta of order four in Cayley coordinates (Munthe-Kaas 1998), exact
+ * derivatives along the parameters, Newton corrector, step size by the first correction. */
 #include "track.h"
 
 #include <math.h>

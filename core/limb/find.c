@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Finds the limbs of a mechanism whose tool pose follows from its outputs, and recognises those that
- * have explicit solutions. Runs at load. */
+/* Finds the limbs of a mechanism whose tool pose follows from its outputs, and recognises those
+ * that have explicit solutions. Runs at load. */
 #include "../math/vec3.h"
 #include "../model/model.h"
 
@@ -254,7 +254,8 @@ static void find_block(lwi_limb *limb, const lw_model *m)
         }
         for (size_t i = 0; i < limb->n_joint; i++) {
             /* screws inside a joint of several freedoms end in nodes of their own */
-            size_t first = el->coord < 0 ? SIZE_MAX : lw_spec_joint_coord(m->spec, limb->joint[i], 0);
+            size_t first =
+                el->coord < 0 ? SIZE_MAX : lw_spec_joint_coord(m->spec, limb->joint[i], 0);
             size_t n = lw_joint_coords(m->spec->joint[limb->joint[i]].type);
             own = own || (el->coord >= 0 && (size_t)el->coord >= first &&
                           (size_t)el->coord < first + n);

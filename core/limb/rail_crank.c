@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Limbs of one body with rods to the platform: a carriage on a rail (line against sphere) and a crank
- * (circle against sphere). The sign factor is the rod's component along the driven motion: it vanishes
- * exactly where the rod stands square to the rail, or in the plane of crank and axis. */
+/* Limbs of one body with rods to the platform: a carriage on a rail (line against sphere) and a
+ * crank (circle against sphere). The sign factor is the rod's component along the driven motion:
+ * it vanishes exactly where the rod stands square to the rail, or in the plane of crank and
+ * axis. */
 #include "../math/vec3.h"
 #include "../model/model.h"
 

@@ -8,12 +8,13 @@
 #include <stdbool.h>
 #include <stddef.h>
 
-/* Householder QR with column pivoting of a (rows x cols, leading dimension ld), in place: R above the
- * diagonal, reflector tails below, tau[min], perm[cols]. Returns the number of steps min(rows, cols).
- * Businger & Golub 1965. */
+/* Householder QR with column pivoting of a (rows x cols, leading dimension ld), in place: R
+ * above the diagonal, reflector tails below, tau[min], perm[cols]. Returns the number of steps
+ * min(rows, cols). Businger & Golub 1965. */
 size_t lwi_qrp(double *a, size_t rows, size_t cols, size_t ld, double *tau, size_t *perm);
 /* x <- Q^T x (rows long), and x <- Q x. */
-void lwi_qrp_qt(const double *a, size_t rows, size_t steps, size_t ld, const double *tau, double *x);
+void lwi_qrp_qt(const double *a, size_t rows, size_t steps, size_t ld, const double *tau,
+                double *x);
 void lwi_qrp_q(const double *a, size_t rows, size_t steps, size_t ld, const double *tau, double *x);
 
 /* LU with partial pivoting in place; returns the determinant's sign and log2 of its size through
@@ -26,8 +27,8 @@ void lwi_lu_solve(const double *a, size_t n, size_t ld, const size_t *piv, doubl
  * (cols x cols, ld cols) gets the right singular vectors in columns; needs rows >= cols then. */
 void lwi_svd(double *a, size_t rows, size_t cols, size_t ld, double *sv, double *v);
 
-/* Least squares min |a x - b| with full column rank assumed above rel; a and b destroyed, x gets cols
- * values (basic solution, dropped columns zero). Returns the rank. scratch: 2*cols doubles. */
+/* Least squares min |a x - b| with full column rank assumed above rel; a and b destroyed, x gets
+ * cols values (basic solution, dropped columns zero). Returns the rank. scratch: 2*cols doubles. */
 size_t lwi_lsq(double *a, size_t rows, size_t cols, size_t ld, double *b, double *x, double rel,
                double *tau, size_t *perm);
 

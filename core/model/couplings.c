@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Screws and gears written twice: a coupling beside screw joints that tie the same coordinates either
- * agrees with them or locks what it ties. Runs at load, on the linear rows of the whole system. */
+/* Screws and gears written twice: a coupling beside screw joints that tie the same coordinates
+ * either agrees with them or locks what it ties. Runs at load, on the linear rows of the whole
+ * system. */
 #include "build.h"
 
 #include <math.h>

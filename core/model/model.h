@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The inside of a model and of a work object: what the rooms of the core share. Models are immutable
- * after lw_model_new; a work object belongs to one thread. */
+/* The inside of a model and of a work object: what the rooms of the core share. Models are
+ * immutable after lw_model_new; a work object belongs to one thread. */
 #ifndef LWI_MODEL_H
 #define LWI_MODEL_H
 

@@ -285,8 +285,8 @@ void lwi_find_determined(lw_model *m)
     for (int pass = 0; pass < 2; pass++) {
         for (size_t i = 0; i < sys->n_row; i++) {
             const lwi_row *row = &sys->row[i];
-            for (size_t t = 0; row->kind == LWI_ROW_LINEAR && row->n_rod_term == 0 && t < row->n_term;
-                 t++) {
+            bool sums = row->kind == LWI_ROW_LINEAR && row->n_rod_term == 0;
+            for (size_t t = 0; sums && t < row->n_term; t++) {
                 size_t coord = (size_t)sys->element[row->term_element[t]].coord;
                 bool output = false;
                 bool seen = false;

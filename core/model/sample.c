@@ -38,7 +38,8 @@ void lwi_samples_close(lwi_samples *s)
     }
 }
 
-/* Singular values of the closure rows at a state, relative to the largest, into sv (zero-filled). */
+/* Singular values of the closure rows at a state, relative to the largest, into sv
+ * (zero-filled). */
 static void closure_profile(double *sv, lwi_samples *s, const lw_model *m, const lwi_state *state)
 {
     const lwi_system *sys = m->whole;

@@ -39,8 +39,8 @@ static void check_mobility(lw_model *m)
     }
     if (r->mobility_counted - r->idle_spins != mobility) {
         lwi_find(r, LW_NOTE, "count-differs", "/joints", NULL, NULL,
-                 "By the Gruebler-Kutzbach count the mobility would be %d (idle spins %d); the rank "
-                 "of the closure equations says %d.",
+                 "By the Gruebler-Kutzbach count the mobility would be %d (idle spins %d); the "
+                 "rank of the closure equations says %d.",
                  r->mobility_counted, r->idle_spins, mobility);
     }
     if (r->assumes_exact_geometry) {
@@ -141,7 +141,8 @@ static void singular_posture(lw_model *m, const lw_config *config, const char *w
     if (rank_at(work->matrix[1], rates.n_output, rates.m) < m->spec->n_output) {
         (void)snprintf(code, sizeof code, "%s-singular-inverse", which);
         lwi_find(&m->report, LW_WARNING, code, where, NULL, NULL,
-                 "The %s posture is an inverse singularity: a tool direction is lost there.", which);
+                 "The %s posture is an inverse singularity: a tool direction is lost there.",
+                 which);
     }
     lwi_scaled_drives(work->matrix[1], m, &rates, work);
     if (rank_at(work->matrix[1], rates.n_drive, rates.m) < m->mobility) {

@@ -30,7 +30,8 @@ lw_code lwi_pose_goals(lwi_goal *goal, size_t *n_goal, const lw_model *model,
  * (may be NULL) pick among its working modes. */
 const lw_config *lwi_near_config(const lw_model *model, const lw_posture_ask *near,
                                  const lw_posture_ask *readings, lw_work *work,
-                                 lw_outcome *outcome, const char **reason, lw_code *rc, lw_err *err);
+                                 lw_outcome *outcome, const char **reason, lw_code *rc,
+                                 lw_err *err);
 
 /* Follows straight readings from the configuration `start` to the target coordinates. */
 typedef struct lwi_track_info {

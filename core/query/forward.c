@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Forward question: from readings to the posture of the assembly the machine is in. Straight readings
- * are followed from a known configuration in steps that are small enough to stay on the branch; a
- * change of sign of the hold determinant between two steps is a wall. With more drives than freedoms
- * all readings are met by weighted least squares and each one's disagreement is told. */
+/* Forward question: from readings to the posture of the assembly the machine is in. Straight
+ * readings are followed from a known configuration in steps that are small enough to stay on the
+ * branch; a change of sign of the hold determinant between two steps is a wall. With more drives
+ * than freedoms all readings are met by weighted least squares and each one's disagreement is
+ * told. */
 #include "../math/tol.h"
 #include "../math/vec3.h"
 #include "all.h"
@@ -51,8 +52,8 @@ static size_t drive_goals(lwi_goal *goal, size_t *drive, const lw_model *m,
     return n;
 }
 
-/* Sign of the hold determinant, made continuous by carrying the null space's orientation from step to
- * step. Zero where it cannot be told. */
+/* Sign of the hold determinant, made continuous by carrying the null space's orientation from
+ * step to step. Zero where it cannot be told. */
 typedef struct guard {
     bool active;
     int sign;
@@ -304,7 +305,8 @@ static lw_code missing_readings(const lw_model *m, const lw_posture_ask *ask, lw
 /* Every posture these readings allow, from the prepared set. */
 static lw_code all_solutions(lw_forward_answer *a, const lw_model *m, const lw_spec_tool *tool,
                              const lw_forward_ask *ask, const lwi_goal *goal, size_t n,
-                             const size_t *drive, const lw_config *start, lw_work *work, lw_err *err)
+                             const size_t *drive, const lw_config *start, lw_work *work,
+                             lw_err *err)
 {
     lwi_all_info info;
     a->found.within_limits = 0;
@@ -317,7 +319,8 @@ static lw_code all_solutions(lw_forward_answer *a, const lw_model *m, const lw_s
     }
     if (!lwi_forward_all_ready(m, ask->readings)) {
         return LW_FAIL(err, LW_E_POSTURE, "/drives",
-                       "\"all\" needs the readings of the drives named in the report's solution set");
+                       "\"all\" needs the readings of the drives named in the report's solution "
+                       "set");
     }
     lwi_forward_all(&info, m, tool, ask->readings, goal, n, start, work);
     a->found.complex_count = (int)info.finite;
@@ -390,8 +393,8 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
     a->iterations = track.iterations;
     if (!track.arrived) {
         a->outcome = LW_OUTCOME_UNDECIDED;
-        a->reason = "a wall stands on the straight way of the readings: the drives lose hold there, "
-                    "so the assembly cannot be told; give \"near\"";
+        a->reason = "a wall stands on the straight way of the readings: the drives lose hold "
+                    "there, so the assembly cannot be told; give \"near\"";
         a->wall_at = track.at;
         return LW_OK;
     }

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Margin question: classes, ranks, each drive left out in turn, and the six margins. No single index
- * can serve: an inverse singularity kills only speed, a forward one only accuracy and load. */
+/* Margin question: classes, ranks, each drive left out in turn, and the six margins. No single
+ * index can serve: an inverse singularity kills only speed, a forward one only accuracy and
+ * load. */
 #include "margin.h"
 
 #include "../math/tol.h"

@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Accuracy and spare. The tool error of drive errors e, servos sharing by least squares weighted with
- * 1/e^2, is E = W K (diag(1/e) A K)^+; the worst case over +-e is a maximum over sign vectors. It
- * needs no inverse of T K, so it stays right at inverse singularities. */
+/* Accuracy and spare. The tool error of drive errors e, servos sharing by least squares weighted
+ * with 1/e^2, is E = W K (diag(1/e) A K)^+; the worst case over +-e is a maximum over sign
+ * vectors. It needs no inverse of T K, so it stays right at inverse singularities. */
 #include "../math/vec3.h"
 #include "margin.h"
 
@@ -29,7 +29,8 @@ static double drive_error(const lw_model *m, size_t d)
     return e > least ? e : least;
 }
 
-/* Worst length of rows [first, first+n) of E s over sign vectors; exact to 12 drives, a bound beyond. */
+/* Worst length of rows [first, first+n) of E s over sign vectors; exact to 12 drives, a bound
+ * beyond. */
 static double worst_error(const double *e, size_t first, size_t n, size_t n_drive, double dir[3])
 {
     double worst = 0.0;
@@ -110,7 +111,8 @@ static void take(accuracy *a, double tolerance, double worst, bool angle, const 
     }
 }
 
-/* With the drive `without` left out (SIZE_MAX: none). False if the rest do not hold the platform. */
+/* With the drive `without` left out (SIZE_MAX: none). False if the rest do not hold the
+ * platform. */
 static bool evaluate(accuracy *a, const lw_model *m, const lwi_rates *r, size_t without,
                      lw_work *work)
 {
@@ -155,7 +157,8 @@ static bool evaluate(accuracy *a, const lw_model *m, const lwi_rates *r, size_t 
     double dir[3] = {0, 0, 0};
     if (needs->position_tolerance_m.asked) {
         double w = worst_error(e, 0, 3, n, dir);
-        take(a, needs->position_tolerance_m.value, w, false, dir, largest_column(e, 0, 3, n, drive));
+        take(a, needs->position_tolerance_m.value, w, false, dir,
+             largest_column(e, 0, 3, n, drive));
     }
     if (needs->angle_tolerance_rad.asked) {
         double w = worst_error(e, 3, 3, n, dir);

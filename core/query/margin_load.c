@@ -86,8 +86,8 @@ static void try_vertex(load *worst, const lw_model *m, const lwi_rates *r, const
     }
 }
 
-/* Vector square to n - 1 rows of length n, by elimination with complete pivoting; false where the rows
- * are dependent, since such vertices are met by other subsets. */
+/* Vector square to n - 1 rows of length n, by elimination with complete pivoting; false where
+ * the rows are dependent, since such vertices are met by other subsets. */
 static bool square_to(double *y, double *a, size_t n)
 {
     size_t col[LWI_MAX_VARS];

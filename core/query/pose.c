@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* From a tool pose as a person gives it to what is known: members that are outputs are taken, members
- * that follow are completed, members given on top are compared. */
+/* From a tool pose as a person gives it to what is known: members that are outputs are taken,
+ * members that follow are completed, members given on top are compared. */
 #include "../math/vec3.h"
 #include "finish.h"
 
@@ -102,7 +102,8 @@ static lw_code take_rotation(lwi_pose_known *out, const lw_model *m, const lw_sp
         } else if (pose->orient == LW_ORIENT_ZYX && pose->has_zyx[k]) {
             angle = pose->zyx_rad[k] - zero[k];
         } else {
-            return LW_FAIL(err, LW_E_POSTURE, "/pose", "the angle %s is an output and must be given",
+            return LW_FAIL(err, LW_E_POSTURE, "/pose",
+                           "the angle %s is an output and must be given",
                            k == 0 ? "rz (yaw)" : angle_name[k == 1 ? 1 : 0]);
         }
         break;

@@ -151,7 +151,8 @@ static lw_code by_bodies(lw_posture_answer *a, lw_solution *sol, const lw_model 
         const lw_spec_joint *joint = &m->spec->joint[j];
         size_t p = joint->body[0];
         size_t q = joint->body[1];
-        if ((ask->has_body[p] || p == m->spec->frame) && (ask->has_body[q] || q == m->spec->frame)) {
+        if ((ask->has_body[p] || p == m->spec->frame) &&
+            (ask->has_body[q] || q == m->spec->frame)) {
             lwi_joint_from_frames(joint, &work->scratch.body[p], &work->scratch.body[q],
                                   start->coord + coord, work->scratch.coord + coord,
                                   joint->type == LW_SPHERICAL ? work->scratch.ball[ball] : NULL);
@@ -214,7 +215,8 @@ static lw_code one_posture(lw_posture_answer *a, lw_solution *sol, const lw_mode
     } else if (ask->kind == LW_BY_BODIES) {
         rc = by_bodies(a, sol, m, t, ask, start, work, err);
     } else {
-        return LW_FAIL(err, LW_E_ARGUMENT, "", "a posture is needed: drives, pose, joints or bodies");
+        return LW_FAIL(err, LW_E_ARGUMENT, "",
+                       "a posture is needed: drives, pose, joints or bodies");
     }
     if (rc == LW_OK) {
         a->outcome = sol->within_limits ? LW_OUTCOME_OK : LW_OUTCOME_LIMIT;
@@ -222,8 +224,8 @@ static lw_code one_posture(lw_posture_answer *a, lw_solution *sol, const lw_mode
     return rc;
 }
 
-/* Of all inverse solutions at a bare pose, the one whose readings are nearest to those asked about: a
- * pose alone names no working mode, the readings do. */
+/* Of all inverse solutions at a bare pose, the one whose readings are nearest to those asked
+ * about: a pose alone names no working mode, the readings do. */
 static const lw_solution *nearest_readings(const lw_model *m, const lw_posture_ask *near,
                                            const lw_posture_ask *readings, lw_work *work,
                                            lw_code *rc, lw_err *err)

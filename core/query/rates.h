@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* First-order facts at a configuration. K spans the null space of the closure rows (orthonormal in
- * scaled coordinates); A K are drive rates, T K output rates, W K tool twists, all per unit of K. */
+/* First-order facts at a configuration. K spans the null space of the closure rows (orthonormal
+ * in scaled coordinates); A K are drive rates, T K output rates, W K tool twists, all per unit
+ * of K. */
 #ifndef LWI_RATES_H
 #define LWI_RATES_H
 

@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Reach question: can the tool be there, in the mode asked for, with the margins asked for. Judged in
- * the fixed order: readings that contradict, no real solution, the asked mode (hold, margins), other
- * modes, limits. What is not settled is undecided. */
+/* Reach question: can the tool be there, in the mode asked for, with the margins asked for.
+ * Judged in the fixed order: readings that contradict, no real solution, the asked mode (hold,
+ * margins), other modes, limits. What is not settled is undecided. */
 #include "../math/tol.h"
 #include "../math/vec3.h"
 #include "margin.h"

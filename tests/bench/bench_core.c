@@ -209,7 +209,7 @@ static void choose_targets(machine *m)
     free(ask);
 }
 
-/* ---- the questions ------------------------------------------------------------------------------ */
+/* ---- the questions -------------------------------------------------------------------------- */
 
 static const target *next(const machine *m, size_t turn)
 {

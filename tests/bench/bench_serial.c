@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* A serial chain, the case-packer: tool pose and Jacobian from joint values, numbers only, side by
- * side in one run with KDL's solvers (serial_kdl.cpp) on the same chain and the same values; and the
- * whole Jacobian question, which judges limits, modes, ranks and conditions besides. The two are
- * compared with each other before they are timed. */
+/* A serial chain, the case-packer: tool pose and Jacobian from joint values, numbers only, side
+ * by side in one run with KDL's solvers (serial_kdl.cpp) on the same chain and the same values;
+ * and the whole Jacobian question, which judges limits, modes, ranks and conditions besides. The
+ * two are compared with each other before they are timed. */
 #include "bench.h"
 
 #include <math.h>

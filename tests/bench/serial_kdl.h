@@ -10,7 +10,8 @@
 extern "C" {
 #endif
 
-/* Joints by point and unit axis (3 n numbers each) in the reference posture; the tool's frame there. */
+/* Joints by point and unit axis (3 n numbers each) in the reference posture; the tool's frame
+ * there. */
 void kdl_chain(size_t n, const double *at_m, const double *axis, const bool *slides,
                const double rot[9], const double pos_m[3]);
 /* Rotation row by row, then position. */

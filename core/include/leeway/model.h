@@ -59,7 +59,8 @@ typedef struct lw_report {
     size_t n_finding;
     lw_finding finding[LW_MAX_FINDINGS];
     size_t findings_lost;          /* beyond LW_MAX_FINDINGS */
-    int mobility;                  /* rank of the closure derivative, generic; idle spins left out */
+    /* rank of the closure derivative, generic; idle spins left out */
+    int mobility;
     int mobility_counted;          /* Gruebler-Kutzbach count, 6 (bodies - 1 - joints) + freedoms */
     int idle_spins;
     int redundancy_drives;         /* drives - mobility */
@@ -90,10 +91,11 @@ lw_code lw_model_new(lw_model **out, const lw_spec *spec, unsigned long long see
                      lw_report *report, lw_err *err);
 void lw_model_free(lw_model *model);
 
-/* Solution sets, made before the model is shared and its first work object exists: seconds of work,
- * bounded by the number of paths tracked, the same on every machine for the same seed. Where a set is
- * not served (screws among the unknowns, too large) the model stays without it and answers from
- * starts. Sets can be kept and loaded again; damaged ones are refused with LW_E_MODEL. */
+/* Solution sets, made before the model is shared and its first work object exists: seconds of
+ * work, bounded by the number of paths tracked, the same on every machine for the same seed.
+ * Where a set is not served (screws among the unknowns, too large) the model stays without it
+ * and answers from starts. Sets can be kept and loaded again; damaged ones are refused with
+ * LW_E_MODEL. */
 lw_code lw_model_prepare(lw_model *model, unsigned long long seed, unsigned long max_paths,
                          lw_err *err);
 size_t lw_model_sets_size(const lw_model *model);
@@ -110,7 +112,8 @@ void lw_work_free(lw_work *work);
 
 /* "+-++" or "+1.-2": contract of mode text. Text needs LW_MODE_TEXT_SIZE bytes. */
 void lw_mode_text(char *text, const lw_mode *mode);
-/* Parses; false if malformed or the number of entries differs from n_limb. A blank counts as '+'. */
+/* Parses; false if malformed or the number of entries differs from n_limb. A blank counts as
+ * '+'. */
 bool lw_mode_parse(lw_mode *out, const char *text, size_t n_limb);
 bool lw_mode_same(const lw_mode *a, const lw_mode *b);
 /* Small integer of a mode for registers, 1.. in the order of signs and classes; 0 if none. */

@@ -78,7 +78,8 @@ struct lw_posture_ask {
     lw_pose_ask pose;
     bool has_mode;
     lw_mode mode;
-    /* LW_BY_JOINTS: scalar coordinates (rod: change of length) and quaternions of spherical joints */
+    /* LW_BY_JOINTS: scalar coordinates (rod: change of length) and quaternions of spherical
+     * joints */
     bool has_coord[LW_MAX_COORDS];
     double coord[LW_MAX_COORDS];
     bool has_ball[LW_MAX_BALLS];    /* by ball number: the k-th spherical joint in document order */

@@ -55,7 +55,8 @@ typedef struct lw_solution {
     lw_config config;
     double drive[LW_MAX_DRIVES];/* drive coordinates, m or rad */
     lw_frame tool;              /* pose of the tool asked for */
-    bool certified;             /* by Newton-Kantorovich: one solution lies within the radius, scaled */
+    /* by Newton-Kantorovich: one solution lies within the radius, scaled */
+    bool certified;
     double certified_radius;    /* (1 = one radian or one characteristic length) */
     bool contradicted;          /* forward, all: spare readings disagree with this posture */
     bool within_limits;

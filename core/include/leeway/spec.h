@@ -1,11 +1,12 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* A mechanism, written down: the mechanism document decoded to SI units and indices. All points and
- * axes stand in the reference posture, in the fixed body's frame. A coordinate is the motion of the
- * second body of `body` seen from the first, zero in the reference posture, never wrapped.
+/* A mechanism, written down: the mechanism document decoded to SI units and indices. All points
+ * and axes stand in the reference posture, in the fixed body's frame. A coordinate is the motion
+ * of the second body of `body` seen from the first, zero in the reference posture, never
+ * wrapped.
  *
- * Scalar coordinates are numbered through joints in document order (fixed and spherical 0; revolute,
- * prismatic, helical 1; cylindrical 2: turn, slide; universal 2: first, second; planar 3: x, y,
- * turn), then through rods (1 each: change of length). */
+ * Scalar coordinates are numbered through joints in document order (fixed and spherical 0;
+ * revolute, prismatic, helical 1; cylindrical 2: turn, slide; universal 2: first, second; planar
+ * 3: x, y, turn), then through rods (1 each: change of length). */
 #ifndef LEEWAY_SPEC_H
 #define LEEWAY_SPEC_H
 
