@@ -272,8 +272,15 @@ static void run_local(inverse_run *run, const lwi_goal *goal, size_t n_goal)
             failed++;
             continue;
         }
+        if (info.free_left > run->a->dimension) {
+            run->a->dimension = info.free_left;
+        }
+        /* Where the pose leaves freedoms open there is no list: one representative, the nearest. */
         if (!seen_before(run, sol)) {
             run->n++;
+        }
+        if (run->a->dimension > 0) {
+            break;
         }
     }
     run->a->found.not_converged = (int)failed;

@@ -20,6 +20,9 @@ void lwd_answer_inverse(lwd_json *json, const lwd_answer_head *head,
 {
     lwd_answer_begin(json, head, answer->outcome, answer->reason);
     lwd_answer_found(json, &answer->found, answer->complete, answer->basis);
+    if (answer->dimension > 0) {
+        lwd_json_put_int(json, "dimension", (int)answer->dimension);
+    }
     if (answer->outcome == LW_OUTCOME_OUT_OF_REACH) {
         lwd_answer_off_by(json, head, answer->off_by_position_m, answer->off_by_angle_rad,
                           answer->off_by_limb, answer->off_by_limb_m);

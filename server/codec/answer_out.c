@@ -237,6 +237,9 @@ void lwd_answer_solution(lwd_json *json, const lwd_answer_head *head, const lw_s
     lwd_answer_pose(json, head, &solution->tool, solution->config.coord);
     lwd_json_put_bool(json, "within_limits", solution->within_limits);
     put_limits(json, head, solution);
+    if (solution->certified) {
+        lwd_json_put_bool(json, "certified", true);
+    }
     lwd_json_put_object(json, "residual");
     lwd_json_put_number(json, "position", lwd_length_out(units, solution->residual_position_m));
     lwd_json_put_number(json, "angle", lwd_angle_out(units, solution->residual_angle_rad));

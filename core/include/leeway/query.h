@@ -90,6 +90,7 @@ typedef struct lw_inverse_answer {
     lw_basis basis;
     size_t n_solution;  /* after the filters mode and near */
     const lw_solution *solution;
+    size_t dimension;   /* freedoms the pose leaves open (a redundant arm): the list holds samples */
     double off_by_position_m; /* OUT_OF_REACH by members that contradict: how far the nearest is */
     double off_by_angle_rad;
     size_t off_by_limb;       /* limb that cannot reach; SIZE_MAX if not one limb */
