@@ -75,6 +75,7 @@ echo '#include <leeway/a.h>' >>server/catalog/catalog.c; finds boundaries "text 
 echo 'int g(void) { return sprintf(0, ""); }' >>server/codec/in.c; finds banned server/codec/in.c:5
 echo 'int g(void) { return atoi (""); }' >>clients/cli/main.c; finds banned "calls atoi"
 echo 'int g(void) { return malloc(1) != 0; }' >>core/query/q.c; finds banned "never allocates"
+c_file core/homotopy/track.c 'int g(void) { return malloc(1) != 0; }'; finds banned "never allocates"
 echo 'int g(void) { return fopen("", "") != 0; }' >>core/math/gsl_room.c; finds banned "fopen"
 echo 'void g(void) { skip(); }' >>tests/core/test_a.c; finds banned "calls skip"
 c_file core/query/new.c 'int n;'; finds maps "core/query/new.c: not named"
