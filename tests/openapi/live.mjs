@@ -291,7 +291,6 @@ function coverage() {
 }
 
 async function main() {
-  const began = Date.now();
   daemon = new Daemon();
   try {
     await daemon.start();
@@ -324,13 +323,12 @@ async function main() {
   if (renew) {
     writeFileSync(file, format(description.document));
   }
-  faults.forEach((text) => console.log(`  FAULT ${text}`));
-  console.log(`${count} requests in ${((Date.now() - began) / 1000).toFixed(1)} s, `
-    + `${faults.length} faults`);
-  process.exitCode = faults.length === 0 ? 0 : 1;
 }
 
-await main().catch((error) => {
-  console.error(`  FAULT ${error.stack}`);
-  process.exitCode = 1;
-});
+// What was found is told even where a fault ended the run.
+const began = Date.now();
+await main().catch((error) => fault('the check itself', error.stack));
+faults.forEach((text) => console.log(`  FAULT ${text}`));
+console.log(`${count} requests in ${((Date.now() - began) / 1000).toFixed(1)} s, `
+  + `${faults.length} faults`);
+process.exitCode = faults.length === 0 ? 0 : 1;
