@@ -22,13 +22,26 @@ static void twist_to_tool(double *twist, size_t n, const double rot[9])
     }
 }
 
-static double condition(const double *a, size_t n, size_t m, lw_work *work)
+/* True where the least singular value of a (n x m) is above the threshold of rank times the largest.
+ * The diagonal of a pivoted QR settles nearly every case, since its last entry is at most
+ * 2^m times the least singular value and its first at least the largest over sqrt(m) (Golub & Van
+ * Loan, Matrix Computations, 5.4.2); the rest is told by the singular values themselves. */
+static bool full_rank(const double *a, size_t n, size_t m, lw_work *work)
 {
+    double *qr = work->matrix[0];
     double *sv = work->vector[0];
-    memcpy(work->matrix[0], a, n * m * sizeof *a);
-    lwi_svd(work->matrix[0], n, m, m, sv, NULL);
-    double least = n >= m ? sv[m - 1] : 0.0;
-    return least > LWI_RANK_POSTURE * sv[0] ? sv[0] / least : 0.0;
+    if (n < m) {
+        return false;
+    }
+    memcpy(qr, a, n * m * sizeof *a);
+    (void)lwi_qrp(qr, n, m, m, sv, work->index);
+    double least = fabs(qr[(m - 1) * m + m - 1]);
+    if (m <= 12 && least > 4096.0 * 12.0 * LWI_RANK_POSTURE * fabs(qr[0])) {
+        return true;
+    }
+    memcpy(qr, a, n * m * sizeof *a);
+    lwi_svd(qr, n, m, m, sv, NULL);
+    return sv[m - 1] > LWI_RANK_POSTURE * sv[0];
 }
 
 static void reference_point(double point[3], const lw_solution *sol, const lw_jacobian_ask *ask)
@@ -42,24 +55,71 @@ static void reference_point(double point[3], const lw_solution *sol, const lw_ja
     }
 }
 
+static double drive_scale(const lw_model *m, size_t d)
+{
+    return m->spec->drive[d].turning ? 1.0 : 1.0 / m->length_m;
+}
+
 /* Condition number of output per drive rates with lengths over the characteristic length. */
-static double scaled_condition(const lw_model *m, const lwi_rates *rates, lw_work *work)
+static double scaled_condition(const lw_jacobian_answer *answer, const lw_model *m,
+                               const lwi_rates *rates, lw_work *work)
 {
     double *a = work->matrix[1];
     double *t = work->matrix[2];
     double *j = work->matrix[3];
-    lwi_scaled_drives(a, m, rates, work);
-    lwi_scaled_outputs(t, m, rates, work);
-    if (!lwi_solve_through(j, a, rates->n_drive, t, rates->n_output, rates->m, NULL, work)) {
-        return 0.0;
+    size_t n_in = rates->n_drive;
+    if (n_in == rates->m) { /* no spare drives, so weights do not matter: scale what is known */
+        for (size_t o = 0; o < rates->n_output; o++) {
+            double scale = lwi_output_scale(m, o);
+            for (size_t d = 0; d < n_in; d++) {
+                j[o * n_in + d] = scale * answer->forward[o * n_in + d] / drive_scale(m, d);
+            }
+        }
+    } else {
+        lwi_scaled_drives(a, m, rates, work);
+        lwi_scaled_outputs(t, m, rates, work);
+        if (!lwi_solve_through(j, a, n_in, t, rates->n_output, rates->m, NULL, work)) {
+            return 0.0;
+        }
     }
     /* n_output x n_drive: its condition is that of the smaller side. */
     double *sv = work->vector[0];
-    size_t n = rates->n_output < rates->n_drive ? rates->n_output : rates->n_drive;
-    memcpy(work->matrix[0], j, rates->n_output * rates->n_drive * sizeof *j);
-    lwi_svd(work->matrix[0], rates->n_output, rates->n_drive, rates->n_drive, sv, NULL);
-    double c = sv[n - 1] > LWI_RANK_POSTURE * sv[0] ? sv[0] / sv[n - 1] : 0.0;
-    return c;
+    size_t n = rates->n_output < n_in ? rates->n_output : n_in;
+    lwi_svd(j, rates->n_output, n_in, n_in, sv, NULL);
+    return sv[n - 1] > LWI_RANK_POSTURE * sv[0] ? sv[0] / sv[n - 1] : 0.0;
+}
+
+/* Twist and output rates per drive rate, from one factorisation. */
+static bool forward_rates(lw_jacobian_answer *a, const double *weight, const lwi_rates *r,
+                          lw_work *work)
+{
+    double *both = work->matrix[1];
+    double *out = work->matrix[2];
+    size_t n_twist = 6 * r->n_drive;
+    memcpy(both, work->twist, 6 * r->m * sizeof *both);
+    memcpy(both + 6 * r->m, work->tk, r->n_output * r->m * sizeof *both);
+    if (!lwi_solve_through(out, work->ak, r->n_drive, both, 6 + r->n_output, r->m, weight, work)) {
+        return false;
+    }
+    memcpy(a->twist, out, n_twist * sizeof *out);
+    memcpy(a->forward, out + n_twist, r->n_output * r->n_drive * sizeof *out);
+    return true;
+}
+
+/* Empties an answer as far as this mechanism uses it: the whole is 7 kB. */
+static void clear(lw_jacobian_answer *a, const lw_spec *spec)
+{
+    size_t n = spec->n_output * spec->n_drive * sizeof(double);
+    a->outcome = LW_OUTCOME_NONE;
+    a->reason = NULL;
+    a->solution = NULL;
+    a->n_output = spec->n_output;
+    a->n_drive = spec->n_drive;
+    a->has_forward = a->has_inverse = false;
+    memset(a->forward, 0, n);
+    memset(a->inverse, 0, n);
+    memset(a->twist, 0, 6 * spec->n_drive * sizeof(double));
+    a->condition_forward = 0.0;
 }
 
 lw_code lw_jacobian(const lw_jacobian_answer **out, const lw_model *m, const lw_jacobian_ask *ask,
@@ -79,13 +139,11 @@ lw_code lw_jacobian(const lw_jacobian_answer **out, const lw_model *m, const lw_
     if (rc != LW_OK) {
         return rc;
     }
-    memset(a, 0, sizeof *a);
+    clear(a, m->spec);
     *out = a;
     a->outcome = posture->outcome;
     a->reason = posture->reason;
     a->solution = posture->solution;
-    a->n_output = m->spec->n_output;
-    a->n_drive = m->spec->n_drive;
     if (posture->solution == NULL) {
         return LW_OK;
     }
@@ -108,20 +166,14 @@ lw_code lw_jacobian(const lw_jacobian_answer **out, const lw_model *m, const lw_
         weight[d] = lwi_drive_sigma(m, d);
     }
     lwi_scaled_drives(work->matrix[1], m, &rates, work);
-    bool held = condition(work->matrix[1], rates.n_drive, rates.m, work) > 0.0;
+    bool held = full_rank(work->matrix[1], rates.n_drive, rates.m, work);
     lwi_scaled_outputs(work->matrix[1], m, &rates, work);
     bool led = rates.n_output == rates.m &&
-               condition(work->matrix[1], rates.n_output, rates.m, work) > 0.0;
-    a->has_forward =
-        held && lwi_solve_through(a->forward, work->ak, rates.n_drive, work->tk, rates.n_output,
-                                  rates.m, weight, work);
-    if (held) {
-        (void)lwi_solve_through(a->twist, work->ak, rates.n_drive, work->twist, 6, rates.m, weight,
-                                work);
-    }
+               full_rank(work->matrix[1], rates.n_output, rates.m, work);
+    a->has_forward = held && forward_rates(a, weight, &rates, work);
     a->has_inverse = led && lwi_solve_through(a->inverse, work->tk, rates.n_output, work->ak,
                                               rates.n_drive, rates.m, NULL, work);
-    a->condition_forward = a->has_forward ? scaled_condition(m, &rates, work) : 0.0;
+    a->condition_forward = a->has_forward ? scaled_condition(a, m, &rates, work) : 0.0;
     if (!held || !led) {
         a->outcome = LW_OUTCOME_SINGULAR;
         a->reason = !held ? "forward singularity: the drives do not hold the posture"

@@ -100,12 +100,10 @@ void lwi_rates_at(lwi_rates *r, const lw_model *m, const lw_spec_tool *tool,
         through_k(work->ak + d * left, row, m, work);
     }
     size_t node = sys->body_node[tool->body];
+    double *rows = work->matrix[0];
+    lwi_twist_rows(rows, sys, &work->ev, node, point_m);
     for (size_t c = 0; c < 6; c++) {
-        double f[3] = {0, 0, 0};
-        double w[3] = {0, 0, 0};
-        (c < 3 ? f : w)[c % 3] = 1.0;
-        lwi_twist_row(row, sys, &work->ev, node, point_m, f, w);
-        through_k(work->twist + c * left, row, m, work);
+        through_k(work->twist + c * left, rows + c * sys->n_var, m, work);
     }
     output_rates(m, tool, r, work);
 }
@@ -120,14 +118,18 @@ void lwi_scaled_drives(double *out, const lw_model *m, const lwi_rates *r, const
     }
 }
 
+double lwi_output_scale(const lw_model *m, size_t output)
+{
+    lw_output_kind kind = m->spec->output[output].kind;
+    bool length = kind <= LW_OUT_Z || (kind == LW_OUT_COORD &&
+                                       !lw_spec_coord_turning(m->spec, m->spec->output[output].coord));
+    return length ? 1.0 / m->length_m : 1.0;
+}
+
 void lwi_scaled_outputs(double *out, const lw_model *m, const lwi_rates *r, const lw_work *work)
 {
     for (size_t o = 0; o < r->n_output; o++) {
-        lw_output_kind kind = m->spec->output[o].kind;
-        bool length = kind <= LW_OUT_Z ||
-                      (kind == LW_OUT_COORD &&
-                       !lw_spec_coord_turning(m->spec, m->spec->output[o].coord));
-        double scale = length ? 1.0 / m->length_m : 1.0;
+        double scale = lwi_output_scale(m, o);
         for (size_t j = 0; j < r->m; j++) {
             out[o * r->m + j] = scale * work->tk[o * r->m + j];
         }

@@ -24,6 +24,8 @@ void lwi_rates_at(lwi_rates *out, const lw_model *model, const lw_spec_tool *too
 /* Scales rows of drives (lengths over the characteristic length) into out, n_drive x m. */
 void lwi_scaled_drives(double *out, const lw_model *model, const lwi_rates *rates,
                        const lw_work *work);
+/* What lwi_scaled_outputs multiplies an output's row with. */
+double lwi_output_scale(const lw_model *model, size_t output);
 void lwi_scaled_outputs(double *out, const lw_model *model, const lwi_rates *rates,
                         const lw_work *work);
 
