@@ -112,15 +112,44 @@ static void put_special(lwd_json *json, uint32_t c)
     }
 }
 
+static bool is_plain(unsigned char c)
+{
+    return c >= 0x20 && c < 0x7f && c != '"' && c != '\\';
+}
+
+/* Text without anything to escape, where there is room for it: nearly all keys and words. */
+static bool put_plain_text(lwd_buf *buf, const char *text, size_t len)
+{
+    if (buf->failed || buf->cap - buf->len <= len + 2) {
+        return false;
+    }
+    char *out = buf->data + buf->len;
+    for (size_t i = 0; i < len; i++) {
+        if (!is_plain((unsigned char)text[i])) {
+            out[0] = '\0';
+            return false;
+        }
+        out[i + 1] = text[i];
+    }
+    out[0] = '"';
+    out[len + 1] = '"';
+    out[len + 2] = '\0';
+    buf->len += len + 2;
+    return true;
+}
+
 /* Quoted text. A byte that is no UTF-8 becomes U+FFFD: text from outside must not spoil a reply. */
 static void put_text(lwd_json *json, const char *text, size_t len)
 {
     const unsigned char *p = (const unsigned char *)text;
     const unsigned char *end = p + len;
+    if (put_plain_text(json->buf, text, len)) {
+        return;
+    }
     put(json, "\"", 1);
     while (p < end) {
         const unsigned char *run = p;
-        while (p < end && *p >= 0x20 && *p < 0x7f && *p != '"' && *p != '\\') {
+        while (p < end && is_plain(*p)) {
             p++;
         }
         put(json, (const char *)run, (size_t)(p - run));
