@@ -204,6 +204,10 @@ static void run_explicit(inverse_run *run, const lwi_pose_known *pose)
         for (size_t i = 0; i < m->n_limb && all; i++) {
             all = run->work->limb_result[i * LWI_MAX_BRANCHES + branch[i]].real;
         }
+        if (all && run->n >= m->max_solutions) {
+            a->complete = false; /* more combinations than are listed */
+            return;
+        }
         if (all) {
             add_combination(run, branch, known);
         }
@@ -438,6 +442,10 @@ static void run_completed(inverse_run *run, const lwi_pose_known *pose)
         a->complete = true;
         a->basis = LW_BASIS_EXPLICIT;
         run_explicit(run, pose);
+        if (!a->complete && run->ask->has_mode) {
+            run->n = 0; /* the list is cut: the mode asked for is solved by itself */
+            (void)run_one_mode(run, pose, &run->ask->mode);
+        }
     } else {
         full_pose_goals(run->work->goal2, &n_goal, m, pose);
         if (m->set[1] != NULL) {
@@ -447,6 +455,9 @@ static void run_completed(inverse_run *run, const lwi_pose_known *pose)
         }
     }
     judge_list(run);
+    if (a->basis == LW_BASIS_EXPLICIT && !a->complete) {
+        a->found.real = a->found.within_limits = -1; /* the list was cut */
+    }
 }
 
 lw_code lw_inverse(const lw_inverse_answer **out, const lw_model *m, const lw_inverse_ask *ask,
