@@ -20,7 +20,7 @@ static const struct verdict {
     {"out_of_reach", "no posture takes the tool there",
      "check pose, units and tool of the question, then the lengths in the document"},
     {"undecided", "not settled; never take this as yes",
-     "read the reason; give a larger --budget, or a --near closer to the machine's posture"},
+     "read the reason; a --near closer to the machine's posture may settle it"},
     {"other_mode", "reachable, but not in the mode asked for, or not without a mode change",
      "ask for one of the modes named, or with --mode any (reach)"},
     {"singular", "the posture, or the way, is singular",
