@@ -143,6 +143,22 @@ async function questions() {
   }
 }
 
+// An arm with a freedom to spare: the set of its solutions has a dimension.
+async function spare() {
+  const flap = demoFlap();
+  const slack = { ...flap, name: 'slack', bodies: ['wall', 'flap', 'rim'], motion: undefined,
+    joints: [flap.joints[0], { ...flap.joints[0], name: 'fold', between: ['flap', 'rim'],
+      at: [120, 0, 0] }],
+    drives: [flap.drives[0], { ...flap.drives[0], name: 'm2', moves: 'fold' }],
+    tools: [{ ...flap.tools[0], body: 'rim' }] };
+  await load(slack, { publish: false });
+  const answer = await good('a freedom to spare', 'POST', '/v1/mechanisms/slack/inverse',
+    { body: { pose: { rz: 30 }, revision: 1, near: { drives: { m1: 0, m2: 0 } } } });
+  if (answer.json.dimension !== 1 || answer.json.complete !== false) {
+    fault('a freedom to spare', 'dimension 1 expected, got', answer.text.slice(0, 900));
+  }
+}
+
 // Pages by their links, tags that still hold, the head alone, a second revision.
 async function catalog() {
   const list = '/v1/mechanisms?limit=2';
@@ -308,6 +324,7 @@ async function main() {
     }
     await examples();
     await questions();
+    await spare();
     await catalog();
     await heads();
     await refused();
