@@ -101,8 +101,9 @@ bool lwt_alloc_failed(void);           /* one has failed since */
 void lwt_alloc_cjson(bool counted);
 
 /* Runs `step` with the first allocation failing, then the second, and so on until it runs without
- * meeting one; `step` is told which fails and must leave nothing behind. Returns the number of
- * failing runs; meeting more than `limit` fails the case, and so does meeting none. */
+ * meeting one; `step` is told which fails and must leave nothing behind. Returns the last that
+ * failed; meeting more than `limit` fails the case, and so does meeting none. Under a sanitizer a
+ * long sweep goes on in strides. */
 size_t lwt_alloc_sweep(void (*step)(void *context, size_t n), void *context, size_t limit);
 
 #endif
