@@ -302,6 +302,18 @@ static lw_code missing_readings(const lw_model *m, const lw_posture_ask *ask, lw
     return LW_OK;
 }
 
+/* A serial chain whose joints are all driven has one posture for its readings: no equation at all. */
+static bool serial_chain(const lw_model *m)
+{
+    const lwi_system *sys = m->whole;
+    for (size_t k = 0; k < sys->n_element; k++) {
+        if (sys->element[k].kind == LWI_BALL || sys->element[k].kind == LWI_FREE) {
+            return false;
+        }
+    }
+    return sys->n_row + sys->n_row_dropped == 0 && m->spec->n_drive == m->mobility;
+}
+
 /* Every posture these readings allow, from the prepared set. */
 static lw_code all_solutions(lw_forward_answer *a, const lw_model *m, const lw_spec_tool *tool,
                              const lw_forward_ask *ask, const lwi_goal *goal, size_t n,
@@ -386,7 +398,8 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
         return LW_OK;
     }
     size_t n = drive_goals(goal, drive, m, ask->readings);
-    if (ask->all) {
+    bool chain = serial_chain(m) && n == m->mobility;
+    if (ask->all && !chain) {
         return all_solutions(a, m, tool, ask, goal, n, drive, start, work, err);
     }
     lwi_track(&track, m, start, goal, n, work);
@@ -405,6 +418,12 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
     a->n_solution = 1;
     a->outcome = sol->within_limits ? LW_OUTCOME_OK : LW_OUTCOME_LIMIT;
     a->reason = sol->within_limits ? NULL : "the posture is beyond a limit";
+    if (chain) {
+        a->complete = true;
+        a->basis = LW_BASIS_EXPLICIT;
+        a->found.complex_count = a->found.real = 1;
+        a->found.within_limits = sol->within_limits;
+    }
     if (!(hold > LWI_RANK_POSTURE)) {
         a->outcome = LW_OUTCOME_SINGULAR;
         a->reason = "the drives do not hold this posture";
