@@ -112,6 +112,43 @@ void lwi_limits_judge(lw_solution *sol, const lw_model *model)
     }
 }
 
+/* A turning drive on one joint may stand whole turns apart with the same posture. */
+static unsigned whole_turns(const lw_model *model, size_t d, double value)
+{
+    const lw_spec_drive *drive = &model->spec->drive[d];
+    size_t joint;
+    size_t part;
+    size_t rod;
+    const lw_range *r = &drive->range;
+    bool bounded = r->has_low && r->has_high;
+    if (bounded && !(value >= r->low - LWI_LIMIT_SLACK && value <= r->high + LWI_LIMIT_SLACK)) {
+        return 0;
+    }
+    if (!bounded || !drive->turning || drive->n_term != 1 ||
+        !lw_spec_coord_owner(model->spec, drive->term[0].coord, &joint, &part, &rod) ||
+        joint == SIZE_MAX || model->spec->joint[joint].type != LW_REVOLUTE) {
+        return 1;
+    }
+    /* Coupled and output turns are counted: they differ. */
+    for (size_t c = 0; c < model->spec->n_coupling; c++) {
+        for (size_t t = 0; t < model->spec->coupling[c].n_term; t++) {
+            if (model->spec->coupling[c].term[t].coord == drive->term[0].coord) {
+                return 1;
+            }
+        }
+    }
+    for (size_t o = 0; o < model->spec->n_output; o++) {
+        if (model->spec->output[o].kind == LW_OUT_COORD &&
+            model->spec->output[o].coord == drive->term[0].coord) {
+            return 1;
+        }
+    }
+    double turn = 6.283185307179586476925 * fabs(drive->term[0].factor);
+    double up = floor((r->high + LWI_LIMIT_SLACK - value) / turn);
+    double down = floor((value - r->low + LWI_LIMIT_SLACK) / turn);
+    return (unsigned)(fmin(up, 1e6) + fmin(down, 1e6)) + 1U;
+}
+
 void lwi_solution_finish(lw_solution *sol, const lw_model *model, const lw_spec_tool *tool)
 {
     lwi_drive_coords(sol->drive, model, &sol->config);
@@ -121,6 +158,9 @@ void lwi_solution_finish(lw_solution *sol, const lw_model *model, const lw_spec_
     sol->contradicted = false;
     sol->certified = false;
     sol->certified_radius = 0.0;
+    for (size_t d = 0; d < model->spec->n_drive; d++) {
+        sol->turns[d] = whole_turns(model, d, sol->drive[d]);
+    }
     lwi_limits_judge(sol, model);
 }
 

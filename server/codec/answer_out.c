@@ -237,6 +237,19 @@ void lwd_answer_solution(lwd_json *json, const lwd_answer_head *head, const lw_s
     lwd_answer_pose(json, head, &solution->tool, solution->config.coord);
     lwd_json_put_bool(json, "within_limits", solution->within_limits);
     put_limits(json, head, solution);
+    bool open = false;
+    for (size_t i = 0; i < edge->spec->n_drive; i++) {
+        if (solution->turns[i] > 1) {
+            if (!open) {
+                lwd_json_put_object(json, "turns");
+                open = true;
+            }
+            lwd_json_put_int(json, edge->spec->drive[i].name, (int)solution->turns[i]);
+        }
+    }
+    if (open) {
+        lwd_json_end(json);
+    }
     if (solution->certified) {
         lwd_json_put_bool(json, "certified", true);
     }

@@ -54,6 +54,8 @@ typedef struct lw_solution {
     bool mode_known;            /* false where a limb's sign could not be told (iterated limbs) */
     lw_config config;
     double drive[LW_MAX_DRIVES];/* drive coordinates, m or rad */
+    unsigned turns[LW_MAX_DRIVES]; /* readings within the drive's range that name this posture, whole
+                                * turns apart; 1 where there is one, 0 where it is out of range */
     lw_frame tool;              /* pose of the tool asked for */
     /* by Newton-Kantorovich: one solution lies within the radius, scaled */
     bool certified;
