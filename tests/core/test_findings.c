@@ -171,8 +171,8 @@ static void warns_of_a_check_pose_that_is_missed(void **state)
     }
 }
 
-/* Spindle and nut by two helical joints on one line, and the same relation as a coupling: with leads
- * of 30 and -20 mm the nut moves 50 mm a turn of the spindle against the frame's nut. */
+/* Spindle and nut by two helical joints on one line, and the same relation as a coupling: with
+ * leads of 30 and -20 mm the nut moves 50 mm a turn of the spindle against the frame's nut. */
 static lwt_machine *screw_with_coupling(double travel_a_turn_m)
 {
     lwt_machine *m = lwt_machine_new("screw");
