@@ -244,29 +244,19 @@ static void svd_tall(double *a, size_t rows, size_t cols, size_t ld, double *sv,
     }
 }
 
-/* Values alone of a tall matrix: rotations on the transposed factor of a pivoted QR, which needs two
- * or three sweeps where the matrix itself needs six (Drmac & Veselic 2008, part I). */
-static void svd_values(double *a, size_t rows, size_t cols, size_t ld, double *sv)
-{
-    double tau[SVD_FACTOR_MAX];
-    size_t perm[SVD_FACTOR_MAX];
-    (void)lwi_qrp(a, rows, cols, ld, tau, perm);
-    for (size_t i = 0; i < cols; i++) {
-        for (size_t j = i + 1; j < cols; j++) {
-            a[j * ld + i] = a[i * ld + j];
-            a[i * ld + j] = 0.0;
-        }
-    }
-    svd_tall(a, cols, cols, ld, sv, NULL);
-}
-
 void lwi_svd(double *a, size_t rows, size_t cols, size_t ld, double *sv, double *v)
 {
     if (rows >= cols && v == NULL && cols <= SVD_FACTOR_MAX) {
-        svd_values(a, rows, cols, ld, sv);
-        return;
-    }
-    if (rows >= cols) {
+        /* Values alone: rotations on the rows of the triangle of a pivoted QR, which needs two or
+         * three sweeps where the matrix itself needs six (Drmac & Veselic 2008, part I). */
+        double tau[SVD_FACTOR_MAX];
+        size_t perm[SVD_FACTOR_MAX];
+        (void)lwi_qrp(a, rows, cols, ld, tau, perm);
+        for (size_t i = 1; i < cols; i++) {
+            memset(a + i * ld, 0, i * sizeof *a);
+        }
+        rows = cols;
+    } else if (rows >= cols) {
         svd_tall(a, rows, cols, ld, sv, v);
         return;
     }

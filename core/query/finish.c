@@ -48,6 +48,12 @@ static void judge_cone(lw_solution *sol, lw_limit_of of, size_t index, size_t en
     double c[3];
     lw_range range = {.has_low = false, .has_high = true, .high = cone_rad};
     lwi_cross(c, a, b);
+    /* atan(x) <= x and tan(x) >= x + x^3 / 3: well inside the cone without asking for the angle. */
+    double along = lwi_dot(a, b);
+    double room = along * (cone_rad + cone_rad * cone_rad * cone_rad / 3.0) * (1.0 - 1e-9);
+    if (along > 0.0 && cone_rad < 1.5 && lwi_dot(c, c) < room * room) {
+        return;
+    }
     judge(sol, of, index, LW_PART_CONE + end, atan2(lwi_norm(c), lwi_dot(a, b)), &range);
 }
 

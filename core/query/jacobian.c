@@ -22,26 +22,24 @@ static void twist_to_tool(double *twist, size_t n, const double rot[9])
     }
 }
 
-/* True where the least singular value of a (n x m) is above the threshold of rank times the largest.
- * The diagonal of a pivoted QR settles nearly every case, since its last entry is at most
- * 2^m times the least singular value and its first at least the largest over sqrt(m) (Golub & Van
- * Loan, Matrix Computations, 5.4.2); the rest is told by the singular values themselves. */
-static bool full_rank(const double *a, size_t n, size_t m, lw_work *work)
+/* Factors the rows divided by `weight` for lwi_invert; true where the least singular value of `scaled`
+ * is above the threshold of rank times the largest. Where the weights are the scales, the diagonal of
+ * the factor settles nearly every case: its last entry is at most 2^m times the least singular value
+ * and its first at least the largest over sqrt(m) (Golub & Van Loan, Matrix Computations, 5.4.2).
+ * The rest is told by the singular values themselves. */
+static bool factor(const double *a, size_t n, size_t m, const double *weight, bool weight_scales,
+                   double *scaled, lw_work *work)
 {
-    double *qr = work->matrix[0];
-    double *sv = work->vector[0];
+    double *sv = work->vector[1];
+    double ratio = n >= m ? lwi_factor(a, n, m, weight, work) : 0.0;
+    if (weight_scales && m <= 12 && ratio > 4096.0 * 4.0 * LWI_RANK_POSTURE) {
+        return true;
+    }
     if (n < m) {
         return false;
     }
-    memcpy(qr, a, n * m * sizeof *a);
-    (void)lwi_qrp(qr, n, m, m, sv, work->index);
-    double least = fabs(qr[(m - 1) * m + m - 1]);
-    if (m <= 12 && least > 4096.0 * 12.0 * LWI_RANK_POSTURE * fabs(qr[0])) {
-        return true;
-    }
-    memcpy(qr, a, n * m * sizeof *a);
-    lwi_svd(qr, n, m, m, sv, NULL);
-    return sv[m - 1] > LWI_RANK_POSTURE * sv[0];
+    lwi_svd(scaled, n, m, m, sv, NULL);
+    return ratio > 1e-12 && sv[m - 1] > LWI_RANK_POSTURE * sv[0];
 }
 
 static void reference_point(double point[3], const lw_solution *sol, const lw_jacobian_ask *ask)
@@ -89,23 +87,6 @@ static double scaled_condition(const lw_jacobian_answer *answer, const lw_model 
     return sv[n - 1] > LWI_RANK_POSTURE * sv[0] ? sv[0] / sv[n - 1] : 0.0;
 }
 
-/* Twist and output rates per drive rate, from one factorisation. */
-static bool forward_rates(lw_jacobian_answer *a, const double *weight, const lwi_rates *r,
-                          lw_work *work)
-{
-    double *both = work->matrix[1];
-    double *out = work->matrix[2];
-    size_t n_twist = 6 * r->n_drive;
-    memcpy(both, work->twist, 6 * r->m * sizeof *both);
-    memcpy(both + 6 * r->m, work->tk, r->n_output * r->m * sizeof *both);
-    if (!lwi_solve_through(out, work->ak, r->n_drive, both, 6 + r->n_output, r->m, weight, work)) {
-        return false;
-    }
-    memcpy(a->twist, out, n_twist * sizeof *out);
-    memcpy(a->forward, out + n_twist, r->n_output * r->n_drive * sizeof *out);
-    return true;
-}
-
 /* Empties an answer as far as this mechanism uses it: the whole is 7 kB. */
 static void clear(lw_jacobian_answer *a, const lw_spec *spec)
 {
@@ -128,7 +109,7 @@ lw_code lw_jacobian(const lw_jacobian_answer **out, const lw_model *m, const lw_
     lw_jacobian_answer *a = &work->jacobian;
     const lw_posture_answer *posture;
     double point[3];
-    double weight[LW_MAX_DRIVES];
+    double weight[LW_MAX_DRIVES + LW_MAX_OUTPUTS];
     lwi_rates rates;
     *out = NULL;
     const lw_spec_tool *tool = lwi_tool(m, ask->tool, ask->tool_written, err);
@@ -162,17 +143,31 @@ lw_code lw_jacobian(const lw_jacobian_answer **out, const lw_model *m, const lw_
             }
         }
     }
+    /* Without spare drives the weights do not matter, and the scales serve. */
+    bool spare = rates.n_drive > rates.m;
     for (size_t d = 0; d < rates.n_drive; d++) {
-        weight[d] = lwi_drive_sigma(m, d);
+        weight[d] = spare ? lwi_drive_sigma(m, d) : 1.0 / drive_scale(m, d);
     }
     lwi_scaled_drives(work->matrix[1], m, &rates, work);
-    bool held = full_rank(work->matrix[1], rates.n_drive, rates.m, work);
+    bool held =
+        factor(work->ak, rates.n_drive, rates.m, weight, !spare, work->matrix[1], work);
+    if (held) {
+        a->has_forward = true;
+        const double *back = lwi_invert(rates.n_drive, rates.m, weight, work);
+        lwi_product(a->forward, work->tk, rates.n_output, rates.m, back, rates.n_drive);
+        lwi_product(a->twist, work->twist, 6, rates.m, back, rates.n_drive);
+    }
+    for (size_t o = 0; o < rates.n_output; o++) {
+        weight[o] = 1.0 / lwi_output_scale(m, o);
+    }
     lwi_scaled_outputs(work->matrix[1], m, &rates, work);
     bool led = rates.n_output == rates.m &&
-               full_rank(work->matrix[1], rates.n_output, rates.m, work);
-    a->has_forward = held && forward_rates(a, weight, &rates, work);
-    a->has_inverse = led && lwi_solve_through(a->inverse, work->tk, rates.n_output, work->ak,
-                                              rates.n_drive, rates.m, NULL, work);
+               factor(work->tk, rates.n_output, rates.m, weight, true, work->matrix[1], work);
+    if (led) {
+        a->has_inverse = true;
+        const double *back = lwi_invert(rates.n_output, rates.m, weight, work);
+        lwi_product(a->inverse, work->ak, rates.n_drive, rates.m, back, rates.n_output);
+    }
     a->condition_forward = a->has_forward ? scaled_condition(a, m, &rates, work) : 0.0;
     if (!held || !led) {
         a->outcome = LW_OUTCOME_SINGULAR;

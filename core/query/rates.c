@@ -136,43 +136,92 @@ void lwi_scaled_outputs(double *out, const lw_model *m, const lwi_rates *r, cons
     }
 }
 
-bool lwi_solve_through(double *out, const double *a, size_t n_in, const double *b, size_t n_out,
-                       size_t m, const double *weight, lw_work *work)
+double lwi_factor(const double *a, size_t n_in, size_t m, const double *weight, lw_work *work)
 {
-    /* One QR of the weighted A; then A^+ column by column. */
     double *qr = work->matrix[0];
-    double *tau = work->vector[0];
-    double *e = work->vector[1];
-    size_t *perm = work->index;
-    double x[LWI_MAX_VARS];
     for (size_t i = 0; i < n_in; i++) {
         double w = weight != NULL ? 1.0 / weight[i] : 1.0;
         for (size_t j = 0; j < m; j++) {
             qr[i * m + j] = w * a[i * m + j];
         }
     }
-    size_t steps = lwi_qrp(qr, n_in, m, m, tau, perm);
-    if (steps < m || !(fabs(qr[(m - 1) * m + m - 1]) > 1e-12 * fabs(qr[0]))) {
+    size_t steps = lwi_qrp(qr, n_in, m, m, work->vector[0], work->index);
+    double first = steps == m ? fabs(qr[0]) : 0.0;
+    return first > 0.0 ? fabs(qr[(m - 1) * m + m - 1]) / first : 0.0;
+}
+
+/* All columns at a time, so that the inner loops run along rows. */
+static void reflect_all(double *e, size_t n_in, size_t m, const lw_work *work)
+{
+    const double *qr = work->matrix[0];
+    double *sum = work->vector[1];
+    for (size_t k = 0; k < m; k++) {
+        memcpy(sum, e + k * n_in, n_in * sizeof *sum);
+        for (size_t i = k + 1; i < n_in; i++) {
+            double v = qr[i * m + k];
+            for (size_t c = 0; c < n_in; c++) {
+                sum[c] += v * e[i * n_in + c];
+            }
+        }
+        for (size_t c = 0; c < n_in; c++) {
+            sum[c] *= work->vector[0][k];
+            e[k * n_in + c] -= sum[c];
+        }
+        for (size_t i = k + 1; i < n_in; i++) {
+            double v = qr[i * m + k];
+            for (size_t c = 0; c < n_in; c++) {
+                e[i * n_in + c] -= v * sum[c];
+            }
+        }
+    }
+}
+
+const double *lwi_invert(size_t n_in, size_t m, const double *weight, lw_work *work)
+{
+    const double *qr = work->matrix[0];
+    double *e = work->matrix[0] + n_in * m;
+    double *p = e + n_in * n_in;
+    memset(e, 0, n_in * n_in * sizeof *e);
+    for (size_t i = 0; i < n_in; i++) {
+        e[i * n_in + i] = weight != NULL ? 1.0 / weight[i] : 1.0;
+    }
+    reflect_all(e, n_in, m, work);
+    for (size_t k = m; k-- > 0;) {
+        double *row = p + work->index[k] * n_in;
+        memcpy(row, e + k * n_in, n_in * sizeof *row);
+        for (size_t j = k + 1; j < m; j++) {
+            const double *known = p + work->index[j] * n_in;
+            for (size_t c = 0; c < n_in; c++) {
+                row[c] -= qr[k * m + j] * known[c];
+            }
+        }
+        for (size_t c = 0; c < n_in; c++) {
+            row[c] /= qr[k * m + k];
+        }
+    }
+    return p;
+}
+
+void lwi_product(double *out, const double *b, size_t n_out, size_t m, const double *p, size_t n_in)
+{
+    for (size_t o = 0; o < n_out; o++) {
+        double *row = out + o * n_in;
+        memset(row, 0, n_in * sizeof *row);
+        for (size_t j = 0; j < m; j++) {
+            double f = b[o * m + j];
+            for (size_t c = 0; c < n_in; c++) {
+                row[c] += f * p[j * n_in + c];
+            }
+        }
+    }
+}
+
+bool lwi_solve_through(double *out, const double *a, size_t n_in, const double *b, size_t n_out,
+                       size_t m, const double *weight, lw_work *work)
+{
+    if (!(lwi_factor(a, n_in, m, weight, work) > 1e-12)) {
         return false;
     }
-    for (size_t i = 0; i < n_in; i++) {
-        memset(e, 0, n_in * sizeof *e);
-        e[i] = weight != NULL ? 1.0 / weight[i] : 1.0;
-        lwi_qrp_qt(qr, n_in, steps, m, tau, e);
-        for (size_t k = m; k-- > 0;) {
-            double s = e[k];
-            for (size_t j = k + 1; j < m; j++) {
-                s -= qr[k * m + j] * x[perm[j]];
-            }
-            x[perm[k]] = s / qr[k * m + k];
-        }
-        for (size_t o = 0; o < n_out; o++) {
-            double s = 0.0;
-            for (size_t j = 0; j < m; j++) {
-                s += b[o * m + j] * x[j];
-            }
-            out[o * n_in + i] = s;
-        }
-    }
+    lwi_product(out, b, n_out, m, lwi_invert(n_in, m, weight, work), n_in);
     return true;
 }

@@ -33,5 +33,13 @@ void lwi_scaled_outputs(double *out, const lw_model *model, const lwi_rates *rat
  * 1/weight[i] on the rows of A. False if A loses rank. Scratch from work. */
 bool lwi_solve_through(double *out, const double *a, size_t n_in, const double *b, size_t n_out,
                        size_t m, const double *weight, lw_work *work);
+/* The same in steps. First the pivoted QR of the weighted A, kept in work->matrix[0], vector[0] and
+ * index; returned is its last diagonal entry over its first, 0 where columns are missing. Then A^+
+ * (m x n_in), which stands behind it in work->matrix[0] until that is used again; vector[1] is
+ * scratch. Then B A^+ for one B after another. */
+double lwi_factor(const double *a, size_t n_in, size_t m, const double *weight, lw_work *work);
+const double *lwi_invert(size_t n_in, size_t m, const double *weight, lw_work *work);
+void lwi_product(double *out, const double *b, size_t n_out, size_t m, const double *p,
+                 size_t n_in);
 
 #endif
