@@ -423,7 +423,9 @@ static void show_verdict(lwc_text *out, const cJSON *answer, bool colour)
     outcome = outcome != NULL ? outcome : verdict(code)->outcome;
     lwc_text_safe(out, outcome, strlen(outcome));
     lwc_text_puts(out, colour ? "\x1b[0m" : "");
-    lwc_text_printf(out, ": %s\n", verdict(code)->meaning);
+    /* Only reach has thresholds; the other questions state how things are. */
+    bool thresholds = code != 1 || lwc_json_get(answer, "checked") != NULL;
+    lwc_text_printf(out, ": %s\n", thresholds ? verdict(code)->meaning : "answered");
     if (verdict(code)->next != NULL) {
         lwc_text_printf(out, "next          %s\n", verdict(code)->next);
     }
