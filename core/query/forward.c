@@ -302,7 +302,8 @@ static lw_code missing_readings(const lw_model *m, const lw_posture_ask *ask, lw
     return LW_OK;
 }
 
-/* A serial chain whose joints are all driven has one posture for its readings: no equation at all. */
+/* A serial chain whose joints are all driven has one posture for its readings: no equation at
+ * all. */
 static bool serial_chain(const lw_model *m)
 {
     const lwi_system *sys = m->whole;

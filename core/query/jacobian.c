@@ -22,11 +22,11 @@ static void twist_to_tool(double *twist, size_t n, const double rot[9])
     }
 }
 
-/* Factors the rows divided by `weight` for lwi_invert; true where the least singular value of `scaled`
- * is above the threshold of rank times the largest. Where the weights are the scales, the diagonal of
- * the factor settles nearly every case: its last entry is at most 2^m times the least singular value
- * and its first at least the largest over sqrt(m) (Golub & Van Loan, Matrix Computations, 5.4.2).
- * The rest is told by the singular values themselves. */
+/* Factors the rows divided by `weight` for lwi_invert; true where the least singular value of
+ * `scaled` is above the threshold of rank times the largest. Where the weights are the scales,
+ * the diagonal of the factor settles nearly every case: its last entry is at most 2^m times the
+ * least singular value and its first at least the largest over sqrt(m) (Golub & Van Loan, Matrix
+ * Computations, 5.4.2). The rest is told by the singular values themselves. */
 static bool factor(const double *a, size_t n, size_t m, const double *weight, bool weight_scales,
                    double *scaled, lw_work *work)
 {

@@ -122,7 +122,8 @@ double lwi_output_scale(const lw_model *m, size_t output)
 {
     lw_output_kind kind = m->spec->output[output].kind;
     bool length = kind <= LW_OUT_Z || (kind == LW_OUT_COORD &&
-                                       !lw_spec_coord_turning(m->spec, m->spec->output[output].coord));
+                                       !lw_spec_coord_turning(m->spec,
+                                                              m->spec->output[output].coord));
     return length ? 1.0 / m->length_m : 1.0;
 }
 

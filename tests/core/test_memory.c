@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Memory that runs out while a mechanism is made ready for questions: at every single allocation the
- * call says so, gives nothing out and leaves nothing behind (the leak checker watches); with memory
- * there again the same call succeeds. The mechanisms are of every kind the core tells apart; the
- * documents of the demo line go the same way in tests/server. */
+/* Memory that runs out while a mechanism is made ready for questions: at every single allocation
+ * the call says so, gives nothing out and leaves nothing behind (the leak checker watches); with
+ * memory there again the same call succeeds. The mechanisms are of every kind the core tells
+ * apart; the documents of the demo line go the same way in tests/server. */
 #include "lwt.h"
 #include "lwt_build.h"
 #include "lwt_subjects.h"

@@ -95,8 +95,8 @@ static void random_direction(walker *w, lwt_random *rng, double size)
     }
 }
 
-/* The label of limb i differs between shares 0 and 1 of the step: halve down to where the determinant
- * vanishes. */
+/* The label of limb i differs between shares 0 and 1 of the step: halve down to where the
+ * determinant vanishes. */
 static void bracket(walker *w, size_t limb, unsigned before)
 {
     unsigned branch[LW_MAX_LIMBS];
@@ -177,9 +177,9 @@ int main(void)
         for (size_t s = 0; s < LWT_SUBJECTS; s++) {
             if (strcmp(lwt_subjects[s].name, with_modes[i]) == 0) {
                 /* cmocka hands initial_state to the test as *state */
-                tests[n++] = (struct CMUnitTest){.name = with_modes[i],
-                                                 .test_func = run,
-                                                 .initial_state = (void *)(uintptr_t)&lwt_subjects[s]};
+                void *subject = (void *)(uintptr_t)&lwt_subjects[s];
+                tests[n++] = (struct CMUnitTest){
+                    .name = with_modes[i], .test_func = run, .initial_state = subject};
             }
         }
     }

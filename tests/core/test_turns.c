@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Readings whole turns apart: counted within the drive's range, the one next to `near` is given.
- * Counts by hand: a shaft at 30 deg with a range of +-800 deg stands at -690, -330, 30, 390 and 750. */
+ * Counts by hand: a shaft at 30 deg with a range of +-800 deg stands at -690, -330, 30, 390 and
+ * 750. */
 #include "lwt.h"
 #include "lwt_build.h"
 

@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Memory that runs out while the demo line is loaded: decoding a document, building its model, its
- * scratch. At every single allocation the call says that memory is out, gives nothing out and leaves
- * nothing behind (the leak checker watches); with memory there again the same call succeeds. */
+/* Memory that runs out while the demo line is loaded: decoding a document, building its model,
+ * its scratch. At every single allocation the call says that memory is out, gives nothing out
+ * and leaves nothing behind (the leak checker watches); with memory there again the same call
+ * succeeds. */
 #include "demo_model.h"
 
 typedef struct loading {

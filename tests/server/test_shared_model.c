@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* One model asked by several threads at a time, each with a scratch of its own: every number of every
- * answer has the same bits as when one thread asks alone. Under the thread sanitizer this shows too
- * that questions write nothing into the model. */
+/* One model asked by several threads at a time, each with a scratch of its own: every number of
+ * every answer has the same bits as when one thread asks alone. Under the thread sanitizer this
+ * shows too that questions write nothing into the model. */
 #include <pthread.h>
 
 #include "demo_model.h"
@@ -133,7 +133,8 @@ static void *run(void *context)
     return NULL;
 }
 
-/* Readings about the reference posture; those of spare drives need not agree, which is an answer. */
+/* Readings about the reference posture; those of spare drives need not agree, which is an
+ * answer. */
 static void choose(double (*drive)[LW_MAX_DRIVES], const lw_model *model)
 {
     const lw_spec *spec = lw_model_spec(model);

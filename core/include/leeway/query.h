@@ -54,8 +54,9 @@ typedef struct lw_solution {
     bool mode_known;            /* false where a limb's sign could not be told (iterated limbs) */
     lw_config config;
     double drive[LW_MAX_DRIVES];/* drive coordinates, m or rad */
-    unsigned turns[LW_MAX_DRIVES]; /* readings within the drive's range that name this posture, whole
-                                * turns apart; 1 where there is one, 0 where it is out of range */
+    /* readings within the drive's range that name this posture, whole turns apart: 1 where there is
+     * one, 0 where it is out of range */
+    unsigned turns[LW_MAX_DRIVES];
     lw_frame tool;              /* pose of the tool asked for */
     /* by Newton-Kantorovich: one solution lies within the radius, scaled */
     bool certified;
@@ -92,7 +93,8 @@ typedef struct lw_inverse_answer {
     lw_basis basis;
     size_t n_solution;  /* after the filters mode and near */
     const lw_solution *solution;
-    size_t dimension;   /* freedoms the pose leaves open (a redundant arm): the list holds samples */
+    /* freedoms the pose leaves open (a redundant arm): the list holds samples */
+    size_t dimension;
     double off_by_position_m; /* OUT_OF_REACH by members that contradict: how far the nearest is */
     double off_by_angle_rad;
     size_t off_by_limb;       /* limb that cannot reach; SIZE_MAX if not one limb */
