@@ -5,6 +5,7 @@
 #define _POSIX_C_SOURCE 200809L
 
 #include "lwt.h"
+#include "lwt_all.h"
 #include "lwt_build.h"
 #include "lwt_kit.h"
 
@@ -130,16 +131,17 @@ static void compare_chain(const chain *c, uint64_t seed)
 {
     lwt_random rng;
     lwt_random_init(&rng, seed);
-    double(*q)[JOINTS_MAX] = calloc(CONFIGURATIONS, sizeof *q);
+    size_t n = (size_t)lwt_share(CONFIGURATIONS);
+    double(*q)[JOINTS_MAX] = calloc(n, sizeof *q);
     assert_non_null(q);
-    for (size_t k = 0; k < CONFIGURATIONS; k++) {
+    for (size_t k = 0; k < n; k++) {
         random_configuration(&rng, c, q[k]);
     }
     char path[] = "/tmp/leeway-chain-XXXXXX";
     int descriptor = mkstemp(path);
     assert_true(descriptor >= 0);
     (void)close(descriptor);
-    write_request(path, c, q, CONFIGURATIONS);
+    write_request(path, c, q, n);
     char command[1024];
     (void)snprintf(command, sizeof command, "'%s' '%s'", LWT_KDL_REFERENCE, path);
     FILE *pipe = popen(command, "r");
@@ -151,7 +153,7 @@ static void compare_chain(const chain *c, uint64_t seed)
     lwt_machine *m = machine_of(c, q_ref);
     assert_int_equal(m->report->mobility, c->n);
     size_t numbers = 12 + 6 * c->n;
-    for (size_t k = 0; k < CONFIGURATIONS; k++) {
+    for (size_t k = 0; k < n; k++) {
         double want[NUMBERS_MAX];
         for (size_t i = 0; i < numbers; i++) {
             assert_int_equal(fscanf(pipe, "%lf", &want[i]), 1);
