@@ -1,14 +1,14 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Newton-Kantorovich (Kantorovich 1948; Ortega & Rheinboldt, Iterative Solution of Nonlinear Equations,
- * 12.6): with b = |J^-1 F|, g = |J^-1| and a bound m on the second derivative near the state, h = b g m
- * <= 1/2 proves one solution within (1 - sqrt(1 - 2h)) / (g m) and no other within
- * (1 + sqrt(1 - 2h)) / (g m).
+/* Newton-Kantorovich (Kantorovich 1948; Ortega & Rheinboldt, Iterative Solution of Nonlinear
+ * Equations, 12.6): with b = |J^-1 F|, g = |J^-1| and a bound m on the second derivative near
+ * the state, h = b g m <= 1/2 proves one solution within (1 - sqrt(1 - 2h)) / (g m) and no other
+ * within (1 + sqrt(1 - 2h)) / (g m).
  *
- * The second derivative of every row by two tangents is bounded from the joints: by a turn and what
- * follows it a point moves along a circle, so |d2 p| <= its distance from the outer axis; directions
- * have unit length. Distances are taken at the state and doubled, which holds while the state moves by
- * less than `room`. Bounds are evaluated in doubles with a factor 1.01 for rounding, far above what
- * rounding can do at these sizes. */
+ * The second derivative of every row by two tangents is bounded from the joints: by a turn and
+ * what follows it a point moves along a circle, so |d2 p| <= its distance from the outer axis;
+ * directions have unit length. Distances are taken at the state and doubled, which holds while
+ * the state moves by less than `room`. Bounds are evaluated in doubles with a factor 1.01 for
+ * rounding, far above what rounding can do at these sizes. */
 #include "certify.h"
 
 #include "../math/linalg.h"
@@ -57,7 +57,8 @@ static double bend_of(const lwi_system *sys, const lwi_row *row, const lwi_eval 
         sum += width * v * v;
         first += width * v * v;
     }
-    double size = sqrt(sum * count); /* sqrt of sum over pairs of (distance from the outer axis)^2 */
+    /* sqrt of sum over pairs of (distance from the outer axis)^2 */
+    double size = sqrt(sum * count);
     if (row->kind == LWI_ROW_AXIS) {
         return 2.0 * count;
     }
@@ -112,7 +113,8 @@ void lwi_certify(lwi_certificate *out, const lwi_system *sys, const lwi_state *s
     }
     lwi_eval_nodes(ev, sys, state);
     (void)lwi_eval_rows(w->res, w->rows, n, sys, state, ev);
-    /* n independent rows: pivots of the transposed matrix; what they prove, the rest has checked. */
+    /* n independent rows: pivots of the transposed matrix; what they prove, the rest has
+     * checked. */
     for (size_t i = 0; i < m; i++) {
         for (size_t j = 0; j < n; j++) {
             w->qr[j * m + i] = w->rows[i * n + j];

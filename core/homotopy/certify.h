@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Certificate for a real solution of a closure system: by the theorem of Newton and Kantorovich there
- * is exactly one solution within `radius` of the state found. */
+/* Certificate for a real solution of a closure system: by the theorem of Newton and Kantorovich
+ * there is exactly one solution within `radius` of the state found. */
 #ifndef LWI_CERTIFY_H
 #define LWI_CERTIFY_H
 
@@ -23,8 +23,8 @@ typedef struct lwi_certify_work {
     size_t piv[48];
 } lwi_certify_work;
 
-/* The state must be on the system with its inputs set; ev is evaluated by the call. Systems of more than
- * 48 unknowns are not certified. */
+/* The state must be on the system with its inputs set; ev is evaluated by the call. Systems of
+ * more than 48 unknowns are not certified. */
 void lwi_certify(lwi_certificate *out, const lwi_system *sys, const lwi_state *state, lwi_eval *ev,
                  lwi_certify_work *w);
 
