@@ -272,6 +272,16 @@ static step look_up(asking *a, const lwd_question_head *head, lwd_reply *problem
     return STEP_REFUSED;
 }
 
+/* Questions that track a solution set take milliseconds: they leave the event thread. */
+static bool takes_long(const asking *a, const lwd_held *held, const lwd_question *q)
+{
+    const lw_report *report = lw_model_report(held->model);
+    if (a->kind == LWD_ASK_FORWARD && q->all) {
+        return report->forward_set.present;
+    }
+    return !report->explicit_inverse;
+}
+
 /* One question from its members to its answer in `json`, or a problem in `problem`. */
 static step answer_parts(asking *a, const lwd_question_parts *parts, lwd_json *json,
                          lwd_reply *problem)
@@ -291,6 +301,8 @@ static step answer_parts(asking *a, const lwd_question_parts *parts, lwd_json *j
     if (!lwd_question_read(parts, &head, &held->edge, q)) {
         fail_findings(a->request, problem, &a->lane->findings);
         result = STEP_REFUSED;
+    } else if (a->request->may_defer && takes_long(a, held, q)) {
+        result = STEP_DEFER;
     } else if (ask_core(a, json, held, &err) != LW_OK) {
         fail_core(a->request, problem, parts, &err);
         result = STEP_REFUSED;

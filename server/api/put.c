@@ -7,6 +7,7 @@
 
 #include "../log.h"
 #include "api.h"
+#include "sets.h"
 
 /* What one upload needs; on the heap, since findings and report are large. */
 typedef struct upload {
@@ -14,6 +15,7 @@ typedef struct upload {
     lwd_findings findings;
     lw_report report;
     lwd_document *document;
+    lw_model *model;
     lwd_buf report_text;
     char digest[LWD_DIGEST_SIZE];
     char expect[LWD_DIGEST_SIZE];
@@ -34,6 +36,7 @@ static upload *upload_new(const char *name)
 static void upload_free(upload *up)
 {
     lwd_buf_clear(&up->report_text);
+    lw_model_free(up->model);
     lwd_document_free(up->document);
     free(up);
 }
@@ -62,15 +65,17 @@ static bool decode(upload *up, const lwd_request *request, lwd_reply *reply)
     return false;
 }
 
-/* Builds the model to see whether it can be built. */
+/* Builds the model to see whether it can be built, and its solution sets. */
 static bool validate(upload *up, const lwd_request *request, lwd_reply *reply)
 {
-    lw_model *model = NULL;
     lw_err err = {.code = LW_OK};
     lw_code code =
-        lw_model_new(&model, &up->document->spec, lwd_seed_of(up->digest), &up->report, &err);
-    lw_model_free(model);
+        lw_model_new(&up->model, &up->document->spec, lwd_seed_of(up->digest), &up->report, &err);
     if (code == LW_OK) {
+        code = lwd_sets_make(up->model, up->digest, &err);
+    }
+    if (code == LW_OK) {
+        up->report = *lw_model_report(up->model);
         return true;
     }
     if (code == LW_E_MODEL) {
@@ -189,6 +194,9 @@ static void store(lwd_app *app, upload *up, const lwd_request *request, lwd_repl
     if (lwd_catalog_put_revision(app->catalog, &in, &out, &err) != LWD_CATALOG_OK) {
         lwd_fail_catalog(reply, request, &err);
         return;
+    }
+    if (out.created) {
+        lwd_sets_keep(app->catalog, up->model, up->name, out.number);
     }
     lwd_log_line line;
     lwd_log_begin(&line, LWD_LOG_INFO, "revision_put");

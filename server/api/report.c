@@ -153,6 +153,34 @@ static void put_limbs(lwd_json *json, const lw_report *report, const lw_spec *sp
     lwd_json_put_bool(json, "explicit_inverse", report->explicit_inverse);
 }
 
+/* Counts of the prepared solution sets and how they were proved. */
+static void put_set(lwd_json *json, const char *key, const lw_set_info *set, const lw_spec *spec)
+{
+    if (!set->present) {
+        lwd_json_put_null(json, key);
+        return;
+    }
+    lwd_json_put_object(json, key);
+    lwd_json_put_int(json, "solutions", (int64_t)set->solutions);
+    lwd_json_put_string(json, "basis", set->closed ? "trace" : "saturated");
+    lwd_json_put_int(json, "degree", (int64_t)set->degree);
+    lwd_json_put_int(json, "paths", (int64_t)set->paths);
+    lwd_json_put_array(json, "drives");
+    for (size_t i = 0; i < set->n_drive; i++) {
+        lwd_json_string(json, spec->drive[set->drive[i]].name);
+    }
+    lwd_json_end(json);
+    lwd_json_end(json);
+}
+
+static void put_sets(lwd_json *json, const lw_report *report, const lw_spec *spec)
+{
+    lwd_json_put_object(json, "solution_sets");
+    put_set(json, "forward", &report->forward_set, spec);
+    put_set(json, "inverse", &report->inverse_set, spec);
+    lwd_json_end(json);
+}
+
 static void put_checks(lwd_json *json, const lw_report *report, lwd_units units)
 {
     lwd_json_put_object(json, "checks");
@@ -184,6 +212,7 @@ bool lwd_report_write(lwd_buf *buf, const lwd_findings *findings, const lw_repor
     }
     put_mobility(&json, report, document->units);
     put_limbs(&json, report, &document->spec);
+    put_sets(&json, report, &document->spec);
     put_modes(&json, report, document);
     put_checks(&json, report, document->units);
     lwd_json_end(&json);

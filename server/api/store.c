@@ -2,6 +2,7 @@
 /* The store of loaded mechanisms. One lock guards the tables; loading (catalog, decoding, building
  * the model) happens outside it, so two threads may load the same revision at once and the second
  * throws its copy away. A count of catalog changes tells a loader that what it read is old. */
+#include "sets.h"
 #include "store.h"
 
 #include <pthread.h>
@@ -191,8 +192,9 @@ static lwd_store_result result_of(const lwd_catalog_error *err)
     }
 }
 
-/* Decodes a stored text and builds its model. */
-static lwd_store_result build(lwd_held *held, const lwd_catalog_revision *revision)
+/* Decodes a stored text, builds its model and opens its solution sets. */
+static lwd_store_result build(lwd_catalog *catalog, lwd_held *held,
+                              const lwd_catalog_revision *revision)
 {
     lwd_store_result result = LWD_STORE_MEMORY;
     char digest[LWD_DIGEST_SIZE];
@@ -211,6 +213,10 @@ static lwd_store_result build(lwd_held *held, const lwd_catalog_revision *revisi
     }
     lw_code code = lw_model_new(&held->model, &held->document->spec,
                                 lwd_seed_of(revision->info.digest), report, &err);
+    if (code == LW_OK) {
+        code = lwd_sets_open(catalog, held->model, held->name, revision->info.number,
+                             revision->info.digest, &err);
+    }
     if (code != LW_OK) {
         result = code == LW_E_MEMORY ? LWD_STORE_MEMORY : LWD_STORE_UNUSABLE;
         goto done;
@@ -243,7 +249,7 @@ static lwd_store_result load(lwd_store *store, const char *name, int64_t number,
     if (held != NULL) {
         atomic_init(&held->references, 1);
         (void)snprintf(held->name, sizeof held->name, "%s", name);
-        result = build(held, &revision);
+        result = build(store->catalog, held, &revision);
     }
     lwd_catalog_revision_clear(&revision);
     if (result != LWD_STORE_OK) {

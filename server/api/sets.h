@@ -1,0 +1,30 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Solution sets of models: made when a document comes in, kept in the catalog with its revision, checked
+ * when they are loaded and made anew where they are missing or damaged. Seconds of work: never called
+ * on the event thread. */
+#ifndef LWD_API_SETS_H
+#define LWD_API_SETS_H
+
+#include <stdint.h>
+
+#include <leeway/model.h>
+
+#include "../catalog/catalog.h"
+
+/* Paths tracked at most while preparing one set: work is counted, so that the outcome is the same on
+ * every machine. Builds with sanitizers, ten times slower, are given fewer by the build. */
+#ifndef LWD_PREPARE_PATHS
+#define LWD_PREPARE_PATHS 6000
+#endif
+
+/* Makes the sets of a fresh model. LW_E_MEMORY at worst; a mechanism that is not served has none. */
+lw_code lwd_sets_make(lw_model *model, const char *digest, lw_err *err);
+
+/* Keeps them with a revision; a failure is logged, the sets can be made again. */
+void lwd_sets_keep(lwd_catalog *catalog, const lw_model *model, const char *name, int64_t number);
+
+/* For a fresh model of a stored revision: loads what is kept, or makes it and keeps it. */
+lw_code lwd_sets_open(lwd_catalog *catalog, lw_model *model, const char *name, int64_t number,
+                      const char *digest, lw_err *err);
+
+#endif
