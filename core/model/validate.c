@@ -44,10 +44,14 @@ static void check_mobility(lw_model *m)
                  r->mobility_counted, r->idle_spins, mobility);
     }
     if (r->assumes_exact_geometry) {
+        char dropped[32] = "below 1e-12"; /* rounding alone: its digits would say nothing */
+        if (r->rank_dropped >= 1e-12) {
+            (void)snprintf(dropped, sizeof dropped, "%.2g", r->rank_dropped);
+        }
         lwi_find(r, LW_NOTE, "assumes-exact-geometry", "/joints", NULL, NULL,
                  "Mobility %d holds for the geometry as drawn (parallel and meeting axes): least "
-                 "relative singular value kept %.2g, largest dropped %.2g.",
-                 mobility, r->rank_kept, r->rank_dropped);
+                 "relative singular value kept %.2g, largest dropped %s.",
+                 mobility, r->rank_kept, dropped);
     }
     if (r->idle_spins > 0) {
         lwi_find(r, LW_NOTE, "idle-spins", "/joints", NULL, NULL,
