@@ -71,6 +71,7 @@ void lwi_limb_solve(lwi_limb_result *out, const lw_model *model, const lwi_limb 
 {
     unsigned bits = branch ^ limb->home_bits;
     out->real = false;
+    out->open = false;
     out->miss_m = 0.0;
     switch (limb->kind) {
     case LW_LIMB_STRUT:
@@ -175,12 +176,25 @@ void lwi_entry_from_branch(signed char *sign, unsigned short *number, const lwi_
 bool lwi_branch_from_entry(unsigned *branch, const lwi_limb *limb, signed char sign,
                            unsigned short number)
 {
+    if (sign == 0) {
+        return false; /* on the border of two branches */
+    }
     if (limb->branches > 2) {
         *branch = number == 0 ? 0u : (unsigned)number - 1u;
         return number >= 1 && number <= limb->branches && odd(*branch) == (sign < 0);
     }
     *branch = sign < 0 ? 1u : 0u;
     return number == 0 && *branch < (limb->branches > 1 ? 2u : 1u);
+}
+
+bool lwi_mode_fits(const lw_mode *posture, const lw_mode *asked)
+{
+    bool fits = posture->count == asked->count;
+    for (size_t i = 0; i < posture->count && fits; i++) {
+        fits = posture->sign[i] == 0 || (posture->sign[i] == asked->sign[i] &&
+                                         posture->branch[i] == asked->branch[i]);
+    }
+    return fits;
 }
 
 void lwi_mode_of(lw_mode *mode, const lw_model *model, const lw_config *config)

@@ -44,6 +44,7 @@ typedef struct lwi_limb {
 /* What one branch of a limb came out as. */
 typedef struct lwi_limb_result {
     bool real;
+    bool open;           /* the limb can move with its ends at rest: one sample of many */
     double miss_m;       /* how much too short (+) or too long (-) the limb is when not real */
     lw_frame body[LWI_LIMB_BODIES]; /* displacements of the limb's bodies, in limb order */
 } lwi_limb_result;
@@ -65,6 +66,9 @@ unsigned lwi_limb_branch(double *value, const lw_model *model, const lwi_limb *l
                          const lw_config *config);
 /* Mode of a configuration. */
 void lwi_mode_of(lw_mode *mode, const lw_model *model, const lw_config *config);
+/* Whether a posture's mode belongs to the mode asked for: where a limb's sign is 0 it belongs to
+ * the modes on both sides, since touching zero is not yet a change. */
+bool lwi_mode_fits(const lw_mode *posture, const lw_mode *asked);
 /* Branch number named by a mode entry; false if the entry names no branch of this limb. */
 bool lwi_branch_from_entry(unsigned *branch, const lwi_limb *limb, signed char sign,
                            unsigned short number);

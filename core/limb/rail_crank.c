@@ -108,6 +108,12 @@ void lwi_crank_rod_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb
     /* |P(q) - C|^2 = length^2 with x cos q + y sin q = k */
     double k = (height * height + crank * crank + reach * reach - length * length) / (2.0 * crank);
     double cosine = k / reach;
+    if (reach < 1e-9 * length && fabs(k) < 1e-9 * length) {
+        out->real = true; /* the rod's far end on the crank's axis: every angle closes */
+        out->open = true;
+        place(out, m, limb, config, 0.0);
+        return;
+    }
     if (!(fabs(cosine) <= 1.0)) {
         if (fabs(cosine) < 1.0 + 1e-12) {
             cosine = cosine > 0.0 ? 1.0 : -1.0;

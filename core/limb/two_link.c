@@ -100,6 +100,7 @@ void lwi_two_link_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb 
         }
     }
     out->real = true;
+    out->open = sqrt(square) < 1e-9 * (p.r1 + p.r2); /* folded, ends on one axis */
     double elbow = bits & 1u ? acos(cosine) : -acos(cosine);
     double sum[2] = {p.r1 + p.r2 * cos(elbow), p.r2 * sin(elbow)};
     /* First link direction = direction of d less the angle between link and chord. */

@@ -97,7 +97,7 @@ static double angle_about(const double from[3], const double to[3], const double
 }
 
 /* Turns of the first three joints about the axes as written; false when out of reach. */
-static bool solve_position(double q[3], double *miss_m, const arm *a, unsigned bits,
+static bool solve_position(double q[3], lwi_limb_result *result, const arm *a, unsigned bits,
                            const double p[3])
 {
     double d[3];
@@ -113,7 +113,7 @@ static bool solve_position(double q[3], double *miss_m, const arm *a, unsigned b
     double out2 = px * px + py * py - side * side;
     if (out2 < 0.0) {
         if (out2 < -1e-18) {
-            *miss_m = hypot(px, py) - fabs(side);
+            result->miss_m = hypot(px, py) - fabs(side);
             return false;
         }
         out2 = 0.0;
@@ -133,7 +133,7 @@ static bool solve_position(double q[3], double *miss_m, const arm *a, unsigned b
     double cosine = (square - r1 * r1 - r2 * r2) / (2.0 * r1 * r2);
     if (!(fabs(cosine) <= 1.0)) {
         if (!(fabs(cosine) < 1.0 + 1e-12)) {
-            *miss_m = cosine > 0.0 ? sqrt(square) - (r1 + r2) : sqrt(square) - fabs(r1 - r2);
+            result->miss_m = cosine > 0.0 ? sqrt(square) - (r1 + r2) : sqrt(square) - fabs(r1 - r2);
             return false;
         }
         cosine = cosine > 0.0 ? 1.0 : -1.0;
@@ -142,11 +142,14 @@ static bool solve_position(double q[3], double *miss_m, const arm *a, unsigned b
     double sum[2] = {r1 + r2 * cos(elbow), r2 * sin(elbow)};
     q[1] = angle2(l1, t) - atan2(sum[1], sum[0]);
     /* Axis three may be written opposite to axis two. */
+    /* Wrist on axis one, or upper arm and forearm folded onto one another: a turn is open. */
+    result->open = hypot(px, py) < 1e-9 * (r1 + r2) || sqrt(square) < 1e-9 * (r1 + r2);
     q[2] = (elbow - angle2(l1, l2)) * (lwi_dot(a->u[1], a->u[2]) > 0.0 ? 1.0 : -1.0);
     return true;
 }
 
-static bool solve_wrist(double q[3], const arm *a, unsigned bits, const double rot[9])
+static bool solve_wrist(double q[3], bool *open, const arm *a, unsigned bits,
+                        const double rot[9])
 {
     const double *u4 = a->u[3];
     const double *u5 = a->u[4];
@@ -177,6 +180,7 @@ static bool solve_wrist(double q[3], const arm *a, unsigned bits, const double r
     if (lwi_norm(across) < 1e-9) {
         /* Axes four and six in line: only their sum is determined; four stays where it is drawn. */
         double rest[9];
+        *open = true;
         q[0] = 0.0;
         lwi_rot_mul_at(rest, r5, rot);
         q[2] = lwi_rot_angle_about(rest, u6);
@@ -218,7 +222,7 @@ void lwi_wrist_arm_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb
     const lw_frame *base = &config->body[limb->anchor[0]];
     lwi_frame_between(&rel, base, &config->body[limb->anchor[1]]);
     lwi_frame_apply(p, &rel, a.wrist);
-    if (!solve_position(q, &out->miss_m, &a, bits, p)) {
+    if (!solve_position(q, out, &a, bits, p)) {
         return;
     }
     const lw_frame *from = base;
@@ -228,7 +232,7 @@ void lwi_wrist_arm_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb
     }
     double rest[9];
     lwi_rot_mul_at(rest, x[2].rot, config->body[limb->anchor[1]].rot);
-    if (!solve_wrist(q + 3, &a, bits, rest)) {
+    if (!solve_wrist(q + 3, &out->open, &a, bits, rest)) {
         return;
     }
     for (size_t k = 3; k < 5; k++) {

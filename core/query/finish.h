@@ -25,6 +25,9 @@ lw_code lwi_pose_complete(lwi_pose_known *out, const lw_model *model, const lw_s
 lw_code lwi_pose_goals(lwi_goal *goal, size_t *n_goal, const lw_model *model,
                        const lw_spec_tool *tool, const lw_pose_ask *pose, lw_err *err);
 
+/* Puts `member` before the place of a failure that lies inside that member of the question. */
+void lwi_err_under(lw_err *err, const char *member);
+
 /* The configuration `near` names, or home. Fills slot LWI_SLOT_START and returns its config; NULL
  * with *outcome and *reason where near itself has no posture. Where near is a bare pose, `readings`
  * (may be NULL) pick among its working modes. */

@@ -158,8 +158,10 @@ static void add_combination(inverse_run *run, const unsigned *branch, const lw_c
     }
     lw_solution *sol = &run->work->solution[run->n];
     lwi_config_copy(&sol->config, m, known);
+    size_t open = 0;
     for (size_t i = 0; i < m->n_limb; i++) {
         const lwi_limb_result *r = &run->work->limb_result[i * LWI_MAX_BRANCHES + branch[i]];
+        open += r->open;
         for (size_t k = 0; k < m->limb[i].n_body; k++) {
             sol->config.body[m->limb[i].body[k]] = r->body[k];
         }
@@ -169,6 +171,7 @@ static void add_combination(inverse_run *run, const unsigned *branch, const lw_c
     if (closes(sol, m, run->work)) {
         lwi_solution_finish(sol, m, run->tool);
         run->n++;
+        run->a->dimension = open > run->a->dimension ? open : run->a->dimension;
     }
 }
 
@@ -189,9 +192,13 @@ static void run_explicit(inverse_run *run, const lwi_pose_known *pose)
             lwi_limb_result *r = &run->work->limb_result[i * LWI_MAX_BRANCHES + b];
             lwi_limb_solve(r, m, &m->limb[i], b, known);
             real[i] += r->real;
-            miss = r->real ? miss : fabs(r->miss_m) > fabs(miss) ? r->miss_m : miss;
+            /* The branch that comes nearest says how far the limb is off; 0 is not known. */
+            if (!r->real && r->miss_m != 0.0 && (miss == 0.0 || fabs(r->miss_m) < fabs(miss))) {
+                miss = r->miss_m;
+            }
         }
-        if (real[i] == 0 && a->off_by_limb == SIZE_MAX) {
+        if (real[i] == 0 &&
+            (a->off_by_limb == SIZE_MAX || fabs(miss) > fabs(a->off_by_limb_m))) {
             a->off_by_limb = i;
             a->off_by_limb_m = miss;
         }
@@ -336,7 +343,7 @@ static void judge_list(inverse_run *run)
     for (size_t i = 0; i < run->n; i++) {
         lw_solution *sol = &work->solution[i];
         a->found.within_limits += sol->within_limits;
-        bool match = !run->ask->has_mode || lw_mode_same(&sol->mode, &run->ask->mode);
+        bool match = !run->ask->has_mode || lwi_mode_fits(&sol->mode, &run->ask->mode);
         if (!match) {
             other_within = other_within || sol->within_limits;
             continue;
@@ -429,6 +436,7 @@ static void run_completed(inverse_run *run, const lwi_pose_known *pose)
     const lw_model *m = run->m;
     lw_inverse_answer *a = run->a;
     size_t n_goal;
+    bool cut = false;
     a->off_by_position_m = pose->off_by_position_m;
     a->off_by_angle_rad = pose->off_by_angle_rad;
     if (contradicts(m, pose)) {
@@ -442,6 +450,7 @@ static void run_completed(inverse_run *run, const lwi_pose_known *pose)
         a->complete = true;
         a->basis = LW_BASIS_EXPLICIT;
         run_explicit(run, pose);
+        cut = !a->complete;
         if (!a->complete && run->ask->has_mode) {
             run->n = 0; /* the list is cut: the mode asked for is solved by itself */
             (void)run_one_mode(run, pose, &run->ask->mode);
@@ -454,9 +463,18 @@ static void run_completed(inverse_run *run, const lwi_pose_known *pose)
             run_local(run, run->work->goal2, n_goal);
         }
     }
+    const bool open = a->basis == LW_BASIS_EXPLICIT && a->dimension > 0;
+    if (open) {
+        a->complete = false; /* a limb is free to move: what is listed are samples */
+        a->found.complex_count = -1;
+    }
     judge_list(run);
-    if (a->basis == LW_BASIS_EXPLICIT && !a->complete) {
-        a->found.real = a->found.within_limits = -1; /* the list was cut */
+    if (cut || open) {
+        a->found.real = a->found.within_limits = -1; /* not all are listed */
+    }
+    if (open && a->n_solution > 0 && a->outcome == LW_OUTCOME_LIMIT) {
+        a->outcome = LW_OUTCOME_UNDECIDED;
+        a->reason = "the samples found are beyond a limit, but the pose leaves a freedom open";
     }
 }
 
@@ -513,7 +531,7 @@ lw_code lw_inverse(const lw_inverse_answer **out, const lw_model *m, const lw_in
 }
 
 /* The pose in one mode, explicit mechanisms only: the fast path of reach. */
-bool lwi_inverse_one(lw_solution **sol, const lw_model *m, const lw_spec_tool *tool,
+bool lwi_inverse_one(lw_solution **sol, bool *open, const lw_model *m, const lw_spec_tool *tool,
                      const lwi_pose_known *pose, const lw_mode *mode, const lw_config *hint,
                      lw_work *work)
 {
@@ -522,6 +540,7 @@ bool lwi_inverse_one(lw_solution **sol, const lw_model *m, const lw_spec_tool *t
     if (!m->explicit_inverse || !run_one_mode(&run, pose, mode)) {
         return false;
     }
+    *open = unused.dimension > 0;
     *sol = &work->solution[0];
     return true;
 }

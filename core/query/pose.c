@@ -124,12 +124,13 @@ static lw_code take_rotation(lwi_pose_known *out, const lw_model *m, const lw_sp
         lwi_rot_log(v, rest);
         out->off_by_angle_rad = lwi_norm(v);
     } else if (pose->orient == LW_ORIENT_ZYX) {
+        const double whole = 6.283185307179586476925;
         double have[9];
         double zyx[3];
         lwi_rot_mul(have, out->body.rot, tool->frame.rot);
         lw_zyx_from_rot(zyx, have);
         for (int i = 0; i < 3; i++) {
-            double d = pose->has_zyx[i] ? fabs(sin(0.5 * (pose->zyx_rad[i] - zyx[i]))) * 2.0 : 0.0;
+            double d = pose->has_zyx[i] ? fabs(remainder(pose->zyx_rad[i] - zyx[i], whole)) : 0.0;
             out->off_by_angle_rad = fmax(out->off_by_angle_rad, d);
         }
     } else if (pose->orient == LW_ORIENT_DIRECTION) {

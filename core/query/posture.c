@@ -252,6 +252,15 @@ static const lw_solution *nearest_readings(const lw_model *m, const lw_posture_a
     return best;
 }
 
+void lwi_err_under(lw_err *err, const char *member)
+{
+    char inner[sizeof err->where];
+    if (err != NULL) {
+        memcpy(inner, err->where, sizeof inner);
+        (void)snprintf(err->where, sizeof err->where, "%s%.80s", member, inner);
+    }
+}
+
 const lw_config *lwi_near_config(const lw_model *m, const lw_posture_ask *near,
                                  const lw_posture_ask *readings, lw_work *work,
                                  lw_outcome *outcome, const char **reason, lw_code *rc, lw_err *err)
@@ -269,6 +278,7 @@ const lw_config *lwi_near_config(const lw_model *m, const lw_posture_ask *near,
         found = *rc == LW_OK ? answer->solution : NULL;
     }
     if (*rc != LW_OK) {
+        lwi_err_under(err, "/near");
         return NULL;
     }
     if (found == NULL) {

@@ -8,7 +8,7 @@
 
 #include <stdint.h>
 
-bool lwi_inverse_one(lw_solution **sol, const lw_model *m, const lw_spec_tool *tool,
+bool lwi_inverse_one(lw_solution **sol, bool *open, const lw_model *m, const lw_spec_tool *tool,
                      const lwi_pose_known *pose, const lw_mode *mode, const lw_config *hint,
                      lw_work *work);
 
@@ -33,9 +33,14 @@ static void judge_margins(lw_reach_answer *a, const lw_model *m, const lw_spec_t
         return;
     }
     double worst = 1e300;
+    bool unjudged = false;
     for (int i = 0; i < LW_MARGIN_COUNT; i++) {
         const lw_margin_value *v = &work->margin.margin[i];
-        if (!ask->margin_min.asked[i] || !v->asked) {
+        if (!ask->margin_min.asked[i]) {
+            continue;
+        }
+        if (!v->asked) {
+            unjudged = true;
             continue;
         }
         double least = ask->margin_min.value[i];
@@ -47,7 +52,11 @@ static void judge_margins(lw_reach_answer *a, const lw_model *m, const lw_spec_t
     }
     a->outcome = a->failed_margin >= 0 ? LW_OUTCOME_LOW_MARGIN : LW_OUTCOME_OK;
     a->reason = a->failed_margin >= 0 ? "reachable, but a margin is below its threshold" : NULL;
-    if (ask->from != NULL && a->outcome == LW_OUTCOME_OK) {
+    if (unjudged && a->outcome == LW_OUTCOME_OK) {
+        a->outcome = LW_OUTCOME_UNDECIDED;
+        a->reason = "a threshold names a margin that the document does not ask for (\"asked\": "
+                    "false): state the need in the document, or leave the threshold out";
+    } else if (ask->from != NULL && a->outcome == LW_OUTCOME_OK) {
         a->outcome = LW_OUTCOME_UNDECIDED;
         a->reason = "the posture is good, but the move to it is not proved: moves are not examined "
                     "by this version; ask without \"from\" for the posture alone";
@@ -61,6 +70,7 @@ static lw_code judge_from(lw_reach_answer *a, bool *stop, lw_mode *mode, const l
     *stop = false;
     lw_code rc = lw_posture(&p, m, ask->tool, ask->tool_written, ask->from, work, err);
     if (rc != LW_OK) {
+        lwi_err_under(err, "/from");
         return rc;
     }
     a->from = ask->from->kind == LW_BY_DRIVES ? &work->forward : NULL;
@@ -82,6 +92,7 @@ static bool fast_path(lw_reach_answer *a, const lw_model *m, const lw_spec_tool 
 {
     lwi_pose_known pose;
     lw_solution *sol;
+    bool open = false; /* a limb can move with the tool at rest: one posture of many */
     lw_err unused = {0};
     if (ask->any_mode || !m->explicit_inverse || !m->completion.usable ||
         m->fused[tool->body] != m->fused[m->spec->tool[0].body] ||
@@ -89,12 +100,12 @@ static bool fast_path(lw_reach_answer *a, const lw_model *m, const lw_spec_tool 
         pose.off_by_position_m > 0.0 || pose.off_by_angle_rad > 1e-12) {
         return false;
     }
-    if (!lwi_inverse_one(&sol, m, tool, &pose, &a->asked_mode, hint, work) ||
+    if (!lwi_inverse_one(&sol, &open, m, tool, &pose, &a->asked_mode, hint, work) ||
         !sol->within_limits) {
         return false;
     }
     a->found.complex_count = a->found.real = a->found.within_limits = -1;
-    a->complete = true;
+    a->complete = !open;
     a->basis = LW_BASIS_EXPLICIT;
     take_solution(a, m, sol, work);
     return true;
@@ -104,7 +115,7 @@ static void list_others(lw_reach_answer *a, const lw_inverse_answer *inv)
 {
     for (size_t i = 0; i < inv->n_solution && a->n_other < LW_MAX_MODES; i++) {
         const lw_solution *s = &inv->solution[i];
-        if (s->within_limits && !lw_mode_same(&s->mode, &a->asked_mode)) {
+        if (s->within_limits && !lwi_mode_fits(&s->mode, &a->asked_mode)) {
             a->other[a->n_other++] = s->mode;
         }
     }
@@ -114,7 +125,7 @@ static const lw_solution *in_mode(const lw_inverse_answer *inv, const lw_mode *m
 {
     for (size_t i = 0; i < inv->n_solution; i++) {
         const lw_solution *s = &inv->solution[i];
-        if ((mode == NULL || lw_mode_same(&s->mode, mode)) && (!within || s->within_limits)) {
+        if ((mode == NULL || lwi_mode_fits(&s->mode, mode)) && (!within || s->within_limits)) {
             return s;
         }
     }

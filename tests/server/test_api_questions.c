@@ -4,7 +4,10 @@
  * is, by asking the same thing in two ways. */
 #include "api_rig.h"
 
+#include <math.h>
+
 #define STAGE "/v1/mechanisms/label-stage/"
+#define PACKER "/v1/mechanisms/case-packer/"
 #define TURNER "/v1/mechanisms/lid-turner/"
 
 static int setup(void **state)
@@ -13,6 +16,7 @@ static int setup(void **state)
     rig_start(r);
     rig_demo(r, "label-stage");
     rig_demo(r, "lid-turner");
+    rig_demo(r, "case-packer");
     *state = r;
     return 0;
 }
@@ -443,6 +447,81 @@ static void forward_of_the_readings_found_is_the_pose_asked(void **state)
     assert_non_null(rig_at(r, "allowed/m4"));
 }
 
+/* Postures on the border of two modes, and what is free to move there. */
+static void a_border_belongs_to_both_modes_and_a_free_limb_has_no_list(void **state)
+{
+    /* Arm 1 stretched: pivot 350 (crank 150 and link 200) from the shoulder, 150 of it across. */
+    static const char *const border = "\"pose\":{\"x\":116.22776601683796,\"y\":0,\"rz\":0}";
+    static const char *const mode[] = {"++++", "-+++"};
+    rig *r = *state;
+    char body[200];
+    for (size_t i = 0; i < 2; i++) {
+        (void)snprintf(body, sizeof body, "{%s,\"mode\":\"%s\"}", border, mode[i]);
+        rig_wants(r, 200, rig_post(r, STAGE "inverse", body));
+        lwt_same(rig_number(r, "code"), 1.0);
+        assert_string_equal(rig_text(r, "solutions/0/mode"), "0+++");
+        assert_true(cJSON_IsTrue(rig_at(r, "complete")));
+    }
+    /* Axes four and six of the arm in line: only the sum of their turns is determined. */
+    rig_wants(r, 200, rig_post(r, PACKER "inverse",
+                               "{\"pose\":{\"x\":550,\"y\":0,\"z\":820,\"quaternion\":"
+                               "{\"w\":0,\"x\":0.7071067811865475,\"y\":0,"
+                               "\"z\":0.7071067811865475}}}"));
+    lwt_same(rig_number(r, "dimension"), 1.0);
+    assert_true(cJSON_IsFalse(rig_at(r, "complete")));
+    assert_true(cJSON_IsNull(rig_at(r, "found/real")));
+}
+
+static void says_how_far_off_a_pose_is(void **state)
+{
+    rig *r = *state;
+    rig_wants(r, 200, rig_post(r, STAGE "inverse",
+                               "{\"pose\":{\"x\":15,\"y\":-10,\"zyx\":{\"yaw\":6,\"roll\":30}}}"));
+    lwt_same(rig_number(r, "code"), 4.0);
+    lwt_near(rig_number(r, "off_by/angle"), 30.0, 1e-9);
+    /* Wrist at (2000, 0, 510), shoulder at (80, 0, 420), arms 360 and hypot(360, 40). */
+    rig_wants(r, 200, rig_post(r, PACKER "reach",
+                               "{\"pose\":{\"x\":2000,\"y\":0,\"z\":400,\"zyx\":"
+                               "{\"yaw\":0,\"pitch\":0,\"roll\":180}}}"));
+    lwt_same(rig_number(r, "code"), 4.0);
+    lwt_near(rig_number(r, "off_by/limb_by"), hypot(1920, 90) - 360.0 - hypot(360, 40), 1e-6);
+}
+
+static void points_into_the_member_at_fault(void **state)
+{
+    rig *r = *state;
+    (void)rig_post(r, STAGE "reach",
+                   "{\"pose\":{\"x\":15,\"y\":3,\"rz\":0},\"from\":{\"drives\":{\"m1\":90}}}");
+    rig_problem(r, 422, 1072, "/from/drives");
+    (void)rig_post(r, STAGE "inverse",
+                   "{\"pose\":{\"x\":15,\"y\":3,\"rz\":0},\"near\":{\"joints\":{\"elbow-1\":0}}}");
+    rig_problem(r, 422, 1072, "/near/joints");
+}
+
+/* Last: it stores a second revision of the stage. */
+static void a_threshold_that_can_not_be_judged_is_no_yes(void **state)
+{
+    static const char *const ask = "{\"revision\":2,\"pose\":{\"x\":15,\"y\":-10,\"rz\":6}%s}";
+    rig *r = *state;
+    char body[200];
+    char *text = rig_file("deploy/demo/label-stage.json");
+    cJSON *document = cJSON_Parse(text);
+    free(text);
+    cJSON *needs = cJSON_GetObjectItem(document, "needs");
+    cJSON_DeleteItemFromObject(needs, "force");
+    cJSON_DeleteItemFromObject(needs, "moment");
+    text = cJSON_PrintUnformatted(document);
+    cJSON_Delete(document);
+    rig_wants(r, 201, rig_send(r, LWD_PUT, "/v1/mechanisms/label-stage", text));
+    free(text);
+    (void)snprintf(body, sizeof body, ask, "");
+    rig_wants(r, 200, rig_post(r, STAGE "reach", body));
+    lwt_same(rig_number(r, "code"), 1.0);
+    (void)snprintf(body, sizeof body, ask, ",\"margin_min\":{\"load\":1.5}");
+    rig_wants(r, 200, rig_post(r, STAGE "reach", body));
+    lwt_same(rig_number(r, "code"), 5.0);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -462,6 +541,10 @@ int main(void)
         cmocka_unit_test(slow_requests_leave_the_event_thread),
         cmocka_unit_test(the_matrices_fit_their_names_and_units),
         cmocka_unit_test(forward_of_the_readings_found_is_the_pose_asked),
+        cmocka_unit_test(a_border_belongs_to_both_modes_and_a_free_limb_has_no_list),
+        cmocka_unit_test(says_how_far_off_a_pose_is),
+        cmocka_unit_test(points_into_the_member_at_fault),
+        cmocka_unit_test(a_threshold_that_can_not_be_judged_is_no_yes),
     };
     return cmocka_run_group_tests(tests, setup, teardown);
 }
