@@ -1,7 +1,7 @@
 #!/usr/bin/env bash
 # SPDX-License-Identifier: GPL-3.0-or-later
 # The systemd units that are offered: they read without complaint, and the service's exposure, as
-# systemd-analyze rates it from 0 to 100, stays low. Run only where systemd-analyze is.
+# systemd-analyze rates it from 0 to 100, stays low. No systemd has to run for it.
 set -euo pipefail
 units=$(cd "$(dirname "${BASH_SOURCE[0]}")/../../deploy/systemd" && pwd)
 scratch=$(mktemp -d)
