@@ -6,9 +6,10 @@
 /* Generic rank of closure rows, relative to the largest singular value, over many configurations.
  * Axes measured to 1e-3 rad still count as parallel; exact drawings drop to 1e-16. */
 #define LWI_RANK_GENERIC 1e-3
-/* Rank at one posture, relative: below this a rate matrix is called singular. Double precision
- * leaves about 1e-13 on well-scaled matrices; tracked postures are good to 1e-10. */
-#define LWI_RANK_POSTURE 1e-8
+/* Rank at one posture, relative: below this a rate matrix is called singular. Doubles leave about
+ * 1e-13 on well-scaled matrices, but where two solutions meet, which is what a singular posture is,
+ * a posture itself is only known to the root of that: about 1e-8. */
+#define LWI_RANK_POSTURE 1e-6
 /* A posture counts as closed when every row is below this, relative to the characteristic length.
  * Also what hand-written joint values may be off and are snapped. */
 #define LWI_CLOSED 1e-4
@@ -18,8 +19,9 @@
 #define LWI_NEWTON_RESIDUAL 1e-9
 /* Slack on limits, m or rad, for values that sit on their limit by rounding. */
 #define LWI_LIMIT_SLACK 1e-9
-/* A limb's scaled determinant below this is "0" in a mode text. */
-#define LWI_SIGN_ZERO 1e-9
+/* A limb's scaled determinant below this is "0" in a mode text, and the limb singular: at a double
+ * root it carries about 1e-8 of rounding. */
+#define LWI_SIGN_ZERO 1e-7
 /* Largest scaled move of one tracking step. */
 #define LWI_TRACK_STEP 0.35
 

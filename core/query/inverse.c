@@ -16,6 +16,7 @@ typedef struct inverse_run {
     lw_work *work;
     const lw_config *hint;
     size_t n; /* solutions so far */
+    bool contradicted; /* by joints given with the pose that are no outputs */
 } inverse_run;
 
 /* Displacements of all bodies that are known without solving limbs. */
@@ -329,6 +330,78 @@ static void full_pose_goals(lwi_goal *goal, size_t *n_goal, const lw_model *m,
     *n_goal = n;
 }
 
+static bool contradicts(const lw_model *m, const lwi_pose_known *pose)
+{
+    double tolerance = 1e-5 * m->length_m;
+    double angle = 1e-5;
+    if (m->spec->needs.position_tolerance_m.asked) {
+        tolerance = fmax(tolerance, m->spec->needs.position_tolerance_m.value);
+    }
+    if (m->spec->needs.angle_tolerance_rad.asked) {
+        angle = fmax(angle, m->spec->needs.angle_tolerance_rad.value);
+    }
+    return pose->off_by_position_m > tolerance || pose->off_by_angle_rad > angle;
+}
+
+static bool is_output(const lw_model *m, size_t coord)
+{
+    for (size_t o = 0; o < m->spec->n_output; o++) {
+        if (m->spec->output[o].kind == LW_OUT_COORD && m->spec->output[o].coord == coord) {
+            return true;
+        }
+    }
+    return false;
+}
+
+/* Joint coordinates given with the pose that are no outputs: solutions that contradict them leave
+ * the list; where none is left, by how much the nearest is off is told. */
+static void compare_joints(inverse_run *run)
+{
+    const lw_pose_ask *pose = &run->ask->pose;
+    lw_inverse_answer *a = run->a;
+    size_t kept = 0;
+    double least = 1e300;
+    bool any = false;
+    for (size_t i = 0; i < pose->n_joint; i++) {
+        any = any || !is_output(run->m, pose->joint_coord[i]);
+    }
+    for (size_t s = 0; any && s < run->n; s++) {
+        lw_solution *sol = &run->work->solution[s];
+        double position = 0.0;
+        double angle = 0.0;
+        for (size_t i = 0; i < pose->n_joint; i++) {
+            size_t coord = pose->joint_coord[i];
+            double d = fabs(sol->config.coord[coord] - pose->joint_value[i]);
+            if (is_output(run->m, coord)) {
+                continue;
+            }
+            if (lw_spec_coord_turning(run->m->spec, coord)) {
+                angle = fmax(angle, d);
+            } else {
+                position = fmax(position, d);
+            }
+        }
+        lwi_pose_known off = {.off_by_position_m = position, .off_by_angle_rad = angle};
+        double size = fmax(position / run->m->length_m, angle);
+        if (size < least) {
+            least = size;
+            a->off_by_position_m = position;
+            a->off_by_angle_rad = angle;
+        }
+        if (!contradicts(run->m, &off)) {
+            lw_solution t = run->work->solution[kept]; /* swap: storage stays owned once */
+            run->work->solution[kept++] = *sol;
+            *sol = t;
+        }
+    }
+    if (any && run->n > 0 && kept == 0) {
+        run->contradicted = true;
+    } else if (any) {
+        a->off_by_position_m = a->off_by_angle_rad = 0.0;
+    }
+    run->n = any ? kept : run->n;
+}
+
 /* Outcome over the solutions as filtered; counts are of all of them. */
 static void judge_list(inverse_run *run)
 {
@@ -338,6 +411,7 @@ static void judge_list(inverse_run *run)
     size_t best = SIZE_MAX;
     double best_distance = 1e300;
     bool other_within = false;
+    compare_joints(run);
     a->found.real = (int)run->n;
     a->found.within_limits = 0;
     for (size_t i = 0; i < run->n; i++) {
@@ -386,6 +460,9 @@ static void judge_list(inverse_run *run)
         a->outcome = other_within ? LW_OUTCOME_OTHER_MODE : LW_OUTCOME_LIMIT;
         a->reason = other_within ? "reachable, but not in the mode asked for"
                                  : "not in the mode asked for, and other modes are beyond a limit";
+    } else if (run->contradicted) {
+        a->outcome = LW_OUTCOME_OUT_OF_REACH;
+        a->reason = "a joint given with the pose stands elsewhere at that pose";
     } else if (a->complete) {
         a->outcome = LW_OUTCOME_OUT_OF_REACH;
         a->reason = "no posture takes the tool there";
@@ -394,19 +471,6 @@ static void judge_list(inverse_run *run)
         a->reason = "no solution was found from the starts tried; that is no proof that there is "
                     "none";
     }
-}
-
-static bool contradicts(const lw_model *m, const lwi_pose_known *pose)
-{
-    double tolerance = 1e-5 * m->length_m;
-    double angle = 1e-5;
-    if (m->spec->needs.position_tolerance_m.asked) {
-        tolerance = fmax(tolerance, m->spec->needs.position_tolerance_m.value);
-    }
-    if (m->spec->needs.angle_tolerance_rad.asked) {
-        angle = fmax(angle, m->spec->needs.angle_tolerance_rad.value);
-    }
-    return pose->off_by_position_m > tolerance || pose->off_by_angle_rad > angle;
 }
 
 /* All solutions from the prepared set. */

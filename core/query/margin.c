@@ -262,7 +262,7 @@ void lwi_margin_at(lw_margin_answer *out, const lw_model *m, const lw_spec_tool 
     out->n_limb = m->n_limb;
     for (size_t i = 0; i < m->n_limb; i++) {
         (void)lwi_limb_branch(&out->limb_value[i], m, &m->limb[i], &sol->config);
-        out->limb_singular[i] = !(fabs(out->limb_value[i]) > 1e-7);
+        out->limb_singular[i] = !(fabs(out->limb_value[i]) > LWI_SIGN_ZERO);
     }
     lw_margin_value *hold = &out->margin[LW_MARGIN_HOLD];
     hold->asked = true;

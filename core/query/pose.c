@@ -25,17 +25,7 @@ static lw_code take_joints(lwi_pose_known *out, const lw_model *m, const lw_pose
 {
     const lw_spec *spec = m->spec;
     char where[96];
-    for (size_t i = 0; i < pose->n_joint; i++) {
-        bool output = false;
-        for (size_t o = 0; o < spec->n_output; o++) {
-            output = output || (spec->output[o].kind == LW_OUT_COORD &&
-                                spec->output[o].coord == pose->joint_coord[i]);
-        }
-        if (!output) {
-            return LW_FAIL(err, LW_E_ARGUMENT, "/pose/joints",
-                           "a joint coordinate in the pose is no output of this mechanism");
-        }
-    }
+    /* Joints that are no outputs are compared with the solutions found. */
     for (size_t o = 0; o < spec->n_output; o++) {
         bool found = false;
         if (spec->output[o].kind != LW_OUT_COORD) {

@@ -86,6 +86,15 @@ static lw_code judge_from(lw_reach_answer *a, bool *stop, lw_mode *mode, const l
     return LW_OK;
 }
 
+static size_t outputs_of_joints(const lw_model *m)
+{
+    size_t n = 0;
+    for (size_t o = 0; o < m->spec->n_output; o++) {
+        n += m->spec->output[o].kind == LW_OUT_COORD;
+    }
+    return n;
+}
+
 /* Explicit mechanisms: one branch per limb, no list. True when that settles the question. */
 static bool fast_path(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
                       const lw_reach_ask *ask, const lw_config *hint, lw_work *work)
@@ -94,7 +103,8 @@ static bool fast_path(lw_reach_answer *a, const lw_model *m, const lw_spec_tool 
     lw_solution *sol;
     bool open = false; /* a limb can move with the tool at rest: one posture of many */
     lw_err unused = {0};
-    if (ask->any_mode || !m->explicit_inverse || !m->completion.usable ||
+    if (ask->any_mode || ask->pose.n_joint > outputs_of_joints(m) || !m->explicit_inverse ||
+        !m->completion.usable ||
         m->fused[tool->body] != m->fused[m->spec->tool[0].body] ||
         lwi_pose_complete(&pose, m, tool, &ask->pose, &unused) != LW_OK ||
         pose.off_by_position_m > 0.0 || pose.off_by_angle_rad > 1e-12) {
@@ -121,15 +131,23 @@ static void list_others(lw_reach_answer *a, const lw_inverse_answer *inv)
     }
 }
 
-static const lw_solution *in_mode(const lw_inverse_answer *inv, const lw_mode *mode, bool within)
+/* Of the solutions in a mode (NULL: any), the one nearest to the configuration asked from. */
+static const lw_solution *in_mode(const lw_model *m, const lw_inverse_answer *inv,
+                                  const lw_mode *mode, bool within, const lw_config *from)
 {
+    const lw_solution *best = NULL;
+    double least = 1e300;
     for (size_t i = 0; i < inv->n_solution; i++) {
         const lw_solution *s = &inv->solution[i];
         if ((mode == NULL || lwi_mode_fits(&s->mode, mode)) && (!within || s->within_limits)) {
-            return s;
+            double d = from != NULL ? lwi_config_distance(m, &s->config, from) : (double)i;
+            if (d < least) {
+                least = d;
+                best = s;
+            }
         }
     }
-    return NULL;
+    return best;
 }
 
 static lw_code full_path(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
@@ -155,14 +173,15 @@ static lw_code full_path(lw_reach_answer *a, const lw_model *m, const lw_spec_to
         return LW_OK;
     }
     const lw_mode *wanted = ask->any_mode ? NULL : &a->asked_mode;
-    const lw_solution *good = in_mode(inv, wanted, true);
+    const lw_config *from = ask->from != NULL ? &lwi_slot(work, LWI_SLOT_START)->config : NULL;
+    const lw_solution *good = in_mode(m, inv, wanted, true, from);
     if (good != NULL) {
         take_solution(a, m, good, work);
         judge_margins(a, m, tool, ask, work);
         return LW_OK;
     }
     list_others(a, inv);
-    const lw_solution *beyond = in_mode(inv, wanted, false);
+    const lw_solution *beyond = in_mode(m, inv, wanted, false, from);
     if (a->n_other > 0) {
         a->outcome = LW_OUTCOME_OTHER_MODE;
         a->reason = beyond != NULL ? "the mode asked for is beyond a limit, another is not"
