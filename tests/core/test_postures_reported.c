@@ -33,7 +33,8 @@ static void joints_that_are_no_outputs_are_compared(void **state)
     int agreed = 0;
     for (int k = 0; k < 3; k++) {
         static const double part_m[3] = {0.008, -0.008, 0.010};
-        const double coord[1] = {2.0 * LWT_PI};
+        double coord[LW_MAX_COORDS] = {0}; /* by coordinate number */
+        coord[turn] = 2.0 * LWT_PI;
         lw_frame tool = lwt_frame_zyx((const double[3]){0.01, 0.0, -0.2}, 0, 0, 0);
         lwt_pose_of(m, &tool, coord, &ask.pose);
         assert_int_equal(ask.pose.joint_coord[0], turn);
