@@ -197,6 +197,26 @@ bool lwi_mode_fits(const lw_mode *posture, const lw_mode *asked)
     return fits;
 }
 
+lw_code lwi_mode_check(const lw_model *model, const lw_mode *mode, lw_err *err)
+{
+    if (mode->count != model->n_limb) {
+        return LW_FAIL(err, LW_E_ARGUMENT, "/mode",
+                       "the mode needs %zu entries, one per limb, and has %zu", model->n_limb,
+                       mode->count);
+    }
+    for (size_t i = 0; i < mode->count; i++) {
+        unsigned branch;
+        if (mode->sign[i] != 0 &&
+            !lwi_branch_from_entry(&branch, &model->limb[i], mode->sign[i], mode->branch[i])) {
+            return LW_FAIL(err, LW_E_ARGUMENT, "/mode",
+                           "entry %zu of the mode names no branch of limb \"%s\"; the list of modes "
+                           "shows those there are",
+                           i + 1, model->report.limb[i].name);
+        }
+    }
+    return LW_OK;
+}
+
 void lwi_mode_of(lw_mode *mode, const lw_model *model, const lw_config *config)
 {
     mode->count = 0;

@@ -72,6 +72,8 @@ bool lwi_mode_fits(const lw_mode *posture, const lw_mode *asked);
 /* Branch number named by a mode entry; false if the entry names no branch of this limb. */
 bool lwi_branch_from_entry(unsigned *branch, const lwi_limb *limb, signed char sign,
                            unsigned short number);
+/* Refuses a mode whose entries are not those of this model's limbs: how many, and which classes. */
+lw_code lwi_mode_check(const lw_model *model, const lw_mode *mode, lw_err *err);
 void lwi_entry_from_branch(signed char *sign, unsigned short *number, const lwi_limb *limb,
                            unsigned branch);
 

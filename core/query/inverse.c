@@ -552,9 +552,8 @@ lw_code lw_inverse(const lw_inverse_answer **out, const lw_model *m, const lw_in
     if (tool == NULL) {
         return LW_E_ARGUMENT;
     }
-    if (ask->has_mode && ask->mode.count != m->n_limb) {
-        return LW_FAIL(err, LW_E_ARGUMENT, "/mode", "the mode needs %zu entries, one per limb",
-                       m->n_limb);
+    if (ask->has_mode && lwi_mode_check(m, &ask->mode, err) != LW_OK) {
+        return LW_E_ARGUMENT;
     }
     /* `near` may itself be an inverse question and use the answer's storage: it comes first. */
     lw_outcome outcome = LW_OUTCOME_NONE;

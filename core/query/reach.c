@@ -211,9 +211,8 @@ lw_code lw_reach(const lw_reach_answer **out, const lw_model *m, const lw_reach_
     if (tool == NULL) {
         return LW_E_ARGUMENT;
     }
-    if (ask->has_mode && ask->mode.count != m->n_limb) {
-        return LW_FAIL(err, LW_E_ARGUMENT, "/mode", "the mode needs %zu entries, one per limb",
-                       m->n_limb);
+    if (ask->has_mode && lwi_mode_check(m, &ask->mode, err) != LW_OK) {
+        return LW_E_ARGUMENT;
     }
     const lw_config *hint = &m->home;
     if (ask->from != NULL && ask->from->kind != LW_BY_NOTHING) {
