@@ -18,7 +18,8 @@
 #define LWD_PREPARE_PATHS 12000
 #endif
 
-/* Makes the sets of a fresh model. LW_E_MEMORY at worst; a mechanism that is not served has none. */
+/* Makes the sets of a fresh model. LW_E_MEMORY at worst; a mechanism that is not served has
+ * none. */
 lw_code lwd_sets_make(lw_model *model, const char *digest, lw_err *err);
 
 /* Keeps them with a revision; a failure is logged, the sets can be made again. */
