@@ -26,21 +26,10 @@ typedef struct lwi_fibre_limits {
     size_t solutions;    /* most solutions kept */
 } lwi_fibre_limits;
 
-/* seed_state: a complex point on the system with its own inputs in seed_p0 (fibre form) — see
- * lwi_fibre_seed. NULL out->solution and LW_E_MODEL if the system is not served (screws, too large,
+/* NULL out->solution and LW_E_MODEL if the system is not served (screws, too large,
  * not square in rank). */
 lw_code lwi_fibre_find(lwi_fibre *out, const lwi_system *sys, size_t rank, unsigned long long seed,
                        const lwi_fibre_limits *limits, lw_err *err);
 void lwi_fibre_clear(lwi_fibre *fibre);
-
-/* All solutions at a target: tracks every member; calls `each` with the end point. Ends that are
- * infinite or lost are counted. */
-typedef struct lwi_fibre_count {
-    size_t good, infinite, singular, lost;
-} lwi_fibre_count;
-typedef void (*lwi_fibre_each)(void *context, const lwi_hpoint *end, size_t index);
-void lwi_fibre_solve(lwi_fibre_count *count, const lwi_fibre *fibre, const lwi_cx *target,
-                     lwi_fibre_each each, void *context, lwi_homotopy *h, lwi_track_work *w,
-                     lwi_hpoint *ends);
 
 #endif

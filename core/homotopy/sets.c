@@ -245,7 +245,22 @@ void lwi_sets_report(lw_model *m)
 typedef struct set_head {
     char magic[8];
     unsigned long long kind, n_par, pack, n_solution, closed, degree, paths;
+    unsigned long long sum; /* of all other bytes of the set */
 } set_head;
+
+/* FNV-1a over the head without its sum, and the body: tells flipped bits, guards against no
+ * malice. */
+static unsigned long long sum_of(set_head head, const unsigned char *body, size_t size)
+{
+    unsigned long long sum = 0xcbf29ce484222325ULL;
+    unsigned char raw[sizeof head];
+    head.sum = 0;
+    memcpy(raw, &head, sizeof raw);
+    for (size_t i = 0; i < sizeof raw + size; i++) {
+        sum = (sum ^ (i < sizeof raw ? raw[i] : body[i - sizeof raw])) * 0x100000001b3ULL;
+    }
+    return sum;
+}
 
 static size_t set_size(const lwi_set *set)
 {
@@ -271,7 +286,7 @@ void lw_model_sets_save(void *out, const lw_model *m)
             continue;
         }
         const lwi_fibre *f = &set->fibre;
-        set_head head = {.magic = "LWSET01",
+        set_head head = {.magic = "LWSET02",
                          .kind = (unsigned)k,
                          .n_par = f->hom.n_par,
                          .pack = f->pack,
@@ -279,12 +294,14 @@ void lw_model_sets_save(void *out, const lw_model *m)
                          .closed = f->trace_closed,
                          .degree = f->degree,
                          .paths = f->paths};
+        unsigned char *body = to + sizeof head;
+        size_t params = f->hom.n_par * sizeof(lwi_cx);
+        size_t members = f->n_solution * f->pack * sizeof(lwi_cx);
+        memcpy(body, f->p, params);
+        memcpy(body + params, f->solution, members);
+        head.sum = sum_of(head, body, params + members);
         memcpy(to, &head, sizeof head);
-        to += sizeof head;
-        memcpy(to, f->p, f->hom.n_par * sizeof(lwi_cx));
-        to += f->hom.n_par * sizeof(lwi_cx);
-        memcpy(to, f->solution, f->n_solution * f->pack * sizeof(lwi_cx));
-        to += f->n_solution * f->pack * sizeof(lwi_cx);
+        to = body + params + members;
     }
 }
 
@@ -361,13 +378,15 @@ lw_code lw_model_sets_load(lw_model *m, unsigned long long seed, const void *dat
             break;
         }
         memcpy(&head, from, sizeof head);
-        bool sane = memcmp(head.magic, "LWSET01", 8) == 0 && head.kind < 2 &&
+        bool sane = memcmp(head.magic, "LWSET02", 8) == 0 && head.kind < 2 &&
                     head.n_par <= LWI_HOM_PARAMS && head.pack <= LWI_HOM_OBSERVE &&
                     head.n_solution <= LWI_HOM_POINTS;
         size_t need = sane ? sizeof head + (head.n_par + head.n_solution * head.pack) *
                                                sizeof(lwi_cx)
                            : 0;
-        if (!sane || need > size) {
+        sane = sane && need <= size &&
+               head.sum == sum_of(head, from + sizeof head, need - sizeof head);
+        if (!sane) {
             rc = LW_FAIL(err, LW_E_MODEL, "", "the kept solution set is damaged");
             break;
         }

@@ -467,7 +467,36 @@ double lwi_hpoint_distance(const lwi_hom *hom, const lwi_hpoint *a, const lwi_hp
 static double noise_at(const lwi_homotopy *h, const lwi_hpoint *at, lwi_track_work *w)
 {
     double r = extent(h, at, w);
+    w->extent = r;
     return fmin(1e-12 + 1e-14 * r * r, 1e-5);
+}
+
+/* Where a path stood when four times as much of the way was left, and before that. */
+typedef struct growth {
+    double rest[2], extent[2];
+} growth;
+
+static void growth_note(growth *g, double rest, double size)
+{
+    if (rest <= 0.25 * g->rest[1]) {
+        g->rest[0] = g->rest[1];
+        g->extent[0] = g->extent[1];
+        g->rest[1] = rest;
+        g->extent[1] = size;
+    }
+}
+
+/* What a path that cannot go on ends in. Coordinates that grow by a power of the rest of the way
+ * are on their way to infinity; they would get there too slowly for doubles to follow. */
+static lwi_end stuck(const growth *g, double rest, double size)
+{
+    double power = rest > 0.0 && rest < g->rest[0]
+                       ? log(size / g->extent[0]) / log(g->rest[0] / rest)
+                       : 0.0;
+    if (size > 1e3 || (size > 30.0 && power > 0.15 && rest < 1e-2)) {
+        return LWI_END_INFINITE;
+    }
+    return rest < 1e-2 ? LWI_END_SINGULAR : LWI_END_LOST;
 }
 
 lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_track_work *w)
@@ -479,6 +508,7 @@ lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_tra
     lwi_hpoint next;
     set_weights(w, h, at);
     w->noise = noise_at(h, at, w);
+    growth g = {.rest = {1.0, 1.0}, .extent = {w->extent, w->extent}};
     for (int tries = 0; t < 1.0; tries++) {
         bool final = t + step >= 1.0 - 1e-14;
         if (final) {
@@ -501,16 +531,16 @@ lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_tra
             t = final ? 1.0 : t + step;
             set_weights(w, h, at);
             w->noise = noise_at(h, at, w);
+            growth_note(&g, 1.0 - t, w->extent);
         }
         /* Local error of order five in the step. */
         double grow = good ? 0.9 * pow(tol / fmax(first, 1e-14), 0.2) : 0.4;
         step *= fmin(fmax(grow, 0.25), 3.0);
         step = fmin(step, 0.5);
         if (step < 1e-10 || tries > 3000) {
-            double size = extent(h, at, w);
-            return size > 1e3 ? LWI_END_INFINITE : t > 1.0 - 1e-2 ? LWI_END_SINGULAR : LWI_END_LOST;
+            return stuck(&g, 1.0 - t, w->extent);
         }
-        if (good && tries % 16 == 15 && extent(h, at, w) > 1e7) {
+        if (good && w->extent > 1e7) {
             return LWI_END_INFINITE;
         }
     }

@@ -71,6 +71,7 @@ struct lwi_track_work {
     double weight[LWI_HOM_VARS + 1]; /* far positions count relative to their distance */
     unsigned long steps; /* work done, counted */
     double noise;
+    double extent; /* largest coordinate where the path stands */
 };
 
 /* False if the system has more unknowns or rows than served, or screws among its unknowns. */

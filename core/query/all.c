@@ -17,7 +17,7 @@ typedef struct taking {
     lw_work *work;
 } taking;
 
-/* Same posture: tool, rods and the places of all joints; idle spins and whole turns do not
+/* Same posture: tool, rods, the places and axes of all joints; idle spins and whole turns do not
  * count. */
 bool lwi_same_posture(const lw_model *m, const lw_config *a, const lw_config *b)
 {
@@ -28,6 +28,15 @@ bool lwi_same_posture(const lw_model *m, const lw_config *a, const lw_config *b)
     double q[3];
     for (size_t j = 0; j < spec->n_joint; j++) {
         const lw_spec_joint *joint = &spec->joint[j];
+        /* Joints whose axes meet keep their places when one of them flips; their axes do not. */
+        if (joint->type != LW_SPHERICAL && joint->type != LW_FIXED) {
+            lwi_rot_apply(p, a->body[joint->body[0]].rot, joint->axis);
+            lwi_rot_apply(q, b->body[joint->body[0]].rot, joint->axis);
+            lwi_sub(d, p, q);
+            if (!(lwi_norm(d) <= 1e-6)) {
+                return false;
+            }
+        }
         if (joint->type == LW_PRISMATIC || joint->type == LW_PLANAR || joint->type == LW_FIXED) {
             continue;
         }

@@ -303,13 +303,20 @@ static lw_code missing_readings(const lw_model *m, const lw_posture_ask *ask, lw
 }
 
 /* A serial chain whose joints are all driven has one posture for its readings: no equation at
- * all. */
+ * all. A driven rod is an equation: a body on slides that rods hold is no such chain. */
 static bool serial_chain(const lw_model *m)
 {
     const lwi_system *sys = m->whole;
     for (size_t k = 0; k < sys->n_element; k++) {
         if (sys->element[k].kind == LWI_BALL || sys->element[k].kind == LWI_FREE) {
             return false;
+        }
+    }
+    for (size_t d = 0; d < m->spec->n_drive; d++) {
+        for (size_t t = 0; t < m->spec->drive[d].n_term; t++) {
+            if (m->spec->drive[d].term[t].coord >= lw_spec_rod_coord(m->spec, 0)) {
+                return false;
+            }
         }
     }
     return sys->n_row + sys->n_row_dropped == 0 && m->spec->n_drive == m->mobility;
