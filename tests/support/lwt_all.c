@@ -83,6 +83,16 @@ bool lwt_same_posture(const lw_spec *spec, const lw_solution *a, const lw_soluti
     for (size_t j = 0; j < spec->n_joint; j++) {
         const lw_spec_joint *joint = &spec->joint[j];
         bool placed = joint->type != LW_PRISMATIC && joint->type != LW_PLANAR;
+        if (joint->type != LW_SPHERICAL && joint->type != LW_FIXED) {
+            double u[3];
+            double v[3];
+            lwt_frame_vector(u, &a->config.body[joint->body[0]], joint->axis);
+            lwt_frame_vector(v, &b->config.body[joint->body[0]], joint->axis);
+            if (!(fabs(u[0] - v[0]) <= tol) || !(fabs(u[1] - v[1]) <= tol) ||
+                !(fabs(u[2] - v[2]) <= tol)) {
+                return false;
+            }
+        }
         if (placed && (!same_point(&a->config, &b->config, joint->body[0], joint->at_m, tol) ||
                        !same_point(&a->config, &b->config, joint->body[1], joint->at_m, tol))) {
             return false;
@@ -115,6 +125,23 @@ void lwt_check_solutions(const lwt_machine *m, const lw_solution *solution, size
             }
         }
     }
+}
+
+void lwt_expect_closed(const lw_set_info *set, size_t solutions)
+{
+    assert_true(set->present);
+    assert_true(set->closed);
+    assert_int_equal(set->solutions, solutions);
+}
+
+void lwt_expect_all(const lwt_machine *m, const lw_forward_answer *a, int complex_count)
+{
+    assert_true(a->complete);
+    assert_int_equal(a->basis, LW_BASIS_TRACE);
+    assert_int_equal(a->found.not_converged, 0);
+    assert_int_equal(a->found.complex_count, complex_count);
+    assert_int_equal(a->found.real, (int)a->n_solution);
+    lwt_check_solutions(m, a->solution, a->n_solution);
 }
 
 size_t lwt_find_tool(const lw_solution *solution, size_t n, const lw_frame *tool, double tol_m,

@@ -26,6 +26,10 @@ void lwt_readings_of_lengths(double *drive, const lwt_machine *m, const double *
 bool lwt_same_posture(const lw_spec *spec, const lw_solution *a, const lw_solution *b, double tol);
 /* Fails the case unless each solution closes and no two are one. */
 void lwt_check_solutions(const lwt_machine *m, const lw_solution *solution, size_t n);
+/* A set with so many solutions that the trace test closed; a complete answer with so many finite
+ * complex solutions. */
+void lwt_expect_closed(const lw_set_info *set, size_t solutions);
+void lwt_expect_all(const lwt_machine *m, const lw_forward_answer *a, int complex_count);
 /* Index of the solution whose tool stands in `tool` within the tolerances, n if there is none. */
 size_t lwt_find_tool(const lw_solution *solution, size_t n, const lw_frame *tool, double tol_m,
                      double tol_rad);
