@@ -141,6 +141,15 @@ static bool write_port(const daemon_state *d, char *why, size_t why_size)
     return ok;
 }
 
+/* The signals are blocked: a request to stop waits until sigwait takes it. */
+static bool asked_to_stop(void)
+{
+    sigset_t waiting;
+
+    return sigpending(&waiting) == 0 &&
+           (sigismember(&waiting, SIGTERM) == 1 || sigismember(&waiting, SIGINT) == 1);
+}
+
 /* Starts everything; the exit status, 0 if all is well. */
 static int start(daemon_state *d, char *why, size_t why_size)
 {
@@ -184,6 +193,7 @@ static int start(daemon_state *d, char *why, size_t why_size)
     for (size_t i = 0; i < d->listeners.n; i++) {
         lwd_log(LWD_LOG_INFO, "listen", "%s", d->listeners.item[i].text);
     }
+    lwd_app_load(d->app, asked_to_stop);
     lwd_ready_set(true);
     if (config->port_file != NULL && !write_port(d, why, why_size)) {
         return EXIT_FAILURE;

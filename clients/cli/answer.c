@@ -223,6 +223,9 @@ static void show_solutions(lwc_text *out, const char *kind, const cJSON *solutio
     cJSON_ArrayForEach(solution, solutions)
     {
         show_limits(out, lwc_json_get(solution, "limits_broken"), ++no);
+        if (cJSON_IsTrue(lwc_json_get(solution, "contradicted"))) {
+            lwc_text_printf(out, "  %zu: a spare reading contradicts this posture\n", no);
+        }
     }
 }
 

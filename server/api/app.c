@@ -6,6 +6,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 
+#include "../log.h"
 #include "api.h"
 
 enum {
@@ -60,6 +61,12 @@ const lwd_route *lwd_app_routes(size_t *n)
 {
     *n = sizeof routes / sizeof routes[0];
     return routes;
+}
+
+void lwd_app_load(lwd_app *app, bool (*stop)(void))
+{
+    size_t n = lwd_store_load_answering(app->store, stop);
+    lwd_log(LWD_LOG_INFO, "models_loaded", "%zu published mechanisms are ready", n);
 }
 
 void lwd_app_stop(lwd_app *app)

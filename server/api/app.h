@@ -18,6 +18,10 @@ typedef struct lwd_app_options {
 /* NULL on failure, with one sentence for the operator in `why`. */
 lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_size);
 
+/* Loads the published mechanisms, before the service says that it is ready; questions are answered
+ * meanwhile. Ends early when `stop` says so. */
+void lwd_app_load(lwd_app *app, bool (*stop)(void));
+
 /* The routes; static, valid for ever. Handlers are called with the lwd_app as their context. */
 const lwd_route *lwd_app_routes(size_t *n);
 

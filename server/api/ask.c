@@ -272,14 +272,25 @@ static step look_up(asking *a, const lwd_question_head *head, lwd_reply *problem
     return STEP_REFUSED;
 }
 
-/* Questions that track a solution set take milliseconds: they leave the event thread. */
-static bool takes_long(const asking *a, const lwd_held *held, const lwd_question *q)
+static bool names_a_pose(const lw_posture_ask *posture)
 {
+    return posture != NULL && posture->kind == LW_BY_POSE;
+}
+
+/* Questions that track a solution set, or search from many starts, take milliseconds: they leave
+ * the event thread. */
+static bool takes_long(const asking *a, const lwd_held *held)
+{
+    const lwd_question *q = &a->lane->question;
     const lw_report *report = lw_model_report(held->model);
-    if (a->kind == LWD_ASK_FORWARD && q->all) {
-        return report->forward_set.present;
+    if (a->kind == LWD_ASK_FORWARD && q->all && report->forward_set.present) {
+        return true;
     }
-    return !report->explicit_inverse;
+    if (report->explicit_inverse) {
+        return false;
+    }
+    return a->kind == LWD_ASK_INVERSE || a->kind == LWD_ASK_REACH || names_a_pose(&q->posture)
+           || names_a_pose(q->posture.near);
 }
 
 /* One question from its members to its answer in `json`, or a problem in `problem`. */
@@ -301,7 +312,7 @@ static step answer_parts(asking *a, const lwd_question_parts *parts, lwd_json *j
     if (!lwd_question_read(parts, &head, &held->edge, q)) {
         fail_findings(a->request, problem, &a->lane->findings);
         result = STEP_REFUSED;
-    } else if (a->request->may_defer && takes_long(a, held, q)) {
+    } else if (a->request->may_defer && takes_long(a, held)) {
         result = STEP_DEFER;
     } else if (ask_core(a, json, held, &err) != LW_OK) {
         fail_core(a->request, problem, parts, &err);
@@ -504,6 +515,8 @@ static step answer_query(asking *a, lwd_reply *reply)
     if (!lwd_query_read(request->query, request->n_query, &head, &held->edge, a->kind, findings,
                         &a->lane->question)) {
         fail_findings(request, reply, findings);
+    } else if (request->may_defer && takes_long(a, held)) {
+        result = STEP_DEFER;
     } else if (ask_core(a, &json, held, &err) != LW_OK) {
         fail_core(request, reply, NULL, &err);
     } else if (a->plain && !reply->body.failed) {
@@ -514,7 +527,7 @@ static step answer_query(asking *a, lwd_reply *reply)
         reply->log_code = reply->status == 200 ? a->outcome : reply->log_code;
     }
     lwd_held_drop(held);
-    return STEP_ANSWERED;
+    return result;
 }
 
 static void get(lwd_app *app, lwd_asked kind, const lwd_request *request, lwd_reply *reply)

@@ -1,17 +1,14 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The list of a revision's modes: limbs and what + means, every mode with its register number, the
- * names the document gives. */
+ * names the document gives, a posture in it and how much of a sample of poses it holds. Written
+ * once for a loaded revision and kept with it. */
 #include <stdlib.h>
 #include <string.h>
 
 #include "api.h"
+#include "mode_sample.h"
 
-enum { MODES_MAX = 512 };
-
-typedef struct mode_row {
-    lw_mode mode;
-    unsigned number;
-} mode_row;
+typedef lwd_mode_row mode_row;
 
 static int by_number(const void *a, const void *b)
 {
@@ -61,7 +58,7 @@ static bool enumerate(const lw_model *model, mode_row *row, size_t *n)
         if (number == 0) {
             continue;
         }
-        if (*n >= MODES_MAX) {
+        if (*n >= LWD_MODES_MAX) {
             return false;
         }
         row[(*n)++] = (mode_row){.mode = mode, .number = number};
@@ -81,9 +78,26 @@ static const char *title_of(const lwd_held *held, const char *name)
     return NULL;
 }
 
-static void put_mode(lwd_json *json, const lwd_held *held, const lw_mode *mode)
+/* A posture of the mode, in the document's units; the first that the sample met. */
+static void put_example(lwd_json *json, const lwd_answer_head *head, const mode_row *row)
+{
+    const lwd_edge *edge = head->edge;
+    lwd_json_put_object(json, "example");
+    lwd_json_put_object(json, "drives");
+    for (size_t i = 0; i < edge->spec->n_drive; i++) {
+        lwd_json_put_number(json, edge->spec->drive[i].name,
+                            lwd_reading_out(edge, i, row->drive[i]));
+    }
+    lwd_json_end(json);
+    lwd_answer_pose(json, head, &row->tool, row->coord);
+    lwd_json_end(json);
+}
+
+static void put_mode(lwd_json *json, const lwd_answer_head *head, const lwd_held *held,
+                     const mode_row *row, const lwd_mode_sample *sample)
 {
     char text[LW_MODE_TEXT_SIZE];
+    const lw_mode *mode = &row->mode;
     const char *name = lwd_edge_mode_name(&held->edge, mode);
     const char *title = title_of(held, name);
     lw_mode_text(text, mode);
@@ -96,6 +110,24 @@ static void put_mode(lwd_json *json, const lwd_held *held, const lw_mode *mode)
     if (title != NULL) {
         lwd_json_put_string(json, "title", title);
     }
+    lwd_json_put_int(json, "held", (int64_t)row->held);
+    if (sample->reached > 0) {
+        lwd_json_put_number(json, "share", (double)row->held / (double)sample->reached);
+    } else {
+        lwd_json_put_null(json, "share");
+    }
+    if (row->held > 0) {
+        put_example(json, head, row);
+    }
+    lwd_json_end(json);
+}
+
+static void put_sample(lwd_json *json, const lwd_mode_sample *sample)
+{
+    lwd_json_put_object(json, "sample");
+    lwd_json_put_int(json, "poses", (int64_t)sample->poses);
+    lwd_json_put_int(json, "reached", (int64_t)sample->reached);
+    lwd_json_put_string(json, "how", lwd_mode_sample_how);
     lwd_json_end(json);
 }
 
@@ -120,44 +152,78 @@ static void put_limbs(lwd_json *json, const lwd_edge *edge)
 }
 
 /* Where there are too many to list, those that have a name. */
-static void put_named(lwd_json *json, const lwd_held *held)
+static size_t take_named(const lw_report *report, mode_row *row)
 {
-    const lw_report *report = held->edge.report;
     for (size_t i = 0; i < report->n_mode_name; i++) {
-        put_mode(json, held, &report->mode_name[i]);
+        row[i] = (mode_row){.mode = report->mode_name[i]};
     }
+    return report->n_mode_name;
 }
 
-static void write(const lwd_held *held, mode_row *row, const lwd_request *request,
-                  lwd_reply *reply)
+static void write(lwd_json *json, const lwd_held *held, mode_row *row, lw_work *work)
 {
     char text[LW_MODE_TEXT_SIZE];
     size_t n = 0;
-    lwd_json json;
+    lwd_mode_sample sample;
     const lw_report *report = held->edge.report;
+    lwd_question question = {.units = held->edge.units};
+    const lwd_answer_head head = {.edge = &held->edge, .question = &question};
     bool all = enumerate(held->model, row, &n);
-    lwd_reply_open(reply, &json, 200);
-    lwd_json_object(&json);
-    lwd_json_put_string(&json, "mechanism", held->name);
-    lwd_json_put_int(&json, "revision", held->number);
-    lwd_json_put_string(&json, "digest", held->edge.digest);
-    lw_mode_text(text, &report->home_mode);
-    lwd_json_put_string(&json, "default_mode", text);
-    lw_mode_text(text, &report->reference_mode);
-    lwd_json_put_string(&json, "reference_mode", text);
-    put_limbs(&json, &held->edge);
-    lwd_json_put_bool(&json, "all_listed", all);
-    lwd_json_put_array(&json, "modes");
-    if (all) {
-        for (size_t i = 0; i < n; i++) {
-            put_mode(&json, held, &row[i].mode);
-        }
-    } else {
-        put_named(&json, held);
+    if (!all) {
+        n = take_named(report, row);
     }
-    lwd_json_end(&json);
-    lwd_json_end(&json);
-    lwd_reply_close(reply, request, &json);
+    lwd_mode_sample_run(&sample, row, n, held, work);
+    lwd_json_object(json);
+    lwd_json_put_string(json, "mechanism", held->name);
+    lwd_json_put_int(json, "revision", held->number);
+    lwd_json_put_string(json, "digest", held->edge.digest);
+    lw_mode_text(text, &report->home_mode);
+    lwd_json_put_string(json, "default_mode", text);
+    lw_mode_text(text, &report->reference_mode);
+    lwd_json_put_string(json, "reference_mode", text);
+    put_limbs(json, &held->edge);
+    put_sample(json, &sample);
+    lwd_json_put_bool(json, "all_listed", all);
+    lwd_json_put_array(json, "modes");
+    for (size_t i = 0; i < n; i++) {
+        put_mode(json, &head, held, &row[i], &sample);
+    }
+    lwd_json_end(json);
+    lwd_json_end(json);
+}
+
+/* The text of the list, made at the first call for a loaded revision. Two that come at once both
+ * make it, the same to the last digit; one text is kept. NULL without memory. */
+static const lwd_buf *list_of(lwd_lane *lane, lwd_held *held)
+{
+    lwd_buf *made = atomic_load(&held->modes);
+    if (made != NULL) {
+        return made;
+    }
+    lw_work *work = lwd_lane_work_of(lane, held);
+    mode_row *row = calloc(LWD_MODES_MAX, sizeof *row);
+    made = calloc(1, sizeof *made);
+    if (work != NULL && row != NULL && made != NULL) {
+        lwd_json json;
+        lwd_buf *before = NULL;
+        lwd_buf_init(made, 0);
+        lwd_json_init(&json, made);
+        write(&json, held, row, work);
+        if (!lwd_json_done(&json)) {
+            lwd_buf_clear(made);
+        } else if (atomic_compare_exchange_strong(&held->modes, &before, made)) {
+            free(row);
+            return made;
+        } else {
+            lwd_buf_clear(made);
+            free(made);
+            free(row);
+            return before;
+        }
+    }
+    free(made);
+    free(row);
+    return NULL;
 }
 
 void lwd_get_modes(void *context, const lwd_request *request, lwd_reply *reply)
@@ -178,17 +244,21 @@ void lwd_get_modes(void *context, const lwd_request *request, lwd_reply *reply)
                  "revision takes the number of a revision.");
         return;
     }
+    if (request->lane >= app->n_lanes) {
+        lwd_fail(reply, request, LWD_PROBLEM_INTERNAL, NULL, NULL, NULL,
+                 "The service has too few lanes for its threads.");
+        return;
+    }
     lwd_store_result result = lwd_store_get(app->store, mechanism, revision, true, &held, &err);
     if (result != LWD_STORE_OK) {
         lwd_fail_store(reply, request, result, &err);
         return;
     }
-    mode_row *row = malloc(MODES_MAX * sizeof *row);
-    if (row == NULL) {
+    const lwd_buf *list = list_of(&app->lane[request->lane], held);
+    if (list == NULL) {
         lwd_fail_memory(reply, request);
     } else {
-        write(held, row, request, reply);
+        lwd_reply_text(reply, request, 200, "application/json", list->data, list->len);
     }
-    free(row);
     lwd_held_drop(held);
 }

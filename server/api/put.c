@@ -66,16 +66,17 @@ static bool decode(upload *up, const lwd_request *request, lwd_reply *reply)
 }
 
 /* Builds the model to see whether it can be built, and its solution sets. */
-static bool validate(upload *up, const lwd_request *request, lwd_reply *reply)
+static bool validate(lwd_app *app, upload *up, const lwd_request *request, lwd_reply *reply)
 {
     lw_err err = {.code = LW_OK};
     lw_code code =
         lw_model_new(&up->model, &up->document->spec, lwd_seed_of(up->digest), &up->report, &err);
     if (code == LW_OK) {
-        code = lwd_sets_make(up->model, up->digest, &err);
+        code = lwd_sets_take(app->catalog, up->model, up->name, up->digest, &err);
     }
     if (code == LW_OK) {
         up->report = *lw_model_report(up->model);
+        lwd_sets_judge(&up->findings, &up->report);
         return true;
     }
     if (code == LW_E_MODEL) {
@@ -222,8 +223,8 @@ void lwd_put_mechanism(void *context, const lwd_request *request, lwd_reply *rep
         lwd_fail_memory(reply, request);
         return;
     }
-    if (decode(up, request, reply) && validate(up, request, reply)
-        && precondition(app, up, request, reply)) {
+    if (decode(up, request, reply) && precondition(app, up, request, reply)
+        && validate(app, up, request, reply)) {
         store(app, up, request, reply);
     }
     upload_free(up);

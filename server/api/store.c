@@ -2,7 +2,6 @@
 /* The store of loaded mechanisms. One lock guards the tables; loading (catalog, decoding, building
  * the model) happens outside it, so two threads may load the same revision at once and the second
  * throws its copy away. A count of catalog changes tells a loader that what it read is old. */
-#include "sets.h"
 #include "store.h"
 
 #include <pthread.h>
@@ -11,6 +10,7 @@
 #include <string.h>
 
 #include "../log.h"
+#include "sets.h"
 
 enum { BUCKETS = 1024, TRIES = 8 };
 
@@ -59,6 +59,11 @@ void lwd_held_drop(lwd_held *held)
 {
     if (held != NULL
         && atomic_fetch_sub_explicit(&held->references, 1, memory_order_acq_rel) == 1) {
+        lwd_buf *modes = atomic_load(&held->modes);
+        if (modes != NULL) {
+            lwd_buf_clear(modes);
+            free(modes);
+        }
         lw_model_free(held->model);
         lwd_document_free(held->document);
         free(held);
@@ -248,6 +253,7 @@ static lwd_store_result load(lwd_store *store, const char *name, int64_t number,
     lwd_held *held = calloc(1, sizeof *held);
     if (held != NULL) {
         atomic_init(&held->references, 1);
+        atomic_init(&held->modes, NULL);
         (void)snprintf(held->name, sizeof held->name, "%s", name);
         result = build(store->catalog, held, &revision);
     }
@@ -373,6 +379,42 @@ lwd_store_result lwd_store_get(lwd_store *store, const char *name, int64_t revis
         return result;
     }
     return get_slow(store, name, revision, out, err);
+}
+
+size_t lwd_store_load_answering(lwd_store *store, bool (*stop)(void))
+{
+    enum { PAGE = 64 };
+    lwd_catalog_mechanism *page = calloc(PAGE, sizeof *page);
+    char after[LWD_CATALOG_NAME_MAX + 1] = "";
+    lwd_catalog_error err;
+    size_t loaded = 0;
+    bool more = page != NULL;
+    while (more) {
+        size_t n = 0;
+        if (lwd_catalog_list_mechanisms(store->catalog, after, page, PAGE, &n, &more, &err)
+            != LWD_CATALOG_OK) {
+            lwd_log(LWD_LOG_WARN, "models_not_loaded", "%s", err.why);
+            break;
+        }
+        for (size_t i = 0; i < n; i++) {
+            lwd_held *held = NULL;
+            if (loaded >= LWD_STORE_MODELS || stop()) {
+                more = false;
+                break;
+            }
+            if (page[i].answering > 0
+                && lwd_store_get(store, page[i].name, page[i].answering, true, &held, &err)
+                       == LWD_STORE_OK) {
+                loaded++;
+                lwd_held_drop(held);
+            }
+        }
+        if (n > 0) {
+            (void)snprintf(after, sizeof after, "%s", page[n - 1].name);
+        }
+    }
+    free(page);
+    return loaded;
 }
 
 void lwd_store_counts(lwd_store *store, size_t *loaded, uint64_t *loads)

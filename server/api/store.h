@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Loaded mechanisms: (name, revision) to a decoded document with its model, immutable and
- * reference-counted. A revision is loaded when it is first asked about and kept until it is the
+ * reference-counted. Revisions that answer by default are loaded at the start and when they are
+ * published, others when they are first asked about, in a worker; they are kept until they are the
  * least recently used of too many. Which revision answers by default is kept in step with the
  * catalog by lwd_store_changed, so a question about a loaded mechanism never reads the catalog.
  * Any thread may call; the lock is held for look-ups only, never while loading. */
@@ -8,6 +9,7 @@
 #define LWD_API_STORE_H
 
 #include <stdatomic.h>
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -16,6 +18,7 @@
 #include "../catalog/catalog.h"
 #include "../codec/document.h"
 #include "../codec/edge.h"
+#include "../exchange.h"
 
 enum { LWD_STORE_MODELS = 64 }; /* kept loaded at most; users keep those in use alive */
 
@@ -28,6 +31,7 @@ typedef struct lwd_held {
     lwd_document *document;
     lw_model *model;
     lwd_edge edge;
+    _Atomic(lwd_buf *) modes; /* the list of modes as JSON, NULL until somebody asks */
     struct lwd_held *next; /* the store's: other revisions of the same mechanism */
     uint64_t used;         /* the store's: when last asked for */
 } lwd_held;
@@ -62,6 +66,11 @@ lwd_store_result lwd_store_get(lwd_store *store, const char *name, int64_t revis
 
 lwd_held *lwd_held_keep(lwd_held *held);
 void lwd_held_drop(lwd_held *held);
+
+/* Loads the revisions that answer by default, so that no first question has to wait, until `stop`
+ * says so or LWD_STORE_MODELS are loaded. Sets that are missing or damaged are made anew. Returns
+ * how many are loaded. */
+size_t lwd_store_load_answering(lwd_store *store, bool (*stop)(void));
 
 /* Models loaded now, and since the start. */
 void lwd_store_counts(lwd_store *store, size_t *loaded, uint64_t *loads);

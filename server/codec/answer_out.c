@@ -237,6 +237,9 @@ void lwd_answer_solution(lwd_json *json, const lwd_answer_head *head, const lw_s
     lwd_answer_pose(json, head, &solution->tool, solution->config.coord);
     lwd_json_put_bool(json, "within_limits", solution->within_limits);
     put_limits(json, head, solution);
+    if (solution->contradicted) {
+        lwd_json_put_bool(json, "contradicted", true);
+    }
     bool open = false;
     for (size_t i = 0; i < edge->spec->n_drive; i++) {
         if (solution->turns[i] > 1) {

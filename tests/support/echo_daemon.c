@@ -212,6 +212,12 @@ lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_siz
     return app;
 }
 
+void lwd_app_load(lwd_app *app, bool (*stop)(void))
+{
+    (void)app;
+    (void)stop();
+}
+
 const lwd_route *lwd_app_routes(size_t *n)
 {
     *n = sizeof routes / sizeof routes[0];
