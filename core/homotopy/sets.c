@@ -6,6 +6,7 @@
 #include "../math/vec3.h"
 #include "../model/build.h"
 
+#include <stdint.h>
 #include <stdlib.h>
 
 void lwi_set_free(lwi_set *set)
@@ -461,49 +462,109 @@ static bool met_before(lwi_set_work *w, const lwi_set *set, lwi_hpoint *scratch)
     return false;
 }
 
-static lwi_end follow(lwi_set_work *w, const lwi_set *set, size_t i, int tight)
+/* Ways to a target, tried one after the other until no path is lost and no two end in one place:
+ * the straight one, more closely, then around points aside of it. All paths of one try take one way, or
+ * they would not end in different solutions. */
+typedef struct way {
+    int tight;
+    bool aside;
+    double re, im; /* where the point aside lies, from 0 (start) to 1 (target) */
+} way;
+
+static const way ways[] = {
+    {0, false, 0.0, 0.0}, {1, false, 0.0, 0.0},  {1, true, 0.5, 0.4},
+    {1, true, 0.4, -0.6}, {1, true, 0.7, -0.25}, {2, true, 0.3, 0.9},
+};
+
+static lwi_end follow(lwi_set_work *w, const lwi_set *set, size_t i, const way *by, int tight,
+                      const lwi_cx *target)
 {
-    lwi_cunpack(&w->end.st, set->sys, set->fibre.solution + i * set->fibre.pack);
+    const lwi_fibre *f = &set->fibre;
+    lwi_cunpack(&w->end.st, set->sys, f->solution + i * f->pack);
+    memcpy(w->h.p0, f->p, sizeof w->h.p0);
+    if (by->aside) {
+        for (size_t k = 0; k < f->hom.n_par; k++) {
+            w->h.p1[k] = f->p[k] + (by->re + by->im * I) * (target[k] - f->p[k]);
+        }
+        if (lwi_track_path(&w->end, &w->h, tight, &w->track) != LWI_END_GOOD) {
+            return LWI_END_LOST;
+        }
+        memcpy(w->h.p0, w->h.p1, f->hom.n_par * sizeof *target);
+    }
+    memcpy(w->h.p1, target, f->hom.n_par * sizeof *target);
     return lwi_track_path(&w->end, &w->h, tight, &w->track);
+}
+
+/* All paths by one way; returns how many were lost or met another's end. */
+static size_t follow_all(lwi_set_count *count, const lwi_set *set, const lwi_cx *target,
+                         const way *by, lwi_set_work *w)
+{
+    const lwi_fibre *f = &set->fibre;
+    size_t lost = 0;
+    memset(count, 0, sizeof *count);
+    w->n_end = 0;
+    for (size_t i = 0; i < f->n_solution; i++) {
+        lwi_end end = follow(w, set, i, by, by->tight, target);
+        for (int closer = by->tight + 1; end == LWI_END_LOST && closer <= 2; closer++) {
+            end = follow(w, set, i, by, closer, target);
+        }
+        if (end == LWI_END_INFINITE) {
+            count->infinite++;
+        } else if (end != LWI_END_GOOD) {
+            count->unsettled++;
+            lost += end == LWI_END_LOST;
+        } else if (met_before(w, set, &w->track.stage)) {
+            count->unsettled++;
+            lost++;
+        } else {
+            lwi_cpack(w->ends + w->n_end * f->pack, set->sys, &w->end.st);
+            w->n_end++;
+        }
+    }
+    return lost;
+}
+
+/* At real inputs the conjugate of a solution is one: where a path towards it has failed, or went out
+ * so far that it passed for infinite, it is still known by its partner. */
+static void add_conjugates(lwi_set_count *count, const lwi_set *set, lwi_set_work *w)
+{
+    size_t pack = set->fibre.pack;
+    size_t n = w->n_end;
+    for (size_t i = 0; i < n && count->infinite + count->unsettled > 0; i++) {
+        const lwi_cx *from = w->ends + i * pack;
+        lwi_cx *to = w->ends + w->n_end * pack;
+        for (size_t k = 0; k < pack; k++) {
+            to[k] = conj(from[k]);
+        }
+        lwi_cunpack(&w->end.st, set->sys, to);
+        if (!met_before(w, set, &w->track.stage)) {
+            w->n_end++;
+            *(count->unsettled > 0 ? &count->unsettled : &count->infinite) -= 1;
+        }
+    }
 }
 
 void lwi_set_solve(lwi_set_count *count, const lwi_set *set, const lwi_cx *target,
                    lwi_set_take take, void *context, lwi_set_work *w)
 {
     const lwi_fibre *f = &set->fibre;
-    int tight = 0;
-    memset(count, 0, sizeof *count);
     w->h.hom = &f->hom;
     w->h.slices = false;
-    memcpy(w->h.p0, f->p, sizeof w->h.p0);
-    memcpy(w->h.p1, target, f->hom.n_par * sizeof *target);
-    /* All ends first: a coincidence means that a path jumped, then all are followed more
-     * closely. */
-    for (bool again = true; again;) {
-        again = false;
-        memset(count, 0, sizeof *count);
-        w->n_end = 0;
-        for (size_t i = 0; i < f->n_solution && !again; i++) {
-            lwi_end end = follow(w, set, i, tight);
-            for (int closer = tight + 1; end == LWI_END_LOST && closer <= 2; closer++) {
-                end = follow(w, set, i, closer);
-            }
-            if (end == LWI_END_INFINITE) {
-                count->infinite++;
-            } else if (end != LWI_END_GOOD) {
-                count->unsettled++;
-            } else if (met_before(w, set, &w->track.stage)) {
-                if (tight < 2) {
-                    tight++;
-                    again = true;
-                } else {
-                    count->unsettled++;
-                }
-            } else {
-                lwi_cpack(w->ends + w->n_end * f->pack, set->sys, &w->end.st);
-                w->n_end++;
-            }
-        }
+    /* Ends at infinity count where two ways agree on how many there are: doubles may give up on a
+     * solution that is only far away. */
+    bool settled = false;
+    size_t infinite = SIZE_MAX;
+    for (size_t k = 0; k < sizeof ways / sizeof ways[0] && !settled; k++) {
+        size_t lost = follow_all(count, set, target, &ways[k], w);
+        settled = lost == 0 && (count->infinite == 0 || count->infinite == infinite);
+        infinite = lost == 0 ? count->infinite : infinite;
+    }
+    if (!settled) {
+        count->unsettled += count->infinite;
+        count->infinite = 0;
+    }
+    if (count->infinite > 0 || count->unsettled > 0) {
+        add_conjugates(count, set, w);
     }
     count->finite = w->n_end;
     for (size_t i = 0; i < w->n_end; i++) {

@@ -486,17 +486,17 @@ static void growth_note(growth *g, double rest, double size)
     }
 }
 
-/* What a path that cannot go on ends in. Coordinates that grow by a power of the rest of the way
- * are on their way to infinity; they would get there too slowly for doubles to follow. */
+/* What a path that cannot go on ends in. Infinity is met at the end of the way alone, by
+ * coordinates that grow by a power of what is left of it; a path that runs far out before is lost here. */
 static lwi_end stuck(const growth *g, double rest, double size)
 {
     double power = rest > 0.0 && rest < g->rest[0]
                        ? log(size / g->extent[0]) / log(g->rest[0] / rest)
                        : 0.0;
-    if (size > 1e3 || (size > 30.0 && power > 0.15 && rest < 1e-2)) {
-        return LWI_END_INFINITE;
+    if (!(rest < 1e-2)) {
+        return LWI_END_LOST;
     }
-    return rest < 1e-2 ? LWI_END_SINGULAR : LWI_END_LOST;
+    return size > 30.0 && power > 0.15 ? LWI_END_INFINITE : LWI_END_SINGULAR;
 }
 
 lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_track_work *w)
@@ -541,7 +541,7 @@ lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_tra
             return stuck(&g, 1.0 - t, w->extent);
         }
         if (good && w->extent > 1e7) {
-            return LWI_END_INFINITE;
+            return stuck(&g, 1.0 - t, w->extent);
         }
     }
     /* Sharpen as far as doubles go. */
