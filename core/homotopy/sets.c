@@ -463,8 +463,8 @@ static bool met_before(lwi_set_work *w, const lwi_set *set, lwi_hpoint *scratch)
 }
 
 /* Ways to a target, tried one after the other until no path is lost and no two end in one place:
- * the straight one, more closely, then around points aside of it. All paths of one try take one way, or
- * they would not end in different solutions. */
+ * the straight one, more closely, then around points aside of it. All paths of one try take one
+ * way, or they would not end in different solutions. */
 typedef struct way {
     int tight;
     bool aside;
@@ -524,8 +524,8 @@ static size_t follow_all(lwi_set_count *count, const lwi_set *set, const lwi_cx 
     return lost;
 }
 
-/* At real inputs the conjugate of a solution is one: where a path towards it has failed, or went out
- * so far that it passed for infinite, it is still known by its partner. */
+/* At real inputs the conjugate of a solution is one: where a path towards it has failed, or went
+ * out so far that it passed for infinite, it is still known by its partner. */
 static void add_conjugates(lwi_set_count *count, const lwi_set *set, lwi_set_work *w)
 {
     size_t pack = set->fibre.pack;

@@ -487,7 +487,8 @@ static void growth_note(growth *g, double rest, double size)
 }
 
 /* What a path that cannot go on ends in. Infinity is met at the end of the way alone, by
- * coordinates that grow by a power of what is left of it; a path that runs far out before is lost here. */
+ * coordinates that grow by a power of what is left of it; a path that runs far out before is lost
+ * here. */
 static lwi_end stuck(const growth *g, double rest, double size)
 {
     double power = rest > 0.0 && rest < g->rest[0]

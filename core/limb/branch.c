@@ -209,8 +209,8 @@ lw_code lwi_mode_check(const lw_model *model, const lw_mode *mode, lw_err *err)
         if (mode->sign[i] != 0 &&
             !lwi_branch_from_entry(&branch, &model->limb[i], mode->sign[i], mode->branch[i])) {
             return LW_FAIL(err, LW_E_ARGUMENT, "/mode",
-                           "entry %zu of the mode names no branch of limb \"%s\"; the list of modes "
-                           "shows those there are",
+                           "entry %zu of the mode names no branch of limb \"%s\"; the list of "
+                           "modes shows those there are",
                            i + 1, model->report.limb[i].name);
         }
     }

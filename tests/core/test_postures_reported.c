@@ -20,8 +20,8 @@ static lwt_machine *subject(const char *name)
     return NULL;
 }
 
-/* Joint 6 of the two-stage machine is the guide between its plates: it follows from the screw's turn.
- * By hand: leads 20 and 12 mm on one spindle, so the plates part by 8 mm a turn. */
+/* Joint 6 of the two-stage machine is the guide between its plates: it follows from the screw's
+ * turn. By hand: leads 20 and 12 mm on one spindle, so the plates part by 8 mm a turn. */
 static void joints_that_are_no_outputs_are_compared(void **state)
 {
     (void)state;
