@@ -10,7 +10,7 @@
 enum { LWT_PHC_MAX = 128 };
 
 typedef struct lwt_phc {
-    double seconds;   /* by the wall, of the whole command */
+    double seconds;   /* processor time of the whole command */
     int finite;       /* isolated solutions, real or not */
     int n;            /* the real ones */
     lw_frame real[LWT_PHC_MAX];
