@@ -34,6 +34,7 @@ static const key keys[] = {
     {"body-seconds", KIND_SECONDS, offsetof(lwd_config, http.body_ms), 1, 600},
     {"idle-seconds", KIND_COUNT, offsetof(lwd_config, http.idle_s), 1, 3600},
     {"drain-seconds", KIND_SECONDS, offsetof(lwd_config, http.drain_ms), 1, 600},
+    {"prepare-paths", KIND_COUNT, offsetof(lwd_config, prepare_paths), 1, 10000000},
 };
 enum { N_KEYS = sizeof keys / sizeof keys[0] };
 
@@ -383,6 +384,8 @@ void lwd_config_help(FILE *out)
         "  --body-seconds N       for its body; default 15\n"
         "  --idle-seconds N       for a silent connection; default 30\n"
         "  --drain-seconds N      for questions under way when stopping; default 10\n"
+        "  --prepare-paths N      work allowed for a new document's list of all solutions;\n"
+        "                         default 12000 paths, some seconds. Give the same everywhere\n"
         "\n"
         "Other\n"
         "  --config FILE          lines \"key = value\", keys as above without the dashes; '#'\n"

@@ -34,6 +34,7 @@ typedef struct lwd_config {
     char *port_file;
     lwd_log_level log_level;
     lwd_http_options http;
+    unsigned prepare_paths; /* 0: the default */
     const char *token_name; /* of --make-token; from argv */
     const char *token_role;
 } lwd_config;

@@ -177,6 +177,7 @@ static int start(daemon_state *d, char *why, size_t why_size)
     }
     app.data_dir = config->data_dir;
     app.lanes = config->http.workers + 1;
+    app.prepare_paths = config->prepare_paths;
     d->app = lwd_app_start(&app, why, why_size);
     if (d->app == NULL) {
         return EXIT_FAILURE;

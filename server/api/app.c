@@ -8,6 +8,7 @@
 
 #include "../log.h"
 #include "api.h"
+#include "sets.h"
 
 enum {
     QUESTION_MAX = 65536,
@@ -119,7 +120,9 @@ lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_siz
     }
     lwd_buf_init(&app->about, 0);
     app->n_lanes = options->lanes;
-    app->store = lwd_store_new(NULL);
+    app->prepare_paths =
+        options->prepare_paths != 0 ? options->prepare_paths : LWD_PREPARE_PATHS;
+    app->store = lwd_store_new(NULL, app->prepare_paths);
     app->lane = calloc(options->lanes, sizeof *app->lane);
     for (unsigned i = 0; app->lane != NULL && i < options->lanes; i++) {
         lwd_buf_init(&app->lane[i].scrap.body, 0);

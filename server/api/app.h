@@ -13,6 +13,7 @@ typedef struct lwd_app lwd_app;
 typedef struct lwd_app_options {
     const char *data_dir; /* directory that holds the catalog; must exist */
     unsigned lanes;       /* lwd_request.lane is below this: 0 the event thread, the rest workers */
+    unsigned prepare_paths; /* tracked at most while preparing a solution set; 0: the default */
 } lwd_app_options;
 
 /* NULL on failure, with one sentence for the operator in `why`. */

@@ -72,7 +72,8 @@ static bool validate(lwd_app *app, upload *up, const lwd_request *request, lwd_r
     lw_code code =
         lw_model_new(&up->model, &up->document->spec, lwd_seed_of(up->digest), &up->report, &err);
     if (code == LW_OK) {
-        code = lwd_sets_take(app->catalog, up->model, up->name, up->digest, &err);
+        code = lwd_sets_take(app->catalog, app->prepare_paths, up->model, up->name, up->digest,
+                             &err);
     }
     if (code == LW_OK) {
         up->report = *lw_model_report(up->model);

@@ -24,6 +24,7 @@ typedef struct mechanism {
 struct lwd_store {
     pthread_mutex_t lock;
     lwd_catalog *catalog;
+    unsigned long paths; /* for sets that have to be made */
     mechanism *bucket[BUCKETS];
     size_t n_held;
     uint64_t tick;
@@ -31,7 +32,7 @@ struct lwd_store {
     uint64_t changes;
 };
 
-lwd_store *lwd_store_new(lwd_catalog *catalog)
+lwd_store *lwd_store_new(lwd_catalog *catalog, unsigned long paths)
 {
     lwd_store *store = calloc(1, sizeof *store);
     if (store != NULL && pthread_mutex_init(&store->lock, NULL) != 0) {
@@ -40,6 +41,7 @@ lwd_store *lwd_store_new(lwd_catalog *catalog)
     }
     if (store != NULL) {
         store->catalog = catalog;
+        store->paths = paths;
     }
     return store;
 }
@@ -198,7 +200,7 @@ static lwd_store_result result_of(const lwd_catalog_error *err)
 }
 
 /* Decodes a stored text, builds its model and opens its solution sets. */
-static lwd_store_result build(lwd_catalog *catalog, lwd_held *held,
+static lwd_store_result build(const lwd_store *store, lwd_held *held,
                               const lwd_catalog_revision *revision)
 {
     lwd_store_result result = LWD_STORE_MEMORY;
@@ -219,7 +221,7 @@ static lwd_store_result build(lwd_catalog *catalog, lwd_held *held,
     lw_code code = lw_model_new(&held->model, &held->document->spec,
                                 lwd_seed_of(revision->info.digest), report, &err);
     if (code == LW_OK) {
-        code = lwd_sets_open(catalog, held->model, held->name, revision->info.number,
+        code = lwd_sets_open(store->catalog, store->paths, held->model, held->name, revision->info.number,
                              revision->info.digest, &err);
     }
     if (code != LW_OK) {
@@ -255,7 +257,7 @@ static lwd_store_result load(lwd_store *store, const char *name, int64_t number,
         atomic_init(&held->references, 1);
         atomic_init(&held->modes, NULL);
         (void)snprintf(held->name, sizeof held->name, "%s", name);
-        result = build(store->catalog, held, &revision);
+        result = build(store, held, &revision);
     }
     lwd_catalog_revision_clear(&revision);
     if (result != LWD_STORE_OK) {

@@ -49,7 +49,8 @@ typedef enum lwd_store_result {
 
 typedef struct lwd_store lwd_store;
 
-lwd_store *lwd_store_new(lwd_catalog *catalog);
+/* `paths`: tracked at most while preparing a solution set that is missing. */
+lwd_store *lwd_store_new(lwd_catalog *catalog, unsigned long paths);
 void lwd_store_free(lwd_store *store);
 
 /* To be called once, before any other call, where the catalog could not be given at once (its

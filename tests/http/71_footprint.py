@@ -72,7 +72,7 @@ def rests_below_twenty_megabytes():
 
 
 def starts_soon_with_two_hundred():
-    with Daemon() as daemon:
+    with Daemon("--prepare-paths", "200") as daemon:
         with daemon.wire(timeout=60) as wire:
             for i in range(MANY):
                 base = NAMES[i % len(NAMES)]
@@ -80,7 +80,7 @@ def starts_soon_with_two_hundred():
                 store(wire, content["name"], content, accepted(base))
         daemon.stop()
         began = time.monotonic()
-        with Daemon("--data", daemon.dir) as again:
+        with Daemon("--prepare-paths", "200", "--data", daemon.dir) as again:
             while again.ask("GET", "/readyz").status != 200:
                 expect(time.monotonic() - began < 60, "not ready within a minute")
                 time.sleep(0.005)

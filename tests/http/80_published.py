@@ -38,7 +38,7 @@ class Service:
         self.name = json.loads(self.text)["name"]
 
     def __enter__(self):
-        self.daemon = Daemon().__enter__()
+        self.daemon = Daemon("--prepare-paths", "200").__enter__()
         try:
             put = self.call("PUT", f"/v1/mechanisms/{self.name}", self.text)
             expect(put.status == 201, "PUT", put.status, put.body)
