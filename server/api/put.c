@@ -77,7 +77,7 @@ static bool validate(lwd_app *app, upload *up, const lwd_request *request, lwd_r
     }
     if (code == LW_OK) {
         up->report = *lw_model_report(up->model);
-        lwd_sets_judge(&up->findings, &up->report);
+        lwd_sets_judge(&up->findings, up->model);
         return true;
     }
     if (code == LW_E_MODEL) {

@@ -126,9 +126,11 @@ static void judge(lwd_findings *findings, const lw_set_info *set, const char *co
     }
 }
 
-void lwd_sets_judge(lwd_findings *findings, const lw_report *report)
+void lwd_sets_judge(lwd_findings *findings, const lw_model *model)
 {
-    if (report->closure_rows > 0) { /* a serial chain's readings name one posture */
+    const lw_report *report = lw_model_report(model);
+    /* The readings of a serial chain name one posture; a rod closes a loop. */
+    if (report->closure_rows > 0 || lw_model_spec(model)->n_rod > 0) {
         judge(findings, &report->forward_set, "forward-set-open", "forward with \"all\"");
     }
     if (!report->explicit_inverse) {

@@ -35,6 +35,6 @@ lw_code lwd_sets_take(lwd_catalog *catalog, unsigned long paths, lw_model *model
                       const char *name, const char *digest, lw_err *err);
 
 /* Notes on sets that are missing or could not be closed. */
-void lwd_sets_judge(lwd_findings *findings, const lw_report *report);
+void lwd_sets_judge(lwd_findings *findings, const lw_model *model);
 
 #endif

@@ -221,8 +221,8 @@ static lwd_store_result build(const lwd_store *store, lwd_held *held,
     lw_code code = lw_model_new(&held->model, &held->document->spec,
                                 lwd_seed_of(revision->info.digest), report, &err);
     if (code == LW_OK) {
-        code = lwd_sets_open(store->catalog, store->paths, held->model, held->name, revision->info.number,
-                             revision->info.digest, &err);
+        code = lwd_sets_open(store->catalog, store->paths, held->model, held->name,
+                             revision->info.number, revision->info.digest, &err);
     }
     if (code != LW_OK) {
         result = code == LW_E_MEMORY ? LWD_STORE_MEMORY : LWD_STORE_UNUSABLE;
