@@ -156,7 +156,7 @@ def damage_is_found_and_made_good():
 
 
 def modes_hold_what_they_say():
-    with Daemon() as daemon:
+    with Daemon("--prepare-paths", "200") as daemon:
         base = "/v1/mechanisms/belt-hopper"
         publish(daemon, "belt-hopper")
         told = daemon.ask("GET", base + "/modes").json()
