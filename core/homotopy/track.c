@@ -507,6 +507,7 @@ lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_tra
     double step = 0.1;
     double last = 0.0;
     lwi_hpoint next;
+    memset(&next, 0, sizeof next); /* what a kind of joint leaves unused is kept and compared too */
     set_weights(w, h, at);
     w->noise = noise_at(h, at, w);
     growth g = {.rest = {1.0, 1.0}, .extent = {w->extent, w->extent}};

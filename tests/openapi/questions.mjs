@@ -77,9 +77,9 @@ export const asked = [
   ['label-stage', 'reach', { pose: { x: 900, y: 0, rz: 0 } }, 4],
   ['tilt-table', 'reach', { pose: { x: 0, y: 0, z: 300, zyx } }, 3],
   ['case-packer', 'reach', { pose: { x: 460, y: 120, z: 560,
-    zyx: { yaw: 15, pitch: 0, roll: 180 } }, mode: '+3' }, null],
+    zyx: { yaw: 15, pitch: 0, roll: 180 } }, mode: '-3' }, null],
   ['case-packer', 'reach', { pose: { x: 460, y: 120, z: 560,
-    zyx: { yaw: 15, pitch: 0, roll: 180 } }, mode: '-1' }, null],
+    zyx: { yaw: 15, pitch: 0, roll: 180 } }, mode: '-2' }, null],
   ['lid-turner', 'reach', { pose: { x: 20, y: -15, z: 420, joints: { shaft: 360 } },
     mode: 'all-standing' }, null],
 ];
