@@ -385,7 +385,7 @@ void lwd_config_help(FILE *out)
         "  --idle-seconds N       for a silent connection; default 30\n"
         "  --drain-seconds N      for questions under way when stopping; default 10\n"
         "  --prepare-paths N      work allowed for a new document's list of all solutions;\n"
-        "                         default 12000 paths, some seconds. Give the same everywhere\n"
+        "                         default 24000 paths, some seconds. Give the same everywhere\n"
         "\n"
         "Other\n"
         "  --config FILE          lines \"key = value\", keys as above without the dashes; '#'\n"

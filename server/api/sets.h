@@ -15,7 +15,7 @@
 /* Paths tracked at most while preparing one set: work is counted, so that the outcome is the same
  * on every machine. Builds with sanitizers, ten times slower, are given fewer by the build. */
 #ifndef LWD_PREPARE_PATHS
-#define LWD_PREPARE_PATHS 12000
+#define LWD_PREPARE_PATHS 24000
 #endif
 
 /* Makes the sets of a fresh model. LW_E_MEMORY at worst; a mechanism that is not served has
