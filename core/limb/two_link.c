@@ -63,17 +63,6 @@ static double angle2(const double a[2], const double b[2])
     return atan2(a[0] * b[1] - a[1] * b[0], a[0] * b[0] + a[1] * b[1]);
 }
 
-static void turn_joint(lw_frame *to, const lw_frame *from, const double u[3], const double at[3],
-                       double angle)
-{
-    lw_frame e;
-    double moved[3];
-    lwi_rot_axis(e.rot, u, angle);
-    lwi_rot_apply(moved, e.rot, at);
-    lwi_sub(e.pos_m, at, moved);
-    lwi_frame_mul(to, from, &e);
-}
-
 void lwi_two_link_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb *limb,
                         unsigned bits, const lw_config *config)
 {
@@ -108,8 +97,8 @@ void lwi_two_link_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb 
     double theta2 = elbow - angle2(p.l1, p.l2);
     lw_frame x1;
     lw_frame x2;
-    turn_joint(&x1, base, p.u, p.a, theta1);
-    turn_joint(&x2, &x1, p.u, m->spec->joint[limb->chain[1].joint].at_m, theta2);
+    lwi_frame_turn(&x1, base, p.u, p.a, theta1);
+    lwi_frame_turn(&x2, &x1, p.u, m->spec->joint[limb->chain[1].joint].at_m, theta2);
     for (size_t i = 0; i < limb->n_body; i++) {
         bool first = m->fused[limb->body[i]] == m->fused[limb->chain[0].next];
         out->body[i] = first ? x1 : x2;

@@ -195,17 +195,6 @@ static bool solve_wrist(double q[3], bool *open, const arm *a, unsigned bits,
     return true;
 }
 
-static void turn_joint(lw_frame *to, const lw_frame *from, const double u[3], const double at[3],
-                       double angle)
-{
-    lw_frame e;
-    double moved[3];
-    lwi_rot_axis(e.rot, u, angle);
-    lwi_rot_apply(moved, e.rot, at);
-    lwi_sub(e.pos_m, at, moved);
-    lwi_frame_mul(to, from, &e);
-}
-
 void lwi_wrist_arm_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb *limb,
                          unsigned bits, const lw_config *config)
 {
@@ -227,7 +216,7 @@ void lwi_wrist_arm_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb
     }
     const lw_frame *from = base;
     for (size_t k = 0; k < 3; k++) {
-        turn_joint(&x[k], from, a.u[k], a.at[k], q[k]);
+        lwi_frame_turn(&x[k], from, a.u[k], a.at[k], q[k]);
         from = &x[k];
     }
     double rest[9];
@@ -236,7 +225,7 @@ void lwi_wrist_arm_solve(lwi_limb_result *out, const lw_model *m, const lwi_limb
         return;
     }
     for (size_t k = 3; k < 5; k++) {
-        turn_joint(&x[k], from, a.u[k], a.at[k], q[k]);
+        lwi_frame_turn(&x[k], from, a.u[k], a.at[k], q[k]);
         from = &x[k];
     }
     out->real = true;

@@ -46,6 +46,17 @@ void lwi_rot_axis(double out[9], const double u[3], double angle_rad)
     out[8] = c + v * u[2] * u[2];
 }
 
+void lwi_frame_turn(lw_frame *to, const lw_frame *from, const double u[3], const double at[3],
+                    double angle)
+{
+    lw_frame e;
+    double moved[3];
+    lwi_rot_axis(e.rot, u, angle);
+    lwi_rot_apply(moved, e.rot, at);
+    lwi_sub(e.pos_m, at, moved);
+    lwi_frame_mul(to, from, &e);
+}
+
 void lwi_rot_log(double out[3], const double r[9])
 {
     double q[4];

@@ -143,6 +143,9 @@ static inline void lwi_frame_inverse(lw_frame *out, const lw_frame *a)
 void lwi_perpendicular(double e1[3], double e2[3], const double u[3]);
 /* Rotation about unit axis u. */
 void lwi_rot_axis(double out[9], const double u[3], double angle_rad);
+/* to = from, then a turn about unit axis u through the reference point at. */
+void lwi_frame_turn(lw_frame *to, const lw_frame *from, const double u[3], const double at[3],
+                    double angle);
 /* Rotation vector (axis times angle, 0..pi) of a rotation matrix. */
 void lwi_rot_log(double out[3], const double r[9]);
 /* Angle of a rotation about unit axis u, (-pi, pi]; exact when the rotation is about u. */
