@@ -4,6 +4,7 @@
 #define LEEWAY_LEEWAY_H
 #include <leeway/err.h>
 #include <leeway/model.h>
+#include <leeway/path.h>
 #include <leeway/posture.h>
 #include <leeway/query.h>
 #include <leeway/spec.h>
