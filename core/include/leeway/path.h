@@ -7,6 +7,8 @@
 #ifndef LEEWAY_PATH_H
 #define LEEWAY_PATH_H
 
+#include <stdatomic.h>
+
 #include <leeway/query.h>
 
 enum {
@@ -46,8 +48,8 @@ typedef struct lw_path_ask {
     struct lw_move_answer *store; /* the caller's room for n_move answers */
     size_t piece_room;            /* certificate: the caller's room for proved intervals, 0 none */
     struct lw_proof_piece *piece;
-    const volatile bool *abort; /* NULL, or set by the caller's clock: the answer is then
-                                 * undecided and says so */
+    const atomic_bool *abort; /* NULL, or set by the caller's clock from another thread: the answer
+                               * is then undecided and says so */
 } lw_path_ask;
 
 /* Least value of a margin along the part of a move that was proved. */
@@ -129,7 +131,7 @@ typedef struct lw_travel_ask {
     double reach_m, reach_rad; /* how far is looked; 0: twice the characteristic length, pi / 2 */
     lw_margin_min margin_min;
     size_t budget;             /* boxes a way */
-    const volatile bool *abort;
+    const atomic_bool *abort;
 } lw_travel_ask;
 
 typedef struct lw_travel_way {
@@ -176,7 +178,7 @@ typedef struct lw_distance_ask {
     const lw_spec_tool *tool_written;
     const lw_posture_ask *posture;
     size_t budget;       /* cells; 0: one evaluation */
-    const volatile bool *abort;
+    const atomic_bool *abort;
 } lw_distance_ask;
 
 typedef struct lw_distance_answer {
