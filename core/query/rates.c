@@ -5,10 +5,10 @@
 #include "../math/tol.h"
 #include "../math/vec3.h"
 
-static void through_k(double *out, const double *row, const lw_model *m, const lw_work *work)
+static void through_k(double *out, const double *row, const lw_model *m, size_t left,
+                      const lw_work *work)
 {
     size_t n = m->whole->n_var;
-    size_t left = m->mobility;
     for (size_t j = 0; j < left; j++) {
         out[j] = 0.0;
     }
@@ -21,8 +21,7 @@ static void through_k(double *out, const double *row, const lw_model *m, const l
     }
 }
 
-/* Body rotation rates that change yaw, pitch or roll of the tool alone. */
-static void zyx_rate(double rate[3], const double rot[9], lw_output_kind kind)
+void lwi_output_axis(double rate[3], const double rot[9], lw_output_kind kind)
 {
     double a[3];
     lw_zyx_from_rot(a, rot);
@@ -46,7 +45,7 @@ static void zyx_rate(double rate[3], const double rot[9], lw_output_kind kind)
 static void output_rates(const lw_model *m, const lw_spec_tool *tool, lwi_rates *r, lw_work *work)
 {
     const lw_spec *spec = m->spec;
-    size_t left = m->mobility;
+    size_t left = r->m;
     size_t turns = 0;
     double rot[9];
     double *row = work->vector[0];
@@ -61,7 +60,7 @@ static void output_rates(const lw_model *m, const lw_spec_tool *tool, lwi_rates 
             double value;
             lw_term term = {.coord = spec->output[o].coord, .factor = 1.0};
             (void)lwi_terms(&value, row, m->whole, &work->state, &work->ev, &term, 1);
-            through_k(out, row, m, work);
+            through_k(out, row, m, left, work);
         } else if (kind <= LW_OUT_Z) {
             memcpy(out, work->twist + (size_t)kind * left, left * sizeof *out);
         } else {
@@ -70,7 +69,7 @@ static void output_rates(const lw_model *m, const lw_spec_tool *tool, lwi_rates 
             if (turns == 3) {
                 rate[kind - LW_OUT_RX] = 1.0;
             } else {
-                zyx_rate(rate, rot, kind);
+                lwi_output_axis(rate, rot, kind);
             }
             for (size_t j = 0; j < left; j++) {
                 out[j] = rate[0] * work->twist[3 * left + j] + rate[1] * work->twist[4 * left + j] +
@@ -81,31 +80,46 @@ static void output_rates(const lw_model *m, const lw_spec_tool *tool, lwi_rates 
     r->n_output = spec->n_output;
 }
 
-void lwi_rates_at(lwi_rates *r, const lw_model *m, const lw_spec_tool *tool,
-                  const lw_config *config, const double point_m[3], lw_work *work)
+/* Everything that follows from the null space in work->k, of r->m columns. */
+static void rates_through_k(lwi_rates *r, const lw_model *m, const lw_spec_tool *tool,
+                            const double point_m[3], lw_work *work)
 {
     const lwi_system *sys = m->whole;
-    size_t left = m->mobility;
+    size_t left = r->m;
     double *row = work->vector[0];
-    lwi_state_from_config(&work->state, sys, config);
-    lwi_eval_nodes(&work->ev, sys, &work->state);
-    r->m = left;
-    r->closure_ratio =
-        lwi_null_space(work->k, sys, m->rank, &work->state, &work->ev, &work->newton);
     r->n_drive = m->spec->n_drive;
     for (size_t d = 0; d < r->n_drive; d++) {
         double value;
         (void)lwi_terms(&value, row, sys, &work->state, &work->ev, m->spec->drive[d].term,
                         m->spec->drive[d].n_term);
-        through_k(work->ak + d * left, row, m, work);
+        through_k(work->ak + d * left, row, m, left, work);
     }
     size_t node = sys->body_node[tool->body];
     double *rows = work->matrix[0];
     lwi_twist_rows(rows, sys, &work->ev, node, point_m);
     for (size_t c = 0; c < 6; c++) {
-        through_k(work->twist + c * left, rows + c * sys->n_var, m, work);
+        through_k(work->twist + c * left, rows + c * sys->n_var, m, left, work);
     }
     output_rates(m, tool, r, work);
+}
+
+void lwi_rates_at(lwi_rates *r, const lw_model *m, const lw_spec_tool *tool,
+                  const lw_config *config, const double point_m[3], lw_work *work)
+{
+    const lwi_system *sys = m->whole;
+    lwi_state_from_config(&work->state, sys, config);
+    lwi_eval_nodes(&work->ev, sys, &work->state);
+    r->m = m->mobility;
+    r->closure_ratio =
+        lwi_null_space(work->k, sys, m->rank, &work->state, &work->ev, &work->newton);
+    rates_through_k(r, m, tool, point_m, work);
+}
+
+void lwi_rates_widen(lwi_rates *r, const lw_model *m, const lw_spec_tool *tool,
+                     const double point_m[3], double threshold, lw_work *work)
+{
+    r->m = lwi_null_space_here(work->k, m->whole, m->rank, threshold, &work->newton);
+    rates_through_k(r, m, tool, point_m, work);
 }
 
 void lwi_scaled_drives(double *out, const lw_model *m, const lwi_rates *r, const lw_work *work)

@@ -21,6 +21,14 @@ typedef struct lwi_rates {
 void lwi_rates_at(lwi_rates *out, const lw_model *model, const lw_spec_tool *tool,
                   const lw_config *config, const double point_m[3], lw_work *work);
 
+/* After lwi_rates_at where closure rows lost rank: the same with the whole null space of the
+ * posture, which is wider than the mobility; r->m becomes its dimension. */
+void lwi_rates_widen(lwi_rates *rates, const lw_model *model, const lw_spec_tool *tool,
+                     const double point_m[3], double threshold, lw_work *work);
+
+/* The turn of the tool body that changes yaw, pitch or roll alone, at an orientation. */
+void lwi_output_axis(double rate[3], const double rot[9], lw_output_kind kind);
+
 /* Scales rows of drives (lengths over the characteristic length) into out, n_drive x m. */
 void lwi_scaled_drives(double *out, const lw_model *model, const lwi_rates *rates,
                        const lw_work *work);

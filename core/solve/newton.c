@@ -328,3 +328,52 @@ double lwi_null_space(double *k, const lwi_system *sys, size_t rank, const lwi_s
     }
     return ratio;
 }
+
+size_t lwi_null_space_here(double *k, const lwi_system *sys, size_t rank, double threshold,
+                           const lwi_newton_work *nw)
+{
+    size_t n = sys->n_var;
+    size_t m = sys->n_row;
+    size_t r = 0;
+    while (r < rank && m > 0 && fabs(nw->qr[r * m + r]) > threshold * fabs(nw->qr[0])) {
+        r++;
+    }
+    size_t left = n - r;
+    double *column = nw->step;
+    for (size_t c = 0; c < left; c++) {
+        memset(column, 0, n * sizeof *column);
+        column[r + c] = 1.0;
+        if (r > 0) {
+            lwi_qrp_q(nw->qr, n, r, m, nw->tau, column);
+        }
+        for (size_t i = 0; i < n; i++) {
+            k[i * left + c] = column[i];
+        }
+    }
+    return left;
+}
+
+bool lwi_row_multipliers(double *multiplier, double *r, const lwi_system *sys, size_t rank,
+                         const lwi_newton_work *nw)
+{
+    size_t m = sys->n_row;
+    for (size_t i = 0; i < m; i++) {
+        multiplier[i] = 0.0;
+    }
+    if (m == 0 || rank == 0) {
+        return true;
+    }
+    lwi_qrp_qt(nw->qr, sys->n_var, rank, m, nw->tau, r);
+    for (size_t i = rank; i-- > 0;) {
+        double pivot = nw->qr[i * m + i];
+        if (!(fabs(pivot) > 1e-11 * fabs(nw->qr[0]))) {
+            return false;
+        }
+        double s = r[i];
+        for (size_t j = i + 1; j < rank; j++) {
+            s -= nw->qr[i * m + j] * multiplier[nw->perm[j]];
+        }
+        multiplier[nw->perm[i]] = s / pivot;
+    }
+    return true;
+}

@@ -64,5 +64,13 @@ void lwi_newton_work_close(lwi_newton_work *nw);
  * orthonormal. Returns the ratio of the rank-th pivot to the largest one (0: rank lost). */
 double lwi_null_space(double *k, const lwi_system *sys, size_t rank, const lwi_state *state,
                       const lwi_eval *ev, lwi_newton_work *nw);
+/* Both read the factors that lwi_null_space left in nw. The whole null space at a posture where
+ * pivots below `threshold` count as lost: k gets that many columns, which is returned. */
+size_t lwi_null_space_here(double *k, const lwi_system *sys, size_t rank, double threshold,
+                           const lwi_newton_work *nw);
+/* Multipliers of the rows: rows^T multiplier = r for a vector r (n_var, destroyed) square to the
+ * null space; rows that were not needed for the rank get 0. False where rank is lost. */
+bool lwi_row_multipliers(double *multiplier, double *r, const lwi_system *sys, size_t rank,
+                         const lwi_newton_work *nw);
 
 #endif
