@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* A closure system once it is built: which rows share unknowns, rods that become equations, rows
- * that leave the solved ones. Called while a model is loaded; allocates nothing. */
+/* A closure system once it is built: which unknowns a row sees, which rows share unknowns, rods
+ * that become equations, rows that leave the solved ones. Allocates nothing. */
 #include "../math/vec3.h"
 #include "build.h"
 
@@ -18,22 +18,73 @@ static void join(size_t *group, int *first, int var)
     group[a > b ? a : b] = a > b ? b : a;
 }
 
-static int row_vars(const lwi_system *sys, const lwi_row *row, size_t *group)
+static void see_element(bool *seen, const lwi_system *sys, size_t k)
 {
-    int first = -1;
-    for (size_t k = 0; k < row->n_link; k++) {
-        join(group, &first, sys->element[sys->link[row->link + k].element].var);
+    const lwi_element *el = &sys->element[k];
+    size_t n = el->kind == LWI_FREE ? 6 : el->kind == LWI_BALL ? 3 : 1;
+    for (size_t i = 0; i < n && el->var >= 0; i++) {
+        seen[(size_t)el->var + i] = true;
     }
+}
+
+static void see_links(bool *seen, const lwi_system *sys, size_t link, size_t n)
+{
+    for (size_t k = 0; k < n; k++) {
+        see_element(seen, sys, (size_t)sys->link[link + k].element);
+    }
+}
+
+static size_t list_seen(unsigned short *var, const bool *seen, size_t n_var)
+{
+    size_t n = 0;
+    for (size_t i = 0; i < n_var; i++) {
+        if (seen[i]) {
+            var[n++] = (unsigned short)i;
+        }
+    }
+    return n;
+}
+
+size_t lwi_row_vars(unsigned short var[LWI_MAX_VARS], const lwi_system *sys, const lwi_row *row)
+{
+    bool seen[LWI_MAX_VARS] = {false};
+    see_links(seen, sys, row->link, row->n_link);
     for (size_t t = 0; t < row->n_term; t++) {
-        join(group, &first, sys->element[row->term_element[t]].var);
+        see_element(seen, sys, (size_t)row->term_element[t]);
     }
     for (size_t t = 0; t < row->n_rod_term; t++) {
         const lwi_rod_info *rod = &sys->rod[row->rod_term[t]];
-        for (size_t k = 0; k < rod->n_link; k++) {
-            join(group, &first, sys->element[sys->link[rod->link + k].element].var);
+        see_links(seen, sys, rod->link, rod->n_link);
+    }
+    return list_seen(var, seen, sys->n_var);
+}
+
+size_t lwi_node_vars(unsigned short var[LWI_MAX_VARS], const lwi_system *sys, size_t node)
+{
+    bool seen[LWI_MAX_VARS] = {false};
+    for (size_t k = sys->n_element; k-- > 0;) {
+        if (sys->element[k].child == node) {
+            see_element(seen, sys, k);
+            node = sys->element[k].parent;
         }
     }
-    return first;
+    return list_seen(var, seen, sys->n_var);
+}
+
+size_t lwi_terms_vars(unsigned short var[LWI_MAX_VARS], const lwi_system *sys,
+                      const lw_term *term, size_t n_term)
+{
+    bool seen[LWI_MAX_VARS] = {false};
+    size_t n_scalar = lw_spec_coord_count(sys->spec) - sys->spec->n_rod;
+    for (size_t t = 0; t < n_term; t++) {
+        if (term[t].coord >= n_scalar) {
+            const lwi_rod_info *rod = &sys->rod[term[t].coord - n_scalar];
+            see_links(seen, sys, rod->link, rod->n_link);
+        } else if (sys->coord_element[term[t].coord] >= 0) {
+            see_element(seen, sys, (size_t)sys->coord_element[term[t].coord]);
+        }
+    }
+    return list_seen(var, seen, sys->n_var);
 }
 
 void lwi_system_blocks(lwi_system *sys)
@@ -55,7 +106,12 @@ void lwi_system_blocks(lwi_system *sys)
     }
     int first[LWI_MAX_ROWS];
     for (size_t i = 0; i < sys->n_row; i++) {
-        first[i] = row_vars(sys, &sys->row[i], group);
+        unsigned short var[LWI_MAX_VARS];
+        size_t n = lwi_row_vars(var, sys, &sys->row[i]);
+        first[i] = -1;
+        for (size_t v = 0; v < n; v++) {
+            join(group, &first[i], var[v]);
+        }
     }
     sys->n_block = 0;
     for (size_t i = 0; i < sys->n_row; i++) {

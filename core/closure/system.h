@@ -124,6 +124,29 @@ typedef struct lwi_eval {
     double p[LWI_MAX_ELEMENTS][3]; /* point on the axis, ball centre, free reference point */
 } lwi_eval;
 
+/* The same for another type of number, for an instance of eval.inc: prefix_frame; prefix_eval as
+ * lwi_eval; prefix_point as lwi_state, but that turns and helices also have cosine and sine (value
+ * is read for slides, helices and what stands in sums), balls and free bodies a rotation (a ball's
+ * as its joint says, from its first body to its second). Large: never on the stack. */
+#define LWI_EVAL_TYPES(prefix, number)        \
+    typedef struct prefix##_frame {           \
+        number rot[9];                        \
+        number pos_m[3];                      \
+    } prefix##_frame;                         \
+    typedef struct prefix##_eval {            \
+        prefix##_frame node[LWI_MAX_NODES];   \
+        number w[LWI_MAX_ELEMENTS][3];        \
+        number p[LWI_MAX_ELEMENTS][3];        \
+    } prefix##_eval;                          \
+    typedef struct prefix##_point {           \
+        number value[LWI_MAX_ELEMENTS];       \
+        number cs[LWI_MAX_ELEMENTS][2];       \
+        number rot[LWI_MAX_QUATS][9];         \
+        number pos_m[LWI_MAX_QUATS][3];       \
+        prefix##_frame given[LWI_MAX_NODES];  \
+        number rod_m[LW_MAX_RODS];            \
+    } prefix##_point
+
 typedef struct lwi_build_ask {
     const lw_spec *spec;
     double length_m;
@@ -162,10 +185,16 @@ void lwi_joint_from_frames(const lw_spec_joint *joint, const lw_frame *a, const 
 /* state <- state moved by the scaled tangent step y (Cayley on rotations). */
 void lwi_state_step(lwi_state *state, const lwi_system *sys, const double *y);
 
+/* The unknowns that the derivative of a row, of the twist of a node against what it hangs on, or
+ * of a sum of coordinates can see, ascending; all others are zero in it. Returns their number. */
+size_t lwi_row_vars(unsigned short var[LWI_MAX_VARS], const lwi_system *sys, const lwi_row *row);
+size_t lwi_node_vars(unsigned short var[LWI_MAX_VARS], const lwi_system *sys, size_t node);
+size_t lwi_terms_vars(unsigned short var[LWI_MAX_VARS], const lwi_system *sys,
+                      const lw_term *term, size_t n_term);
+
 void lwi_eval_nodes(lwi_eval *ev, const lwi_system *sys, const lwi_state *state);
-/* Residuals of rows [and derivatives, ld columns, scaled] of the given block, -1 = all rows.
- * Rows of a block keep their order. Returns the number of rows. For one block, columns are those
- * of lwi_block_vars. */
+/* Residuals of all rows [and derivatives, ld columns, scaled; NULL: none]. Returns the number of
+ * rows. */
 size_t lwi_eval_rows(double *res, double *jac, size_t ld, const lwi_system *sys,
                      const lwi_state *state, const lwi_eval *ev);
 double lwi_row_residual(const lwi_system *sys, const lwi_row *row, const lwi_state *state,

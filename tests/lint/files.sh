@@ -33,5 +33,5 @@ files() {
 
 # shellcheck disable=SC2034 # used by the checks
 rooms=(core server clients deploy tests)
-export c_files='\.(c|h|cpp)$'
-export source_files='(\.(c|h|cpp|py|sh|js|mjs|sql)|^tests/run|^deploy/up|^deploy/down)$'
+export c_files='\.(c|h|inc|cpp)$'
+export source_files='(\.(c|h|inc|cpp|py|sh|js|mjs|sql)|^tests/run|^deploy/up|^deploy/down)$'

@@ -24,7 +24,7 @@ for room in "${rooms[@]}"; do
     [ -n "$name" ] || continue
     [ -e "$room/$name" ] || [ -e "$name" ] || [ -e "$room/include/$name" ] ||
       fault "$room/MAP.md" "names $name, which is not there"
-  done < <(grep -E '/.*\.(c|h|cpp|py|sh|js|mjs|sql)$' <<<"$named" || true)
+  done < <(grep -E '/.*\.(c|h|inc|cpp|py|sh|js|mjs|sql)$' <<<"$named" || true)
 done
 
 finish "maps ($count files)"
