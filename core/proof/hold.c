@@ -1,0 +1,139 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Do the drives hold the tool on a whole interval? Where the inverse system solves every row and the
+ * tool moves in six directions, that is the rank of the drive rates by output rates. Else the
+ * closure rows of the whole mechanism are stacked on its drives: full column rank says that with
+ * all drives locked nothing moves, freedoms gained at a constraint singularity included. */
+#include "../math/tol.h"
+#include "../math/vec3.h"
+#include "../query/margin.h"
+#include "prove.h"
+
+#include <stdint.h>
+
+/* Displacements of all nodes of the whole system from the bodies, screws from the side of a joint
+ * whose body is known: an axis stands still in both. False where a node in between is no body. */
+static bool place_whole(lwi_prove *p)
+{
+    const lwi_system *whole = p->model->whole;
+    bool known[LWI_MAX_NODES] = {false};
+    lwi_pm_eval *ev = p->whole_eval;
+    for (size_t i = 0; i < p->model->spec->n_body; i++) {
+        size_t n = whole->body_node[i];
+        if (!known[n]) {
+            ev->node[n] = p->eval->node[p->sys->body_node[i]];
+            known[n] = true;
+        }
+    }
+    for (size_t k = 0; k < whole->n_element; k++) {
+        const lwi_element *el = &whole->element[k];
+        size_t from = known[el->parent] ? el->parent : el->child;
+        if (!known[from] || (el->kind >= LWI_BALL && !known[el->parent])) {
+            return false;
+        }
+        if (el->kind == LWI_FREE) {
+            from = el->child;
+        }
+        if (el->kind != LWI_SLIDE) {
+            lwi_pm_place(ev->p[k], &ev->node[from], el->at);
+        }
+        if (el->kind < LWI_BALL) {
+            lwi_pm_rotate(ev->w[k], ev->node[from].rot, el->axis);
+            for (int i = 0; i < 3 && el->sign != 1.0; i++) {
+                ev->w[k][i] = lwi_pm_scale(ev->w[k][i], el->sign);
+            }
+        }
+    }
+    return true;
+}
+
+/* Closure rows times `weight`, then scaled drives, in p->big[2]; returns the number of rows. */
+static size_t stack(lwi_prove *p, double weight)
+{
+    const lwi_system *whole = p->model->whole;
+    const lw_spec *spec = p->model->spec;
+    size_t n = whole->n_var;
+    lwi_pm *a = p->big[2];
+    for (size_t i = 0; i < (whole->n_row + spec->n_drive) * n; i++) {
+        a[i] = lwi_pm_const(0.0);
+    }
+    for (size_t i = 0; i < whole->n_row; i++) {
+        lwi_pm *row = a + i * n;
+        (void)lwi_pm_row(row, NULL, whole, &whole->row[i], p->whole_point, p->whole_eval,
+                         &p->inputs);
+        for (size_t j = 0; j < n && weight != 1.0; j++) {
+            row[j] = lwi_pm_scale(row[j], weight);
+        }
+    }
+    for (size_t d = 0; d < spec->n_drive; d++) {
+        lwi_pm *row = a + (whole->n_row + d) * n;
+        lwi_pm value;
+        (void)lwi_pm_terms(&value, row, NULL, whole, p->whole_point, p->whole_eval,
+                           spec->drive[d].term, spec->drive[d].n_term, &p->inputs);
+        for (size_t j = 0; j < n && !spec->drive[d].turning; j++) {
+            row[j] = lwi_pm_scale(row[j], 1.0 / p->model->length_m);
+        }
+    }
+    return whole->n_row + spec->n_drive;
+}
+
+static double largest(const lwi_pm *a, size_t n)
+{
+    double sum = 0.0;
+    for (size_t i = 0; i < n; i++) {
+        double m = lwi_pm_mag(a[i]);
+        sum += m * m;
+    }
+    return sqrt(sum);
+}
+
+/* The least singular value against the threshold of postures; where it is asked for, the largest
+ * bound that can be proved. */
+static bool judge(lwi_prove *p, const lwi_pm *a, size_t rows, size_t cols, bool asked)
+{
+    double least = LWI_RANK_POSTURE * largest(a, rows * cols);
+    if (!lwi_rank_prepare(p->rank, a, rows, cols, cols)) {
+        return false;
+    }
+    if (asked) {
+        p->hold = lwi_rank_most(p->rank);
+        return p->hold > least;
+    }
+    p->hold = least;
+    return lwi_rank_at_least(p->rank, least);
+}
+
+static bool hold_of_rates(lwi_prove *p)
+{
+    const lw_spec *spec = p->model->spec;
+    size_t m = p->inputs.m;
+    lwi_pm *a = p->big[2];
+    for (size_t d = 0; d < spec->n_drive; d++) {
+        for (size_t o = 0; o < m; o++) {
+            double s = (spec->drive[d].turning ? 1.0 : 1.0 / p->model->length_m) /
+                       lwi_output_scale(p->model, o);
+            a[d * m + o] = lwi_pm_scale(p->rates[d * m + o], s);
+        }
+    }
+    return judge(p, a, spec->n_drive, m, false);
+}
+
+bool lwi_hold_model(lwi_prove *p)
+{
+    const lwi_system *whole = p->model->whole;
+    bool asked = p->min->asked[LW_MARGIN_HOLD];
+    if (!p->whole_needed && !asked) {
+        return hold_of_rates(p);
+    }
+    if (!place_whole(p)) {
+        p->stage = LWI_STAGE_UNSUPPORTED;
+        return false;
+    }
+    /* Along the freedoms the closure rows vanish: times anything they leave the hold as it is, and
+     * the larger the factor the nearer the least singular value of the stack comes to it. */
+    size_t rows = stack(p, asked ? 16.0 : 1.0);
+    bool held = judge(p, p->big[2], rows, whole->n_var, asked);
+    if (asked) {
+        p->low[LW_MARGIN_HOLD] = p->hold;
+    }
+    return held;
+}
