@@ -22,6 +22,15 @@
 /* A limb's scaled determinant below this is "0" in a mode text, and the limb singular: at a double
  * root it carries about 1e-8 of rounding. */
 #define LWI_SIGN_ZERO 1e-7
+/* A screw's turn, shift or pitch below this, scaled, is none; a joint whose share in a motion is
+ * below it rests. Null directions are known to about 1e-7 at a double root. */
+#define LWI_MOTION_ZERO 1e-6
+/* A motion is a limb's own where no joint outside the limb moves more than this. */
+#define LWI_OWN_MOTION 1e-4
+/* Singular values closer than this, relative, count as one multiple value: symmetric postures. */
+#define LWI_SAME_VALUE 1e-6
+/* Steps are measured at the tool (or the drives) only where that sees every motion this well. */
+#define LWI_STEP_SEEN 1e-3
 /* Largest scaled move of one tracking step. */
 #define LWI_TRACK_STEP 0.35
 

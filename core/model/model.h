@@ -71,6 +71,7 @@ struct lw_model {
     lw_mode home_mode;
     bool drive_moves_coord[LW_MAX_COORDS];
 };
+    bool drive_spare[LW_MAX_DRIVES]; /* at nearly all postures the others hold the machine alone */
 
 /* Buffers of the constrained Gauss-Newton step, sized for one system and its goals. */
 struct lwi_goal;
@@ -118,6 +119,8 @@ struct lw_work {
     lw_jacobian_answer jacobian;
     lw_margin_answer margin;
     lw_reach_answer reach;
+    lw_singular_answer singular;
+    struct lwi_singular_work *singular_work;
 };
 enum {
     LWI_SPARE = 4, /* solution slots behind the list: posture, forward fit, start, reach */

@@ -79,6 +79,22 @@ static size_t rank_at(double *a, size_t rows, size_t cols)
     return rank;
 }
 
+/* Drives without which the others hold the machine here: spare in general. */
+static void mark_spare(lw_model *m, const lwi_rates *r, lw_work *work)
+{
+    double *all = work->matrix[2];
+    lwi_scaled_drives(all, m, r, work);
+    for (size_t d = 0; d < r->n_drive && r->n_drive > r->m; d++) {
+        size_t n = 0;
+        for (size_t i = 0; i < r->n_drive; i++) {
+            if (i != d) {
+                memcpy(work->matrix[1] + n++ * r->m, all + i * r->m, r->m * sizeof *all);
+            }
+        }
+        m->drive_spare[d] = m->drive_spare[d] || rank_at(work->matrix[1], n, r->m) == r->m;
+    }
+}
+
 /* Generic ranks of outputs and drives over the samples. */
 static void check_ranks(lw_model *m, lwi_samples *s, lw_work *work)
 {
@@ -99,6 +115,7 @@ static void check_ranks(lw_model *m, lwi_samples *s, lw_work *work)
         lwi_scaled_drives(work->matrix[1], m, &rates, work);
         rank = rank_at(work->matrix[1], rates.n_drive, rates.m);
         drive_rank = rank > drive_rank ? rank : drive_rank;
+        mark_spare(m, &rates, work);
     }
     char got[32];
     char expected[32];

@@ -6,6 +6,7 @@
 
 #include "../math/tol.h"
 #include "../math/vec3.h"
+#include "singular.h"
 
 #include <stdint.h>
 
@@ -154,14 +155,11 @@ void lwi_margin_travel(lw_margin_answer *out, const lw_model *m, const lw_soluti
                                                              : "m";
 }
 
-static void rank_of(lw_rank_info *info, double *a, size_t rows, size_t cols)
+static void rank_info(lw_rank_info *info, const double *sv, size_t rows, size_t cols)
 {
-    double sv[LWI_MAX_VARS];
     size_t n = rows < cols ? rows : cols;
-    lwi_svd(a, rows, cols, cols, sv, NULL);
     info->rows = rows;
     info->columns = cols;
-    info->rank_generic = n;
     info->threshold = LWI_RANK_POSTURE;
     info->n_singular = n < LW_MAX_OUTPUTS ? n : LW_MAX_OUTPUTS;
     info->rank = 0;
@@ -171,6 +169,34 @@ static void rank_of(lw_rank_info *info, double *a, size_t rows, size_t cols)
         }
         info->rank += sv[0] > 0.0 && sv[i] > LWI_RANK_POSTURE * sv[0];
     }
+}
+
+/* Singular values of the scaled A K, which is left in matrix[3], and T K; with their vectors where
+ * they are to be analysed. Returns the smallest of A K. */
+static double ranks(lw_margin_answer *out, const lw_model *m, const lwi_rates *r, bool analysed,
+                    lw_work *work)
+{
+    double sv[LWI_MAX_VARS];
+    double *scaled = work->matrix[3];
+    double *a = work->matrix[1];
+    lwi_factors *f = work->singular_work->of;
+    lwi_scaled_drives(scaled, m, r, work);
+    if (analysed) {
+        memcpy(f[LWI_OF_DRIVES].u, scaled, r->n_drive * r->m * sizeof *scaled);
+        lwi_decompose(&f[LWI_OF_DRIVES], r->n_drive, r->m, work);
+        lwi_scaled_outputs(f[LWI_OF_TOOL].u, m, r, work);
+        lwi_decompose(&f[LWI_OF_TOOL], r->n_output, r->m, work);
+        rank_info(&out->tool, f[LWI_OF_TOOL].sv, r->n_output, r->m);
+        memcpy(sv, f[LWI_OF_DRIVES].sv, r->m * sizeof *sv);
+    } else {
+        lwi_scaled_outputs(a, m, r, work);
+        lwi_svd(a, r->n_output, r->m, r->m, sv, NULL);
+        rank_info(&out->tool, sv, r->n_output, r->m);
+        memcpy(a, scaled, r->n_drive * r->m * sizeof *scaled);
+        lwi_svd(a, r->n_drive, r->m, r->m, sv, NULL);
+    }
+    rank_info(&out->drives, sv, r->n_drive, r->m);
+    return r->n_drive >= r->m ? sv[r->m - 1] : 0.0;
 }
 
 /* Each drive left out in turn, free to move. */
@@ -214,63 +240,92 @@ static void leave_out(lw_margin_answer *out, const lwi_rates *r, const double *s
     }
 }
 
-static void name_outcome(lw_margin_answer *out)
+static void name_outcome(lw_margin_answer *out, const lw_model *m)
 {
-    if ((out->classes & LW_CLASS_CONSTRAINT) != 0) {
+    bool spent = false; /* a drive that is spare elsewhere is needed here */
+    for (size_t d = 0; d < out->n_drive; d++) {
+        spent = spent || (m->drive_spare[d] && out->indispensable[d]);
+    }
+    bool inverse = (out->classes & LW_CLASS_INVERSE) != 0;
+    bool constraint = (out->classes & LW_CLASS_CONSTRAINT) != 0;
+    if (!out->held) {
         out->outcome = LW_OUTCOME_SINGULAR;
-        out->reason = "constraint singularity: the mechanism gains a freedom here";
-    } else if ((out->classes & LW_CLASS_FORWARD) != 0) {
-        out->outcome = LW_OUTCOME_SINGULAR;
-        out->reason = "forward singularity: with all drives locked something can still move";
+        out->reason =
+            constraint && inverse ? "constraint and inverse singularity: the mechanism gains a "
+                                    "freedom that the drives do not hold, and a tool direction is "
+                                    "lost"
+            : constraint ? "constraint singularity: the mechanism gains a freedom here, and the "
+                           "drives do not hold it"
+            : inverse ? "forward and inverse singularity: with all drives locked something can "
+                        "still move, and a tool direction is lost"
+                      : "forward singularity: with all drives locked something can still move";
     } else if (!out->solution->within_limits) {
         out->outcome = LW_OUTCOME_LIMIT;
         out->reason = "the posture is beyond a limit";
     } else {
         out->outcome = LW_OUTCOME_OK;
-        out->reason = (out->classes & LW_CLASS_INVERSE) != 0
-                          ? "inverse singularity: a tool direction is lost; the drives hold"
-                          : NULL;
+        out->reason =
+            constraint ? "constraint singularity: the mechanism gains a freedom here; the drives "
+                         "hold it"
+            : inverse && spent ? "inverse singularity: a tool direction is lost; still held, but "
+                                 "drives are no longer spare"
+            : inverse ? "inverse singularity: a tool direction is lost; the drives hold"
+            : spent   ? "still held, but drives are no longer spare"
+                      : NULL;
+    }
+}
+
+static void hold_of(lw_margin_answer *out, const lw_model *m, const lwi_rates *r,
+                    double smallest)
+{
+    lw_margin_value *hold = &out->margin[LW_MARGIN_HOLD];
+    hold->asked = true;
+    hold->value = smallest;
+    hold->drive = -1;
+    hold->coord = SIZE_MAX;
+    hold->amount_unit = "";
+    out->hold_length_m = m->length_m;
+    out->spare_hold_drive = -1;
+    for (size_t d = 0; d < r->n_drive; d++) {
+        if (out->spare_hold_drive < 0 || out->hold_without[d] < out->spare_hold) {
+            out->spare_hold = out->hold_without[d];
+            out->spare_hold_drive = (int)d;
+        }
     }
 }
 
 void lwi_margin_at(lw_margin_answer *out, const lw_model *m, const lw_spec_tool *tool,
-                   const lw_solution *sol, lw_work *work)
+                   const lw_solution *sol, bool analysed, lw_work *work)
 {
     lwi_rates r;
     memset(out, 0, sizeof *out);
     out->solution = sol;
     lwi_rates_at(&r, m, tool, &sol->config, sol->tool.pos_m, work);
-    double *scaled = work->matrix[3];
-    lwi_scaled_drives(scaled, m, &r, work);
-    memcpy(work->matrix[1], scaled, r.n_drive * r.m * sizeof *scaled);
-    rank_of(&out->drives, work->matrix[1], r.n_drive, r.m);
-    lwi_scaled_outputs(work->matrix[1], m, &r, work);
-    rank_of(&out->tool, work->matrix[1], r.n_output, r.m);
-    out->drives.rank_generic = r.m;
+    bool lost = m->rank > 0 && !(r.closure_ratio > LWI_RANK_POSTURE);
+    if (lost) {
+        lwi_rates_widen(&r, m, tool, sol->tool.pos_m, LWI_RANK_POSTURE, work);
+    }
+    double smallest = ranks(out, m, &r, analysed, work);
+    out->drives.rank_generic = m->mobility;
+    out->tool.rank_generic = r.n_output < m->mobility ? r.n_output : m->mobility;
     out->closure.rows = m->whole->n_row;
     out->closure.columns = m->whole->n_var;
     out->closure.rank_generic = m->rank;
     out->closure.threshold = LWI_RANK_POSTURE;
     out->closure_smallest = r.closure_ratio;
     out->closure_generic = m->report.rank_kept;
-    bool lost = m->rank > 0 && !(r.closure_ratio > LWI_RANK_POSTURE);
-    out->closure.rank = lost ? m->rank - 1 : m->rank;
-    out->classes = (out->drives.rank < r.m ? LW_CLASS_FORWARD : 0U) |
+    out->closure.rank = m->whole->n_var - r.m;
+    out->held = out->drives.rank == r.m;
+    out->classes = (out->held ? 0U : LW_CLASS_FORWARD) |
                    (out->tool.rank < out->tool.rank_generic ? LW_CLASS_INVERSE : 0U) |
                    (lost ? LW_CLASS_CONSTRAINT : 0U);
-    leave_out(out, &r, scaled, work);
+    leave_out(out, &r, work->matrix[3], work);
     out->n_limb = m->n_limb;
     for (size_t i = 0; i < m->n_limb; i++) {
         (void)lwi_limb_branch(&out->limb_value[i], m, &m->limb[i], &sol->config);
         out->limb_singular[i] = !(fabs(out->limb_value[i]) > LWI_SIGN_ZERO);
     }
-    lw_margin_value *hold = &out->margin[LW_MARGIN_HOLD];
-    hold->asked = true;
-    hold->value = r.n_drive >= r.m ? out->drives.singular[r.m - 1] : 0.0;
-    hold->drive = -1;
-    hold->coord = SIZE_MAX;
-    hold->amount_unit = "";
-    out->hold_length_m = m->length_m;
+    hold_of(out, m, &r, smallest);
     lwi_margin_accuracy(out, m, &r, work);
     lwi_margin_load(out, m, &r, work);
     lwi_margin_speed(out, m, &r, work);
@@ -282,7 +337,12 @@ void lwi_margin_at(lw_margin_answer *out, const lw_model *m, const lw_spec_tool 
             out->least = i;
         }
     }
-    name_outcome(out);
+    name_outcome(out, m);
+    if (analysed) {
+        lwi_singular_place at = {m, tool, sol, &r, work};
+        lwi_singular_at(&work->singular, out, &at);
+        out->singular = &work->singular;
+    }
 }
 
 lw_code lw_margin(const lw_margin_answer **out, const lw_model *m, size_t tool,
@@ -309,7 +369,7 @@ lw_code lw_margin(const lw_margin_answer **out, const lw_model *m, size_t tool,
     }
     lw_outcome before = posture->outcome;
     const char *reason = posture->reason;
-    lwi_margin_at(&work->margin, m, t, posture->solution, work);
+    lwi_margin_at(&work->margin, m, t, posture->solution, true, work);
     if (before == LW_OUTCOME_INCONSISTENT) {
         work->margin.outcome = before;
         work->margin.reason = reason;

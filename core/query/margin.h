@@ -11,9 +11,9 @@ bool lwi_accuracy_asked(const lw_model *model);
 bool lwi_load_asked(const lw_model *model);
 bool lwi_speed_asked(const lw_model *model);
 
-/* All margins and classes at a finished solution, into work->margin. */
+/* All margins and classes at a finished solution; `analysed`: the singularity part as well. */
 void lwi_margin_at(lw_margin_answer *out, const lw_model *model, const lw_spec_tool *tool,
-                   const lw_solution *solution, lw_work *work);
+                   const lw_solution *solution, bool analysed, lw_work *work);
 
 /* One file a margin. They read the rates in work and write out->margin[...]. */
 void lwi_margin_accuracy(lw_margin_answer *out, const lw_model *model, const lwi_rates *rates,

@@ -24,10 +24,10 @@ static void take_solution(lw_reach_answer *a, const lw_model *m, const lw_soluti
 static void judge_margins(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
                           const lw_reach_ask *ask, lw_work *work)
 {
-    lwi_margin_at(&work->margin, m, tool, a->solution, work);
+    lwi_margin_at(&work->margin, m, tool, a->solution, false, work);
     a->margin = &work->margin;
     a->failed_margin = -1;
-    if ((work->margin.classes & (LW_CLASS_FORWARD | LW_CLASS_CONSTRAINT)) != 0) {
+    if (!work->margin.held) {
         a->outcome = LW_OUTCOME_SINGULAR;
         a->reason = work->margin.reason;
         return;

@@ -2,6 +2,7 @@
 /* Work objects: every buffer a question needs, allocated once. */
 #include "../math/vec3.h"
 #include "../solve/newton.h"
+#include "singular.h"
 
 #include <stdlib.h>
 
@@ -81,6 +82,10 @@ static lw_code open_all(lw_work *w, const lw_model *m, lw_err *err)
             return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
         }
     }
+    lw_code rc = lwi_singular_work_open(&w->singular_work, n, err);
+    if (rc != LW_OK) {
+        return rc;
+    }
     return lwi_newton_work_open(&w->newton, n, m->whole->n_row, LWI_MAX_GOALS, err);
 }
 
@@ -108,6 +113,7 @@ void lw_work_free(lw_work *w)
     free(w->solution);
     free(w->config_store);
     free(w->limb_result);
+    lwi_singular_work_close(w->singular_work);
     free(w->k);
     free(w->ak);
     free(w->tk);

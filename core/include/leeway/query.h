@@ -214,11 +214,75 @@ typedef struct lw_rank_info {
 
 enum { LW_CLASS_FORWARD = 1, LW_CLASS_INVERSE = 2, LW_CLASS_CONSTRAINT = 4 };
 
+/* A motion of the tool, or a motion that is lost, as a screw of the fixed frame. */
+typedef enum lw_screw_kind {
+    LW_SCREW_NONE,  /* the tool has no part in it */
+    LW_SCREW_SHIFT, /* along the axis */
+    LW_SCREW_TURN,  /* about the axis */
+    LW_SCREW_TWIST  /* both at once */
+} lw_screw_kind;
+
+typedef struct lw_screw {
+    lw_screw_kind kind;
+    double axis[3];    /* unit */
+    double point_m[3]; /* point of the axis nearest to the tool point */
+    double pitch_m;    /* TWIST: shift along the axis per full turn */
+} lw_screw;
+
+/* One singular value of a rate matrix and what belongs to it. Shares are dimensionless, lengths
+ * over the characteristic length, the largest joint share is 1. */
+typedef struct lw_weak {
+    double value;
+    bool lost; /* below the threshold: counts as zero */
+    /* Drives: the motion that the drives hold least (lost: not at all). Tool: the motion that the
+     * joints give least (lost: not at all). A lost motion is a shift along this very line, a turn
+     * about this direction, or, with a pitch, every motion with shift + pitch * turns not zero. */
+    lw_screw screw;
+    double output[LW_MAX_OUTPUTS]; /* the same in outputs: unit vector, lengths scaled */
+    double drive[LW_MAX_DRIVES];   /* drive shares */
+    double coord[LW_MAX_COORDS];   /* joint shares; tool, lost: joints that move with it at rest */
+    double ball[LW_MAX_BALLS];     /* turning shares of spherical joints, >= 0 */
+    bool limb[LW_MAX_LIMBS];       /* limbs with a joint that moves */
+} lw_weak;
+enum { LW_MAX_WEAK = 6 };
+
+/* How to get away from a singularity: the motion in which the smallest singular value grows
+ * fastest, exact to first order (second derivatives of the closure rows). */
+typedef enum lw_leave_by {
+    LW_LEAVE_TOOL,   /* the unit step is measured at the outputs */
+    LW_LEAVE_DRIVES, /* at the drives, where the outputs can not tell */
+    LW_LEAVE_JOINTS  /* over all joints, where neither can */
+} lw_leave_by;
+
+typedef struct lw_leave {
+    bool known; /* false: to first order no direction makes it grow */
+    lw_leave_by by;
+    bool either_way; /* lost: the opposite direction leaves as well */
+    double rate;     /* growth per unit step; 1 = one radian or one characteristic length */
+    double output[LW_MAX_OUTPUTS]; /* the unit step, m or rad */
+    double drive[LW_MAX_DRIVES];
+} lw_leave;
+
+typedef struct lw_singular_answer {
+    size_t freedoms;          /* of the posture: more than the mobility where constraints fail */
+    size_t n_drives, n_tool;  /* all that are lost, else the one that is weakest */
+    lw_weak drives[LW_MAX_WEAK];
+    lw_weak tool[LW_MAX_WEAK];
+    lw_leave leave_drives, leave_tool;
+    double hold_braked[LW_MAX_DRIVES]; /* a drive stuck: hold of the others over what it leaves */
+    size_t freedoms_braked[LW_MAX_DRIVES];
+    bool no_longer_spare[LW_MAX_DRIVES];
+    size_t n_preload;         /* every preload direction: an orthonormal basis, Nm and N times the
+                               * characteristic length */
+    double preload[LW_MAX_DRIVES][LW_MAX_DRIVES];
+} lw_singular_answer;
+
 typedef struct lw_margin_answer {
     lw_outcome outcome;  /* OK, or SINGULAR where hold is lost; posture outcomes otherwise */
     const char *reason;
     const lw_solution *solution;
     unsigned classes;    /* LW_CLASS_ bits, 0 = regular */
+    bool held;           /* with all drives locked nothing moves, to first order */
     lw_rank_info drives; /* A K */
     lw_rank_info tool;   /* T K */
     lw_rank_info closure;/* G: singular values of the kept rows: smallest only */
@@ -232,6 +296,9 @@ typedef struct lw_margin_answer {
     bool indispensable[LW_MAX_DRIVES];
     double preload[LW_MAX_DRIVES];   /* unit preload direction where redundancy is 1, else 0 */
     lw_margin_value margin[LW_MARGIN_COUNT];
+    double spare_hold;   /* hold after losing the drive whose loss costs most of it, */
+    int spare_hold_drive;/* and that drive; -1 without drives */
+    const lw_singular_answer *singular; /* NULL in answers of reach */
     int least;           /* lw_margin_name of the least ratio margin asked, -1 = none asked */
     double hold_length_m;/* characteristic length behind hold */
 } lw_margin_answer;
