@@ -70,8 +70,8 @@ struct lw_model {
     double *config_store;
     lw_mode home_mode;
     bool drive_moves_coord[LW_MAX_COORDS];
-};
     bool drive_spare[LW_MAX_DRIVES]; /* at nearly all postures the others hold the machine alone */
+};
 
 /* Buffers of the constrained Gauss-Newton step, sized for one system and its goals. */
 struct lwi_goal;
