@@ -10,6 +10,7 @@
 #include "../math/linalg.h"
 
 #include <leeway/model.h>
+#include <leeway/path.h>
 #include <leeway/query.h>
 
 enum { LWI_MAX_PROPAGATE = LW_MAX_JOINTS, LWI_MAX_SOLUTIONS = 256 };
@@ -119,15 +120,20 @@ struct lw_work {
     lw_jacobian_answer jacobian;
     lw_margin_answer margin;
     lw_reach_answer reach;
+    struct lwi_prove *prove; /* core/proof; NULL where moves are not proved */
+    lw_path_answer path;
+    lw_travel_answer travel;
     lw_singular_answer singular;
     struct lwi_singular_work *singular_work;
 };
 enum {
-    LWI_SPARE = 4, /* solution slots behind the list: posture, forward fit, start, reach */
+    LWI_SPARE = 6, /* solution slots behind the list: posture, forward fit, start, reach, moves */
     LWI_SLOT_POSTURE = 0,
     LWI_SLOT_FORWARD = 1,
     LWI_SLOT_START = 2,
-    LWI_SLOT_REACH = 3
+    LWI_SLOT_REACH = 3,
+    LWI_SLOT_MOVE = 4,
+    LWI_SLOT_MOVE_START = 5
 };
 static inline lw_solution *lwi_slot(lw_work *work, size_t slot)
 {

@@ -7,7 +7,6 @@
 #include "../math/vec3.h"
 #include "../query/margin.h"
 #include "prove.h"
-#include "solve_pm.h"
 
 #include <stdint.h>
 
@@ -50,35 +49,17 @@ static void scale_rates(scaled *s, const lwi_prove *p, const double *row_scale, 
 static bool invert_rates(lwi_pm *x, const scaled *s, lwi_prove *p)
 {
     lwi_pm *b = p->big[2];
-    lwi_pm *normal = p->big[3];
     size_t n = s->n;
     size_t m = s->m;
-    if (n < m || n > LWI_SOLVE_MOST) {
+    if (n < m) {
         return false;
     }
-    if (n == m) {
-        for (size_t i = 0; i < n * n; i++) {
-            b[i] = lwi_pm_const(i % (n + 1) == 0 ? 1.0 : 0.0);
-        }
-        if (!lwi_pm_solve(x, s->j, m, b, n, p->big[0], p->big[1])) {
-            return false;
-        }
-    } else {
-        for (size_t i = 0; i < m; i++) {
-            for (size_t k = 0; k < m; k++) {
-                lwi_pm sum = lwi_pm_mul(s->j[i], s->j[k]);
-                for (size_t d = 1; d < n; d++) {
-                    sum = lwi_pm_add(sum, lwi_pm_mul(s->j[d * m + i], s->j[d * m + k]));
-                }
-                normal[i * m + k] = sum;
-            }
-            for (size_t d = 0; d < n; d++) {
-                b[i * n + d] = s->j[d * m + i];
-            }
-        }
-        if (!lwi_pm_solve(x, normal, m, b, n, p->big[0], p->big[1])) {
-            return false;
-        }
+    for (size_t i = 0; i < n * n; i++) {
+        b[i] = lwi_pm_const(i % (n + 1) == 0 ? 1.0 : 0.0);
+    }
+    if (n == m ? !lwi_pm_solve_square(x, s->j, m, b, n, p->solver)
+               : !lwi_pm_solve_least(x, s->j, n, m, NULL, b, n, p->solver)) {
+        return false;
     }
     for (size_t j = 0; j < m; j++) {
         for (size_t d = 0; d < n; d++) {
@@ -321,7 +302,7 @@ static int square_to(lwi_pm *y, const scaled *s, const size_t *pick, lwi_prove *
             }
             b[i] = lwi_pm_neg(s->j[pick[i] * m + perm[k]]);
         }
-        if (!lwi_pm_solve(z, a, k, b, 1, p->big[0], p->big[1])) {
+        if (!lwi_pm_solve_square(z, a, k, b, 1, p->solver)) {
             return -1;
         }
     }

@@ -204,15 +204,16 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, lw_err *err)
     p->in = calloc(in, sizeof *p->in);
     p->solved = calloc(n * p->inputs.m, sizeof *p->solved);
     side = side > 24 ? side : 24;
-    for (int i = 0; i < 4; i++) {
+    for (int i = 0; i < 3; i++) {
         p->big[i] = calloc(side * side, sizeof *p->big[i]);
     }
     p->rank = calloc(1, sizeof *p->rank);
+    p->solver = calloc(1, sizeof *p->solver);
     if (p->whole_needed) {
         p->whole_eval = calloc(1, sizeof *p->whole_eval);
         p->whole_point = calloc(1, sizeof *p->whole_point);
     }
-    if (!p->jac || !p->in || !p->solved || !p->big[0] || !p->big[1] || !p->big[2] || !p->big[3] || !p->rank ||
+    if (!p->jac || !p->in || !p->solved || !p->big[0] || !p->big[1] || !p->big[2] || !p->rank || !p->solver ||
         (p->whole_needed && (!p->whole_eval || !p->whole_point))) {
         return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
     }
@@ -249,10 +250,11 @@ void lwi_prove_free(lwi_prove *p)
     free(p->jac);
     free(p->in);
     free(p->solved);
-    for (int i = 0; i < 4; i++) {
+    for (int i = 0; i < 3; i++) {
         free(p->big[i]);
     }
     free(p->rank);
+    free(p->solver);
     free(p->point_store);
     free(p);
 }

@@ -16,6 +16,7 @@
 #define LWI_PROVE_H
 
 #include "move.h"
+#include "pm_solve.h"
 #include "rank.h"
 
 enum { LWI_BLOCK_VARS = 24, LWI_BLOCK_ROWS = 96 };
@@ -83,8 +84,9 @@ typedef struct lwi_prove {
     lwi_pm arm[3];
     lwi_pm coord[LW_MAX_OUTPUTS];
     lwi_pm *row, *jac, *in, *solved; /* solved: d unknown / d output, n_var x m */
-    lwi_pm *big[4];
+    lwi_pm *big[3];
     lwi_rank_work *rank;
+    lwi_pm_solve_work *solver;
     lwi_pm drive[LW_MAX_DRIVES];
     lwi_pm rod[LW_MAX_RODS];
     lwi_pm rates[LW_MAX_DRIVES * LW_MAX_OUTPUTS]; /* d drive / d output */

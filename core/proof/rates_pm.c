@@ -4,7 +4,6 @@
 #include "../math/tol.h"
 #include "../math/vec3.h"
 #include "prove.h"
-#include "solve_pm.h"
 
 /* How the tool body moves by each output; see query/pose.c for what the others do meanwhile. */
 static void set_inputs(lwi_prove *p)
@@ -53,7 +52,7 @@ static bool block_rates(lwi_prove *p, const lwi_prove_block *block)
     size_t m = p->inputs.m;
     lwi_pm *jac = p->jac + block->jac;
     lwi_pm *in = p->in + block->in;
-    lwi_pm *x = p->big[2];
+    lwi_pm *x = p->big[0];
     for (size_t i = 0; i < n; i++) {
         for (size_t c = 0; c < n; c++) {
             p->row[block->var[c]] = lwi_pm_const(0.0);
@@ -69,7 +68,7 @@ static bool block_rates(lwi_prove *p, const lwi_prove_block *block)
         for (size_t j = 0; j < m; j++) {
             x[j] = lwi_pm_mul(inverse, in[j]);
         }
-    } else if (!lwi_pm_solve(x, jac, n, in, m, p->big[0], p->big[1])) {
+    } else if (!lwi_pm_solve_square(x, jac, n, in, m, p->solver)) {
         return false;
     }
     for (size_t i = 0; i < n; i++) {
@@ -104,8 +103,8 @@ bool lwi_rates_model(lwi_prove *p)
                            spec->drive[d].n_term, &p->inputs);
         for (size_t i = 0; i < n; i++) {
             const lwi_pm g = p->row[var[i]];
-            bool one = lwi_pm_mag(g) == 0.0;
-            for (size_t j = 0; j < m && !one; j++) {
+            bool none = lwi_pm_mag(g) == 0.0;
+            for (size_t j = 0; j < m && !none; j++) {
                 out[j] = lwi_pm_add(out[j], lwi_pm_mul(g, p->solved[var[i] * m + j]));
             }
         }

@@ -11,6 +11,7 @@
  * joints add, rotations by Cayley's map, whose curve turns at |u| at most and bends by |u|^2 |y|
  * more, hence the factor 1 + ROOM. In a ball of radius ROOM / sqrt(n) the steps together move a
  * point by less than exp(ROOM) - 1 of its distances: that is GROW. */
+#include "pm_root.h"
 #include "prove.h"
 
 #include "../math/vec3.h"
@@ -208,17 +209,11 @@ static bool prove_block(lwi_prove *p, lwi_prove_block *block)
     if (!(s > 0.0)) {
         return false;
     }
-    double b = sqrt(residual) / s * OUT;
-    double k = sqrt(bend) / s * OUT;
-    double h = b * k * OUT;
-    if (!(h <= 0.5)) {
-        return false;
-    }
-    double root = sqrt(1.0 - 2.0 * h);
-    block->radius = 2.0 * b / (1.0 + root) * OUT;
-    block->unique = k > 0.0 ? (1.0 + root) / k / OUT : most;
-    block->unique = block->unique < most ? block->unique : most;
-    return block->radius <= block->unique;
+    lwi_pm_root root;
+    lwi_pm_kantorovich(&root, sqrt(residual) * OUT, s, sqrt(bend) * OUT, most);
+    block->radius = root.radius;
+    block->unique = root.unique;
+    return root.holds;
 }
 
 /* Distance of two points over one block's unknowns, as the step that leads from one to the other;

@@ -607,3 +607,24 @@ bool lwi_inverse_one(lw_solution **sol, bool *open, const lw_model *m, const lw_
     *sol = &work->solution[0];
     return true;
 }
+
+/* Of the limbs in their branches of a mode, the first that has no solution at the pose, and by how
+ * much it is too short or too long; SIZE_MAX where all have one. Explicit mechanisms only. */
+size_t lwi_inverse_misses(double *miss_m, const lw_model *m, const lwi_pose_known *pose,
+                          const lw_mode *mode, lw_work *work)
+{
+    place_known(&work->scratch, m, pose);
+    for (size_t i = 0; i < m->n_limb; i++) {
+        unsigned branch;
+        lwi_limb_result *r = &work->limb_result[i * LWI_MAX_BRANCHES];
+        if (!lwi_branch_from_entry(&branch, &m->limb[i], mode->sign[i], mode->branch[i])) {
+            continue;
+        }
+        lwi_limb_solve(r, m, &m->limb[i], branch, &work->scratch);
+        if (!r->real) {
+            *miss_m = r->miss_m;
+            return i;
+        }
+    }
+    return SIZE_MAX;
+}

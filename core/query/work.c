@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Work objects: every buffer a question needs, allocated once. */
 #include "../math/vec3.h"
+#include "../proof/prove.h"
 #include "../solve/newton.h"
 #include "singular.h"
 
@@ -86,6 +87,10 @@ static lw_code open_all(lw_work *w, const lw_model *m, lw_err *err)
     if (rc != LW_OK) {
         return rc;
     }
+    rc = lwi_prove_new(&w->prove, m, err);
+    if (rc != LW_OK) {
+        return rc;
+    }
     return lwi_newton_work_open(&w->newton, n, m->whole->n_row, LWI_MAX_GOALS, err);
 }
 
@@ -113,6 +118,7 @@ void lw_work_free(lw_work *w)
     free(w->solution);
     free(w->config_store);
     free(w->limb_result);
+    lwi_prove_free(w->prove);
     lwi_singular_work_close(w->singular_work);
     free(w->k);
     free(w->ak);

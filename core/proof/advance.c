@@ -1,0 +1,308 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The driver of the proof; see advance.h. Whatever is looked at between proofs is judged as reach
+ * judges a posture, in doubles: a limit broken by more than the slack, hold lost, a margin below its
+ * threshold. */
+#include "advance.h"
+
+#include "../math/tol.h"
+
+#include <stdint.h>
+#include <string.h>
+
+#define SMALLEST 0x1p-22
+#define LOCATED 0x1p-24
+
+typedef enum verdict { GOOD, LIMIT, HOLD, MARGIN, NO_REACH, UNKNOWN } verdict;
+
+typedef struct run {
+    lw_move_answer *a;
+    lwi_prove *p;
+    const lwi_advance_ask *ask;
+    lw_solution *sol;
+    lw_work *work;
+    double low;   /* proved so far */
+    lw_mode mode;
+    int margin;   /* of the last verdict MARGIN */
+    size_t limb;  /* of the last verdict NO_REACH */
+} run;
+
+bool lwi_inverse_one(lw_solution **sol, bool *open, const lw_model *m, const lw_spec_tool *tool,
+                     const lwi_pose_known *pose, const lw_mode *mode, const lw_config *hint,
+                     lw_work *work);
+size_t lwi_inverse_misses(double *miss_m, const lw_model *m, const lwi_pose_known *pose,
+                          const lw_mode *mode, lw_work *work);
+
+/* A margin below its threshold, or hold lost, at the posture in r->sol. */
+static verdict judge_margins(run *r)
+{
+    const lw_margin_min *min = r->ask->min;
+    double worst = 1e300;
+    lw_margin_answer *margin = &r->work->margin;
+    lwi_margin_at(margin, r->p->model, r->ask->tool, r->sol, false, r->work);
+    if (!margin->held) {
+        return HOLD;
+    }
+    r->margin = -1;
+    for (int i = 0; i < LW_MARGIN_COUNT; i++) {
+        double least = min->value[i];
+        double value = margin->margin[i].value;
+        double relative = least > 0.0 ? value / least : 1e300;
+        if (min->asked[i] && margin->margin[i].asked && !(value >= least) && relative < worst) {
+            worst = relative;
+            r->margin = i;
+        }
+    }
+    return r->margin >= 0 ? MARGIN : GOOD;
+}
+
+/* The posture at t, followed from where the proof ended; what is wrong with it. */
+static verdict look(run *r, double t)
+{
+    lwi_prove *p = r->p;
+    if (!lwi_follow_to(p, r->low, t, &r->sol->config)) {
+        lwi_pose_known pose;
+        double miss = 0.0;
+        if (!p->model->explicit_inverse) {
+            return UNKNOWN;
+        }
+        memset(&pose, 0, sizeof pose);
+        lwi_move_at(&pose.body, pose.output_coord, p->move, p->model, t);
+        size_t limb = lwi_inverse_misses(&miss, p->model, &pose, &r->mode, r->work);
+        r->limb = limb;
+        return limb != SIZE_MAX && fabs(miss) > 1e-9 ? NO_REACH : UNKNOWN;
+    }
+    lwi_solution_finish(r->sol, p->model, r->ask->tool);
+    if (!r->sol->within_limits) {
+        return LIMIT;
+    }
+    return judge_margins(r);
+}
+
+/* The first place in (r->low, bad] where something is wrong, to LOCATED; its verdict. */
+static verdict locate(run *r, double *at, double bad)
+{
+    double good = r->low;
+    verdict found = UNKNOWN;
+    while (bad - good > LOCATED) {
+        double mid = 0.5 * (good + bad);
+        verdict v = look(r, mid);
+        if (v == GOOD) {
+            good = mid;
+        } else if (v == UNKNOWN) {
+            break;
+        } else {
+            bad = mid;
+        }
+    }
+    found = look(r, bad);
+    *at = bad;
+    return found;
+}
+
+static void take_limits(lw_move_answer *a, const lw_solution *sol)
+{
+    a->n_limit = sol->n_limit < 4 ? sol->n_limit : 4;
+    for (size_t i = 0; i < a->n_limit; i++) {
+        a->limit[i] = sol->limit[i];
+        if (sol->limit[i].of == LW_LIMIT_DRIVE && a->drive < 0) {
+            a->drive = (int)sol->limit[i].index;
+        }
+    }
+}
+
+/* A witness at `at`, which look() has just seen with verdict v. */
+static void witness(run *r, verdict v, double at)
+{
+    lw_move_answer *a = r->a;
+    a->at = at;
+    switch (v) {
+    case LIMIT:
+        a->outcome = LW_OUTCOME_LIMIT;
+        a->stop = LW_STOP_LIMIT;
+        a->reason = "a limit is passed on the way";
+        take_limits(a, r->sol);
+        break;
+    case HOLD:
+        a->outcome = LW_OUTCOME_SINGULAR;
+        a->stop = LW_STOP_FORWARD;
+        a->reason = "hold is lost on the way: with all drives locked something can still move";
+        break;
+    case MARGIN:
+        a->outcome = LW_OUTCOME_LOW_MARGIN;
+        a->stop = LW_STOP_MARGIN;
+        a->reason = "a margin falls below its threshold on the way";
+        a->margin = r->margin;
+        a->drive = r->work->margin.margin[r->margin].drive;
+        break;
+    case NO_REACH:
+        a->outcome = LW_OUTCOME_OUT_OF_REACH;
+        a->stop = LW_STOP_REACH;
+        a->reason = "a limb cannot follow the tool on the way";
+        a->limb = r->limb;
+        break;
+    case GOOD:
+    case UNKNOWN:
+        break;
+    }
+}
+
+static void undecided(run *r, lw_stop stop, double high, const char *reason)
+{
+    lw_move_answer *a = r->a;
+    a->outcome = LW_OUTCOME_UNDECIDED;
+    a->stop = stop;
+    a->reason = reason;
+    a->at = r->low;
+    a->open_low = r->low;
+    a->open_high = high;
+}
+
+static void take_piece(run *r, double high)
+{
+    const lwi_prove *p = r->p;
+    lw_move_answer *a = r->a;
+    for (int i = 0; i < LW_MARGIN_COUNT; i++) {
+        lw_path_least *least = &a->least[i];
+        if (!r->ask->min->asked[i]) {
+            continue;
+        }
+        double at = 0.5 * (r->low + high) + 0.5 * (high - r->low) * p->met_at[i];
+        least->at_least = least->known ? fmin(least->at_least, p->low[i]) : p->low[i];
+        if (!least->known || p->met[i] < least->value) {
+            least->value = p->met[i];
+            least->at = at;
+        }
+        least->known = true;
+    }
+    if (a->n_piece < r->ask->piece_room && r->ask->piece != NULL) {
+        lw_proof_piece *piece = &r->ask->piece[a->n_piece];
+        memset(piece, 0, sizeof *piece);
+        piece->low = r->low;
+        piece->high = high;
+        piece->tube = p->tube;
+        piece->sigma = p->n_block > 0 ? p->sigma : 0.0;
+        piece->hold = p->hold;
+        memcpy(piece->drive_low, p->drive_low, sizeof piece->drive_low);
+        memcpy(piece->drive_high, p->drive_high, sizeof piece->drive_high);
+        for (int i = 0; i < LW_MARGIN_COUNT; i++) {
+            piece->margin[i] = r->ask->min->asked[i] ? p->low[i] : 0.0;
+        }
+    }
+    a->n_piece++;
+}
+
+/* The smallest interval was not enough. An inverse singularity: beyond it the limb has no solution
+ * (found before this), or has one, in another branch. */
+static void stuck(run *r, double high)
+{
+    const lwi_prove *p = r->p;
+    bool branch = p->stage == LWI_STAGE_FOLLOW || p->stage == LWI_STAGE_BLOCK ||
+                  p->stage == LWI_STAGE_BRANCH;
+    if (!branch) {
+        undecided(r, LW_STOP_RESOLUTION, high,
+                  "the smallest interval was not enough: the way grazes a threshold, a limit or a "
+                  "singular posture here; ask for a lower threshold, or move the way aside");
+        return;
+    }
+    r->a->limb = p->limb;
+    double value = 1.0;
+    if (p->limb < p->model->n_limb && lwi_follow_to(r->p, r->low, r->low, &r->sol->config)) {
+        (void)lwi_limb_branch(&value, p->model, &p->model->limb[p->limb], &r->sol->config);
+    }
+    if (fabs(value) < 1e-3) {
+        r->a->outcome = LW_OUTCOME_OTHER_MODE;
+        r->a->stop = LW_STOP_INVERSE;
+        r->a->reason = "a limb comes to an inverse singularity, where its branches meet: beyond it "
+                       "the way is not kept in one mode";
+        r->a->at = r->low;
+        return;
+    }
+    undecided(r, LW_STOP_RESOLUTION, high,
+              "the branch could not be proved to go on here, nor that it ends");
+}
+
+/* After a failure on [r->low, r->low + step]: true where that settled the move. */
+static bool screen(run *r, double step, double *cap)
+{
+    double mid = r->low + 0.5 * step;
+    double at;
+    verdict v = look(r, mid);
+    if (v == GOOD || v == UNKNOWN) {
+        return false;
+    }
+    v = locate(r, &at, mid);
+    if (v == GOOD || v == UNKNOWN) {
+        return false;
+    }
+    witness(r, v, at);
+    *cap = at;
+    return true;
+}
+
+void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
+                 const lwi_advance_ask *ask, lw_solution *sol, lw_work *work)
+{
+    run r = {.a = a, .p = p, .ask = ask, .sol = sol, .work = work, .limb = SIZE_MAX};
+    double step = 1.0;
+    double cap = 1.0;
+    bool settled = false;
+    a->outcome = LW_OUTCOME_OK;
+    *lost = false;
+    verdict v = look(&r, 0.0);
+    r.mode = sol->mode;
+    if (v != GOOD && v != UNKNOWN) {
+        witness(&r, v, 0.0);
+        *proved = 0.0;
+        return;
+    }
+    while (r.low < cap) {
+        double high = r.low + step < cap ? r.low + step : cap;
+        if (ask->abort != NULL && atomic_load_explicit(ask->abort, memory_order_relaxed)) {
+            undecided(&r, LW_STOP_ABORT, 1.0, "stopped by the time limit of the question");
+            break;
+        }
+        if (a->boxes >= ask->budget) {
+            if (!settled) {
+                undecided(&r, LW_STOP_BUDGET, 1.0,
+                          "the budget ran out: ask with a larger one, or a lower threshold");
+            }
+            break;
+        }
+        a->boxes++;
+        if (lwi_prove_interval(p, r.low, high)) {
+            take_piece(&r, high);
+            lwi_prove_accept(p);
+            r.low = high;
+            step *= 2.0;
+            continue;
+        }
+        if (p->stage == LWI_STAGE_UNSUPPORTED) {
+            undecided(&r, LW_STOP_UNSUPPORTED, 1.0,
+                      "whether the drives hold this mechanism on the way is not proved by this "
+                      "version");
+            break;
+        }
+        if (!settled && screen(&r, high - r.low, &cap)) {
+            settled = true;
+            if (!ask->close_up) {
+                break;
+            }
+            step = 0.5 * (cap - r.low);
+            cap -= LOCATED;
+            continue;
+        }
+        step = 0.5 * (high - r.low);
+        if (step < SMALLEST) {
+            if (!settled) {
+                stuck(&r, high);
+            }
+            break;
+        }
+    }
+    *proved = r.low;
+    if (a->outcome == LW_OUTCOME_OK) {
+        a->at = 1.0;
+        *lost = !lwi_follow_to(p, r.low, r.low, &sol->config);
+        lwi_solution_finish(sol, p->model, ask->tool);
+    }
+}
