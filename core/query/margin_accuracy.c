@@ -176,6 +176,18 @@ static bool evaluate(accuracy *a, const lw_model *m, const lwi_rates *r, size_t 
     return true;
 }
 
+static void describe(lw_margin_value *value, const accuracy *a)
+{
+    double u[3];
+    value->amount = a->amount;
+    value->amount_unit = a->angle ? "rad" : "m";
+    value->has_direction = lwi_unit(u, a->dir);
+    memset(value->direction, 0, sizeof value->direction);
+    if (value->has_direction) {
+        lwi_copy3(value->direction + (a->angle ? 3 : 0), u);
+    }
+}
+
 void lwi_margin_accuracy(lw_margin_answer *out, const lw_model *m, const lwi_rates *r,
                          lw_work *work)
 {
@@ -186,11 +198,6 @@ void lwi_margin_accuracy(lw_margin_answer *out, const lw_model *m, const lwi_rat
     value->coord = spare->coord = (size_t)-1;
     value->amount_unit = spare->amount_unit = "";
     value->asked = spare->asked = lwi_accuracy_asked(m);
-    double hold = 1e300;
-    for (size_t d = 0; d < r->n_drive; d++) {
-        hold = fmin(hold, out->hold_without[d]);
-    }
-    spare->amount = hold;
     if (!value->asked) {
         return;
     }
@@ -199,13 +206,7 @@ void lwi_margin_accuracy(lw_margin_answer *out, const lw_model *m, const lwi_rat
     value->value = held ? a.ratio : 0.0;
     if (held) {
         value->drive = a.drive;
-        value->amount = a.amount;
-        value->amount_unit = a.angle ? "rad" : "m";
-        double u[3];
-        if (lwi_unit(u, a.dir)) {
-            value->has_direction = true;
-            lwi_copy3(value->direction + (a.angle ? 3 : 0), u);
-        }
+        describe(value, &a);
     }
     spare->value = 0.0;
     if (r->n_drive <= r->m || !held) {
@@ -220,6 +221,11 @@ void lwi_margin_accuracy(lw_margin_answer *out, const lw_model *m, const lwi_rat
         if (left < spare->value || spare->drive < 0) {
             spare->value = left;
             spare->drive = (int)d;
+            spare->has_direction = false;
+            spare->amount_unit = "";
+            if (left > 0.0) {
+                describe(spare, &a);
+            }
         }
     }
 }
