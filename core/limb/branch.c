@@ -5,6 +5,7 @@
 #include "../model/model.h"
 
 #include <stdio.h>
+#include <stdlib.h>
 
 void lwi_joint_carry(lw_frame *to, const lw_spec *spec, size_t joint, const double *coord,
                      const double ball[4], bool forward, const lw_frame *from)
@@ -163,14 +164,10 @@ unsigned lwi_limb_branch(double *value, const lw_model *model, const lwi_limb *l
 {
     unsigned branch = raw_bits(value, model, limb, config) ^ limb->home_bits;
     *value = odd(branch) ? -fabs(*value) : fabs(*value);
+    if (limb->classes != NULL) {
+        return lwi_class_of(limb->classes, config, *value > 0.0 ? 1 : -1);
+    }
     return branch;
-}
-
-void lwi_entry_from_branch(signed char *sign, unsigned short *number, const lwi_limb *limb,
-                           unsigned branch)
-{
-    *sign = odd(branch) ? -1 : 1;
-    *number = limb->branches > 2 ? (unsigned short)(branch + 1) : 0;
 }
 
 bool lwi_branch_from_entry(unsigned *branch, const lwi_limb *limb, signed char sign,
@@ -178,6 +175,11 @@ bool lwi_branch_from_entry(unsigned *branch, const lwi_limb *limb, signed char s
 {
     if (sign == 0) {
         return false; /* on the border of two branches */
+    }
+    const lwi_classes *c = limb->classes;
+    if (c != NULL) {
+        *branch = number == 0 ? 0u : (unsigned)number - 1u;
+        return number >= 1 && number <= c->n_class && c->class_sign[*branch] == sign;
     }
     if (limb->branches > 2) {
         *branch = number == 0 ? 0u : (unsigned)number - 1u;
@@ -225,10 +227,10 @@ void lwi_mode_of(lw_mode *mode, const lw_model *model, const lw_config *config)
         double value;
         unsigned branch = lwi_limb_branch(&value, model, limb, config);
         size_t k = mode->count++;
-        lwi_entry_from_branch(&mode->sign[k], &mode->branch[k], limb, branch);
-        if (fabs(value) < LWI_SIGN_ZERO) {
-            mode->sign[k] = 0;
-        }
+        bool numbered = limb->branches > 2 || limb->classes != NULL;
+        mode->sign[k] = fabs(value) < LWI_SIGN_ZERO ? 0 : value > 0.0 ? 1 : -1;
+        mode->branch[k] =
+            numbered && branch != LWI_BRANCH_OPEN ? (unsigned short)(branch + 1) : 0;
     }
 }
 
@@ -241,6 +243,7 @@ static void describe(lw_limb_info *info, const lw_model *m, const lwi_limb *limb
     (void)snprintf(info->name, sizeof info->name, "%s", first);
     info->kind = limb->kind;
     info->branches = limb->kind == LW_LIMB_GENERAL ? 0 : limb->branches;
+    info->classes = limb->classes != NULL ? limb->classes->n_class : 0;
     for (size_t d = 0; d < spec->n_drive; d++) {
         bool moves = false;
         for (size_t t = 0; t < spec->drive[d].n_term; t++) {
@@ -282,7 +285,9 @@ static void describe(lw_limb_info *info, const lw_model *m, const lwi_limb *limb
         words = "class 1 as at home; classes count shoulder, elbow and wrist turned over";
         break;
     case LW_LIMB_GENERAL:
-        words = "sign of the limb's determinant as at home";
+        words = limb->classes != NULL
+                    ? "class 1 as at home; within a class the limb moves past no zero of its determinant"
+                    : "sign of the limb's determinant as at home";
         break;
     }
     (void)snprintf(info->plus, sizeof info->plus, "%s", words);
@@ -330,14 +335,35 @@ static void pick_rows(lwi_limb *limb, const lw_model *m)
     }
 }
 
-void lwi_limbs_home(lw_model *model)
+/* Classes of a general limb, where it has more than two solutions. */
+static lw_code find_classes(lwi_limb *limb, const lw_model *model, lw_err *err)
+{
+    limb->branches = limb->n_pick > 0 ? 2 : 1;
+    lw_code rc = LW_OK;
+    if (limb->n_pick > 0 && limb->n_chain > 0 && limb->classes == NULL) {
+        rc = lwi_classes_find(&limb->classes, model, limb, err);
+    }
+    if (limb->classes != NULL && limb->n_pick > 0 &&
+        lwi_classes_home(limb->classes, &model->home)) {
+        limb->branches = (unsigned)limb->classes->n_class;
+    } else {
+        free(limb->classes);
+        limb->classes = NULL;
+    }
+    return rc;
+}
+
+lw_code lwi_limbs_home(lw_model *model, lw_err *err)
 {
     for (size_t i = 0; i < model->n_limb; i++) {
         lwi_limb *limb = &model->limb[i];
         double value;
         if (limb->kind == LW_LIMB_GENERAL) {
             pick_rows(limb, model);
-            limb->branches = limb->n_pick > 0 ? 2 : 1;
+            lw_code rc = find_classes(limb, model, err);
+            if (rc != LW_OK) {
+                return rc;
+            }
         }
         limb->home_bits = 0;
         limb->home_bits = raw_bits(&value, model, limb, &model->home);
@@ -346,4 +372,13 @@ void lwi_limbs_home(lw_model *model)
     model->report.n_limb = model->n_limb;
     lwi_mode_of(&model->home_mode, model, &model->home);
     model->report.home_mode = model->home_mode;
+    return LW_OK;
+}
+
+void lwi_limbs_free(lw_model *model)
+{
+    for (size_t i = 0; i < model->n_limb; i++) {
+        free(model->limb[i].classes);
+        model->limb[i].classes = NULL;
+    }
 }

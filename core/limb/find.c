@@ -220,10 +220,11 @@ static void recognise(lwi_limb *limb, lw_model *m)
         }
         return;
     }
-    if (limb->n_rod > 0 || !all_revolute(m, limb)) {
+    if (limb->n_rod > 0) {
         return;
     }
-    for (size_t k = 0; k < limb->n_joint; k++) {
+    bool turns = all_revolute(m, limb);
+    for (size_t k = 0; turns && k < limb->n_joint; k++) {
         if (!order_chain(limb, m, limb->joint[k])) {
             continue;
         }
@@ -235,6 +236,14 @@ static void recognise(lwi_limb *limb, lw_model *m)
         if (n == 5 && limb->n_chain == 6 && lwi_wrist_arm_recognise(m, limb)) {
             limb->kind = LW_LIMB_WRIST_ARM;
             limb->branches = 8;
+            return;
+        }
+    }
+    /* Any other chain: from the frame on where it stands there, so that the order of the document's
+     * rows does not matter. */
+    size_t frame = m->fused[m->spec->frame];
+    for (size_t k = 0; k < limb->n_joint; k++) {
+        if (order_chain(limb, m, limb->joint[k]) && m->fused[limb->anchor[0]] == frame) {
             return;
         }
     }

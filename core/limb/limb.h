@@ -8,6 +8,8 @@
 #ifndef LWI_LIMB_H
 #define LWI_LIMB_H
 
+#include "classes.h"
+
 #include <leeway/model.h>
 #include <leeway/query.h>
 
@@ -23,7 +25,8 @@ typedef struct lwi_chain_joint {
 typedef struct lwi_limb {
     lw_limb_kind kind;
     bool counted;        /* appears in mode texts */
-    unsigned branches;   /* 1, 2 or 8; general limbs: 2 signs known, solutions not counted */
+    unsigned branches;   /* 1, 2 or 8; general limbs: classes, or 2 signs known */
+    struct lwi_classes *classes; /* general limbs of more than two solutions; owned by the model */
     unsigned home_bits;  /* raw factor bits at home */
     size_t n_joint;
     size_t joint[LWI_LIMB_JOINTS];
@@ -32,7 +35,7 @@ typedef struct lwi_limb {
     size_t n_body;       /* unknown bodies */
     size_t body[LWI_LIMB_BODIES];
     size_t anchor[2];    /* known bodies at the ends of a chain */
-    size_t n_chain;
+    size_t n_chain;      /* joints in a row from anchor to anchor; 0 = no chain */
     lwi_chain_joint chain[6];
     int block;           /* general: block of the inverse system, -1 none */
     size_t n_var;        /* general: unknowns of that block */
@@ -53,15 +56,16 @@ struct lw_model;
 
 /* Finds limbs and recognises their kinds; fills model->limb. Runs at load. */
 lw_code lwi_limbs_find(lw_model *model, lw_err *err);
-/* Home bits, rows of general limbs, home mode and what the report says of limbs, once home is
- * known. */
-void lwi_limbs_home(lw_model *model);
+/* Home bits, rows and classes of general limbs, home mode and what the report says of limbs, once
+ * home is known. */
+lw_code lwi_limbs_home(lw_model *model, lw_err *err);
+void lwi_limbs_free(lw_model *model);
 
 /* Solves one branch of an explicit limb; known bodies stand in config->body. */
 void lwi_limb_solve(lwi_limb_result *out, const lw_model *model, const lwi_limb *limb,
                     unsigned branch, const lw_config *config);
 /* Branch of a limb at a configuration, and the scaled determinant behind its sign (-1..1,
- * positive on the default branch). */
+ * positive on the default branch). LWI_BRANCH_OPEN where a general limb's class is not found. */
 unsigned lwi_limb_branch(double *value, const lw_model *model, const lwi_limb *limb,
                          const lw_config *config);
 /* Mode of a configuration. */
@@ -74,9 +78,6 @@ bool lwi_branch_from_entry(unsigned *branch, const lwi_limb *limb, signed char s
                            unsigned short number);
 /* Refuses a mode whose entries are not those of this model's limbs: how many, and which classes. */
 lw_code lwi_mode_check(const lw_model *model, const lw_mode *mode, lw_err *err);
-void lwi_entry_from_branch(signed char *sign, unsigned short *number, const lwi_limb *limb,
-                           unsigned branch);
-
 /* Per kind: raw factor bits count from the geometry alone, home_bits is applied by the callers. */
 bool lwi_two_link_recognise(const lw_model *model, const lwi_limb *limb);
 bool lwi_wrist_arm_recognise(const lw_model *model, const lwi_limb *limb);

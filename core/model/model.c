@@ -165,6 +165,7 @@ void lw_model_free(lw_model *m)
     free(m->whole);
     free(m->inverse);
     free(m->config_store);
+    lwi_limbs_free(m);
     lwi_set_free(m->set[0]);
     lwi_set_free(m->set[1]);
     free(m);

@@ -415,7 +415,11 @@ lw_code lwi_validate(lw_model *m, lwi_samples *s, lw_err *err)
     if (rc != LW_OK) {
         return rc;
     }
-    lwi_limbs_home(m);
+    rc = lwi_limbs_home(m, err);
+    if (rc != LW_OK) {
+        lw_work_free(work);
+        return rc;
+    }
     m->report.explicit_inverse = m->explicit_inverse && m->completion.usable;
     check_ranks(m, s, work);
     check_limits(m, &m->reference, "reference", "", work);
@@ -423,7 +427,7 @@ lw_code lwi_validate(lw_model *m, lwi_samples *s, lw_err *err)
     if (!lwi_has_errors(&m->report)) {
         find_home(m, work);
         if (m->spec->home.kind != LW_BY_NOTHING) {
-            lwi_limbs_home(m);
+            rc = lwi_limbs_home(m, err);
             check_limits(m, &m->home, "home", "/home", work);
             singular_posture(m, &m->home, "home", "/home", work);
         }
@@ -433,5 +437,5 @@ lw_code lwi_validate(lw_model *m, lwi_samples *s, lw_err *err)
         check_round_trip(m, s, work);
     }
     lw_work_free(work);
-    return lwi_has_errors(&m->report) ? LW_E_MODEL : LW_OK;
+    return rc == LW_OK && lwi_has_errors(&m->report) ? LW_E_MODEL : rc;
 }

@@ -17,17 +17,24 @@ static int by_number(const void *a, const void *b)
     return x < y ? -1 : x > y ? 1 : 0;
 }
 
+/* Classes that stand in mode texts, 0 where signs alone do. */
+static size_t numbered(const lw_limb_info *limb)
+{
+    return limb->branches > 2 ? limb->branches : limb->classes;
+}
+
 /* Choices of one limb: "+", or "+" and "-", or signs with classes. */
 static size_t choices(const lw_limb_info *limb)
 {
-    return limb->branches > 2 ? 2 * limb->branches : limb->branches == 1 ? 1 : 2;
+    return numbered(limb) > 0 ? 2 * numbered(limb) : limb->branches == 1 ? 1 : 2;
 }
 
 static void set_choice(lw_mode *mode, size_t i, const lw_limb_info *limb, size_t choice)
 {
-    if (limb->branches > 2) {
-        mode->sign[i] = choice < limb->branches ? 1 : -1;
-        mode->branch[i] = (unsigned short)(choice % limb->branches + 1);
+    size_t n = numbered(limb);
+    if (n > 0) {
+        mode->sign[i] = choice < n ? 1 : -1;
+        mode->branch[i] = (unsigned short)(choice % n + 1);
     } else {
         mode->sign[i] = choice == 0 ? 1 : -1;
         mode->branch[i] = 0;

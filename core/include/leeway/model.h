@@ -37,6 +37,7 @@ typedef struct lw_limb_info {
     char name[LW_NAME_SIZE];       /* of its first joint or rod in document order */
     lw_limb_kind kind;
     size_t branches;               /* inverse solutions counted: 1, 2, 8; 0 = not known */
+    size_t classes;                /* branch classes where they are numbered and not counted so */
     size_t n_drive;
     size_t drive[LW_MAX_DRIVES];   /* drives that move it */
     char plus[96];                 /* what + means, in words */
