@@ -46,8 +46,31 @@ lw_code lwi_classes_find(lwi_classes **out, const struct lw_model *model,
 /* Numbers the classes from home on: home's is the first, the others in the order of the samples.
  * False if home lies on a border, or in none of them. */
 bool lwi_classes_home(lwi_classes *c, const lw_config *home);
-/* Class of a configuration, whose sign against home is given; LWI_BRANCH_OPEN if none of the samples
- * can be reached. */
+/* Class of a configuration, whose sign against home is given; LWI_BRANCH_OPEN if none of the
+ * samples can be reached. */
 unsigned lwi_class_of(const lwi_classes *c, const lw_config *config, int sign);
+
+/* ---- shared by the files of the classes ------------------------------------------------------ */
+
+/* A determinant this small against its typical size is on a border. */
+#define LWI_CLASS_BORDER 1e-9
+
+typedef struct lwi_chain_state {
+    double w[6][3], v[6][3]; /* each screw: turn, and velocity of the end point over the length */
+    lw_frame end;            /* displacement of the last body */
+    double point[3];         /* where the end point stands */
+} lwi_chain_state;
+
+void lwi_chain_open(lwi_chain_state *o, const lwi_classes *c, const double *q);
+/* One column a screw; a ball leaves the velocity of its centre alone. Returns the side. */
+size_t lwi_chain_columns(double *a, const lwi_classes *c, const lwi_chain_state *o);
+double lwi_chain_det(const lwi_classes *c, const double *q);
+/* Difference the short way round; its size in radians and characteristic lengths. */
+double lwi_chain_apart(double *d, const lwi_classes *c, const double *from, const double *to);
+/* The determinant keeps its sign all the straight way. */
+bool lwi_chain_straight(const lwi_classes *c, const double *from, const double *to, double sign);
+/* Nodes of the sign of `q` among the first n_node, the nearest first; returns their number. */
+size_t lwi_chain_near(size_t *order, const lwi_classes *c, const double *q, int sign,
+                      size_t n_node);
 
 #endif

@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Branch classes of limbs that are solved by iteration. Where two inverse solutions share a class a
- * way leads from one to the other without a singularity; where they do not, none does (P. Wenger,
- * cuspidal and noncuspidal robot manipulators, Robotica 25(6), 2007: the arm has four solutions of a
- * point in two aspects, two in each). Determinants here are taken by differences of the table's
+/* Branch classes of limbs that are solved by iteration. Where two inverse solutions share a class
+ * a way leads from one to the other without a singularity; where they do not, none does (P. Wenger,
+ * cuspidal and noncuspidal robot manipulators, Robotica 25(6), 2007: the arm has four solutions of
+ * a point in two aspects, two in each). Determinants here are taken by differences of the table's
  * product, apart from the core. */
 #include "lwt.h"
 #include "lwt_all.h"
