@@ -51,6 +51,11 @@ typedef struct lwi_rank_work {
  * middle matrix without rank. */
 bool lwi_rank_prepare(lwi_rank_work *w, const lwi_pm *a, size_t rows, size_t cols, size_t ld);
 
+/* The same with Q given, by columns (q[j * rows + i]), for example that of a neighbouring interval,
+ * which is left in w->q: any matrix may be given, a good one is near the polar factor. */
+bool lwi_rank_prepare_with(lwi_rank_work *w, const double *q, const lwi_pm *a, size_t rows,
+                           size_t cols, size_t ld);
+
 /* Proves sigma_min >= s0 for all d, s0 >= 0; sigma_min > 0 with s0 = 0. */
 bool lwi_rank_at_least(lwi_rank_work *w, double s0);
 

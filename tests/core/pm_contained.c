@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Containment of polynomial models, operation by operation. Each input stands for functions; members
- * of it, mostly on the edge of its rest, are put through the operation in numbers of 113 bits (the
- * compiler's __float128 with libquadmath, the outside reference here), and what comes out must lie
- * in the model that the operation gives, at places where the errors do not cancel.
+/* Containment of polynomial models, operation by operation. Each input stands for functions;
+ * members of it, mostly on the edge of its rest, are put through the operation in numbers of 113
+ * bits (the compiler's __float128 with libquadmath, the outside reference here), and what comes out
+ * must lie in the model that the operation gives, at places where the errors do not cancel.
  *
  * LWT_PM_ENTRY names the function; LWT_PM_MUTANTS lets error terms be left out. */
 #include "pm_contained.h"
