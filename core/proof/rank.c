@@ -358,38 +358,28 @@ bool lwi_rank_at_least(lwi_rank_work *w, double s0)
     return true;
 }
 
-enum { EIGEN_STEPS = 24, HALVINGS = 9 };
-
-/* A guess of b's least eigenvalue from the factor l that `definite` left of b less something, which
- * is added by the caller: inverse iteration, Rayleigh's quotient. */
-static double least_eigenvalue(const double *l, double *x, size_t m)
+/* `steps` of inverse iteration from x on, with the factor l that `definite` left; returns a guess of
+ * the least eigenvalue of l l', from above: Rayleigh's quotient. 0 where numbers run out. */
+static double least_eigenvalue(const double *l, double *x, size_t m, int steps)
 {
-    for (size_t i = 0; i < m; i++) {
-        x[i] = i % 2 == 0 ? 1.0 : -0.7;
-    }
     double least = 0.0;
-    for (int step = 0; step < EIGEN_STEPS; step++) {
-        double before = dot(x, x, m);
+    for (int step = 0; step < steps; step++) {
         for (size_t i = 0; i < m; i++) {
             x[i] = (x[i] - dot(l + i * m, x, i)) * l[i * m + i];
         }
         double middle = dot(x, x, m);
         for (size_t i = m; i-- > 0;) {
-            for (size_t j = i + 1; j < m; j++) {
-                x[i] -= l[j * m + i] * x[j];
-            }
             x[i] *= l[i * m + i];
+            for (size_t j = 0; j < i; j++) {
+                x[j] -= l[i * m + j] * x[i];
+            }
         }
         double after = dot(x, x, m);
-        if (!(after > 0.0 && before > 0.0 && after < 1e300)) {
+        if (!(after > 0.0 && middle < 1e300 && after < 1e300)) {
             return 0.0;
         }
         /* For y = B^-1 x: y'By / y'y = y'x / y'y = |L^-1 x|^2 / |y|^2. */
-        bool settled = step > 3 && fabs(middle / after - least) <= 1e-9 * least;
         least = middle / after;
-        if (settled) {
-            break;
-        }
         double f = 1.0 / sqrt(after);
         for (size_t i = 0; i < m; i++) {
             x[i] *= f;
@@ -400,17 +390,21 @@ static double least_eigenvalue(const double *l, double *x, size_t m)
 
 double lwi_rank_most(lwi_rank_work *w)
 {
-    static const double part[] = {1.0 - 1e-12, 1.0 - 1e-9, 1.0 - 1e-6, 0.999, 0.98,
-                                  0.9,         0.6,        0.3,        0.1,   0.01};
+    static const double part[] = {1.0 - 1e-12, 1.0 - 1e-7, 0.999, 0.99, 0.96,
+                                  0.85,        0.6,        0.3,   0.1,  0.01};
     double least = (double)INFINITY;
     if (!(w->n > 0)) {
         return 0.0;
     }
+    for (size_t i = 0; i < w->m; i++) {
+        w->column[i] = i % 2 == 0 ? 1.0 : -0.7;
+    }
+    /* The vertices have nearly the same eigenvector, which is carried on. */
     for (int l = 0; l < LWI_RANK_VERTICES; l++) {
         if (!definite(w->vertex[l], w->square[0], w->m, w->slack)) {
             return 0.0;
         }
-        double guess = least_eigenvalue(w->square[0], w->column, w->m);
+        double guess = least_eigenvalue(w->square[0], w->column, w->m, l == 0 ? 4 : 2);
         least = guess < least ? guess : least;
     }
     double last = least / w->q_norm;
@@ -418,7 +412,7 @@ double lwi_rank_most(lwi_rank_work *w)
         double s0 = part[i] * least / w->q_norm;
         if (lwi_rank_at_least(w, s0)) {
             /* A coarse step may have passed better ones. */
-            for (int k = 0; k < HALVINGS && last - s0 > 0.002 * s0; k++) {
+            while (last - s0 > 0.005 * last) {
                 double between = 0.5 * (s0 + last);
                 if (lwi_rank_at_least(w, between)) {
                     s0 = between;

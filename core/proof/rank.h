@@ -59,7 +59,7 @@ bool lwi_rank_prepare_with(lwi_rank_work *w, const double *q, const lwi_pm *a, s
 /* Proves sigma_min >= s0 for all d, s0 >= 0; sigma_min > 0 with s0 = 0. */
 bool lwi_rank_at_least(lwi_rank_work *w, double s0);
 
-/* The largest lower bound that can be proved this way, nearly; 0 if none. */
+/* The largest lower bound that can be proved this way, within one per cent; 0 if none. */
 double lwi_rank_most(lwi_rank_work *w);
 
 /* An upper bound of sigma_min at d, with the vector v[cols], not of unit length, for which |M v| is

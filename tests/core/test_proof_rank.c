@@ -115,7 +115,7 @@ static void constant_matrices_are_judged_to_seven_digits(void **state)
         assert_false(lwi_rank_at_least(&work, (1.0 + 1e-4) * s));
         assert_false(lwi_rank_at_least(&work, 1.01 * s));
         double most = lwi_rank_most(&work);
-        assert_true(most <= s * (1.0 + 1e-7) && most >= s * (1.0 - 0.003));
+        assert_true(most <= s * (1.0 + 1e-7) && most >= s * (1.0 - 0.01));
         double above = lwi_rank_above(&work, v, model, n, m, m, 0.3);
         assert_true(above >= s * (1.0 - 1e-7) && above <= s * (1.0 + 1e-7));
     }
@@ -343,7 +343,7 @@ static void large_matrices_fit(void **state)
     assert_true(lwi_rank_at_least(&work, 0.01 * (1.0 - 1e-7)));
     assert_false(lwi_rank_at_least(&work, 0.01 * (1.0 + 1e-7)));
     double most = lwi_rank_most(&work);
-    lwt_near_rel(most, 0.01, 0.003);
+    lwt_near_rel(most, 0.01, 0.01);
     double above = lwi_rank_above(&work, v, m, LWI_RANK_ROWS, LWI_RANK_COLS, LWI_RANK_COLS, 0.0);
     assert_true(above >= 0.01 * (1.0 - 1e-9) && above < 0.0105);
 }
