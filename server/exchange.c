@@ -66,6 +66,11 @@ static bool buf_grow(lwd_buf *buf, size_t more)
     return true;
 }
 
+bool lwd_buf_reserve(lwd_buf *buf, size_t more)
+{
+    return !buf->failed && buf_grow(buf, more);
+}
+
 bool lwd_buf_put(lwd_buf *buf, const char *text, size_t len)
 {
     if (buf->failed) {

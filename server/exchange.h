@@ -72,6 +72,9 @@ void lwd_buf_init(lwd_buf *buf, size_t cap_max);
 void lwd_buf_clear(lwd_buf *buf);
 /* Forget the content, keep the memory. */
 void lwd_buf_reset(lwd_buf *buf);
+/* Makes room for `more` bytes at once where much is to come; false, and nothing spoilt, if there is
+ * none: each later write tries again. */
+bool lwd_buf_reserve(lwd_buf *buf, size_t more);
 bool lwd_buf_put(lwd_buf *buf, const char *text, size_t len);
 bool lwd_buf_puts(lwd_buf *buf, const char *text);
 

@@ -20,6 +20,8 @@ typedef struct asking {
     char served_at[LWD_TIME_SIZE];
 } asking;
 
+enum { ANSWER_ROOM = 4000 }; /* bytes; most answers to one question fit without growing */
+
 typedef enum step {
     STEP_ANSWERED,
     STEP_REFUSED, /* the reply given holds a problem */
@@ -400,6 +402,9 @@ static step answer_single(asking *a, const lwd_question_parts *parts, lwd_reply 
 {
     lwd_json json;
     lwd_reply_open(reply, &json, 200);
+    if (!a->plain) {
+        (void)lwd_buf_reserve(&reply->body, ANSWER_ROOM);
+    }
     step result = answer_parts(a, parts, &json, reply);
     if (result != STEP_ANSWERED) {
         return result;

@@ -18,7 +18,7 @@ bool lwd_json_done(const lwd_json *json)
     return json->depth == 0 && json->filled[0] && !json->failed && !json->buf->failed;
 }
 
-static void put(lwd_json *json, const char *text, size_t len)
+static inline void put(lwd_json *json, const char *text, size_t len)
 {
     lwd_buf *buf = json->buf;
     if (buf->cap - buf->len > len && !buf->failed) { /* the common case, without a call */
@@ -112,24 +112,28 @@ static void put_special(lwd_json *json, uint32_t c)
     }
 }
 
-static bool is_plain(unsigned char c)
-{
-    return c >= 0x20 && c < 0x7f && c != '"' && c != '\\';
-}
+/* 1: the byte stands in quotes as it is: 0x20 to 0x7e without '"' and '\\'. */
+#define EIGHT 1, 1, 1, 1, 1, 1, 1, 1
+static const unsigned char unescaped[256] = {
+    [0x20] = 1, 1, 0, 1, 1, 1, 1, 1, EIGHT, EIGHT, EIGHT, EIGHT, EIGHT, EIGHT,
+    [0x58] = 1, 1, 1, 1, 0, 1, 1, 1, EIGHT, EIGHT, EIGHT, 1, 1, 1, 1, 1, 1, 1};
+#undef EIGHT
 
-/* Text without anything to escape, where there is room for it: nearly all keys and words. */
+/* Text without anything to escape, where there is room for it: nearly all words. */
 static bool put_plain_text(lwd_buf *buf, const char *text, size_t len)
 {
     if (buf->failed || buf->cap - buf->len <= len + 2) {
         return false;
     }
     char *out = buf->data + buf->len;
+    unsigned all = 1;
     for (size_t i = 0; i < len; i++) {
-        if (!is_plain((unsigned char)text[i])) {
-            out[0] = '\0';
-            return false;
-        }
+        all &= unescaped[(unsigned char)text[i]];
         out[i + 1] = text[i];
+    }
+    if (all == 0) {
+        out[0] = '\0';
+        return false;
     }
     out[0] = '"';
     out[len + 1] = '"';
@@ -149,7 +153,7 @@ static void put_text(lwd_json *json, const char *text, size_t len)
     put(json, "\"", 1);
     while (p < end) {
         const unsigned char *run = p;
-        while (p < end && is_plain(*p)) {
+        while (p < end && unescaped[*p] != 0) {
             p++;
         }
         put(json, (const char *)run, (size_t)(p - run));
@@ -163,46 +167,55 @@ static void put_text(lwd_json *json, const char *text, size_t len)
     put(json, "\"", 1);
 }
 
-/* The common case in one go: a key without anything to escape, with room for it. False, and nothing
- * written, otherwise. */
-static bool put_plain_key(lwd_json *json, const char *key, bool comma)
+enum { KEY_ROOM = 64 }; /* of the keys written in one go; longer ones go the long way */
+
+/* Writes comma, quotes, key and colon at `at`, where KEY_ROOM + 4 bytes are free; the place behind
+ * them, NULL for a key that is long or has something to escape. */
+static inline char *plain_key(char *at, const char *key, bool comma)
 {
-    lwd_buf *buf = json->buf;
-    size_t n = strlen(key);
-    if (buf->failed || buf->cap - buf->len <= n + 4) {
-        return false;
-    }
-    char *at = buf->data + buf->len;
-    if (comma) {
-        *at++ = ',';
-    }
+    *at = ',';
+    at += comma ? 1 : 0;
     *at++ = '"';
-    for (size_t i = 0; i < n; i++) {
-        unsigned char c = (unsigned char)key[i];
-        if (c < 0x20 || c >= 0x7f || c == '"' || c == '\\') {
-            buf->data[buf->len] = '\0';
-            return false;
-        }
-        *at++ = key[i];
+    const char *end = key + KEY_ROOM;
+    while (key < end && unescaped[(unsigned char)*key] != 0) {
+        *at++ = *key++;
+    }
+    if (*key != '\0') {
+        return NULL;
     }
     *at++ = '"';
     *at++ = ':';
-    *at = '\0';
-    buf->len = (size_t)(at - buf->data);
-    return true;
+    return at;
 }
 
-void lwd_json_key(lwd_json *json, const char *key)
+/* Whether `more` bytes and a NUL fit without growing the buffer. */
+static inline bool has_room(const lwd_buf *buf, size_t more)
 {
-    if (json->failed) {
+    return buf->cap - buf->len > more && !buf->failed;
+}
+
+/* Whether a key may stand here; says that the writer failed otherwise. */
+static inline bool key_may_stand(lwd_json *json)
+{
+    if (!json->failed && json->kind[json->depth] == '{' && !json->keyed) {
+        return true;
+    }
+    json->failed = true;
+    return false;
+}
+
+void lwd_json_key_text(lwd_json *json, const char *key)
+{
+    if (!key_may_stand(json)) {
         return;
     }
-    if (json->kind[json->depth] != '{' || json->keyed) {
-        json->failed = true;
-        return;
-    }
+    lwd_buf *buf = json->buf;
     bool comma = json->filled[json->depth];
-    if (!put_plain_key(json, key, comma)) {
+    char *at = has_room(buf, KEY_ROOM + 4) ? plain_key(buf->data + buf->len, key, comma) : NULL;
+    if (at != NULL) {
+        *at = '\0';
+        buf->len = (size_t)(at - buf->data);
+    } else {
         if (comma) {
             put(json, ",", 1);
         }
@@ -231,8 +244,17 @@ void lwd_json_string(lwd_json *json, const char *text)
 void lwd_json_number(lwd_json *json, double value)
 {
     char text[LWD_NUMBER_SIZE];
+    lwd_buf *buf = json->buf;
     if (!begin(json)) {
         return;
+    }
+    if (has_room(buf, LWD_NUMBER_SIZE)) { /* in its place at once */
+        size_t len = lwd_number_put(buf->data + buf->len, value);
+        buf->len += len;
+        buf->data[buf->len] = '\0';
+        if (len != 0) {
+            return;
+        }
     }
     size_t n = lwd_number_put(text, value);
     if (n == 0) { /* not finite: the text stays JSON, the reply must not go out */
@@ -275,52 +297,4 @@ void lwd_json_numbers(lwd_json *json, const double *value, size_t n)
         lwd_json_number(json, value[i]);
     }
     lwd_json_end(json);
-}
-
-void lwd_json_put_object(lwd_json *json, const char *key)
-{
-    lwd_json_key(json, key);
-    lwd_json_object(json);
-}
-
-void lwd_json_put_array(lwd_json *json, const char *key)
-{
-    lwd_json_key(json, key);
-    lwd_json_array(json);
-}
-
-void lwd_json_put_string(lwd_json *json, const char *key, const char *text)
-{
-    lwd_json_key(json, key);
-    lwd_json_string(json, text);
-}
-
-void lwd_json_put_number(lwd_json *json, const char *key, double value)
-{
-    lwd_json_key(json, key);
-    lwd_json_number(json, value);
-}
-
-void lwd_json_put_int(lwd_json *json, const char *key, int64_t value)
-{
-    lwd_json_key(json, key);
-    lwd_json_int(json, value);
-}
-
-void lwd_json_put_bool(lwd_json *json, const char *key, bool value)
-{
-    lwd_json_key(json, key);
-    lwd_json_bool(json, value);
-}
-
-void lwd_json_put_null(lwd_json *json, const char *key)
-{
-    lwd_json_key(json, key);
-    lwd_json_null(json);
-}
-
-void lwd_json_put_numbers(lwd_json *json, const char *key, const double *value, size_t n)
-{
-    lwd_json_key(json, key);
-    lwd_json_numbers(json, value, n);
 }

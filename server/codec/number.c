@@ -101,40 +101,47 @@ lwd_decimal lwd_decimal_of(double x)
     return without_trailing_zeros(shortest(c, q, fraction == 0 && biased > 1));
 }
 
+static const uint64_t ten_to[20] = {
+    1, 10, 100, 1000, 10000, 100000, 1000000, 10000000, 100000000, 1000000000, 10000000000,
+    100000000000, 1000000000000, 10000000000000, 100000000000000, 1000000000000000,
+    10000000000000000, 100000000000000000, 1000000000000000000, UINT64_C(10000000000000000000)};
+
+/* Digits of x, 1 for 0: floor(log10(2^bits)) is right or one too few. */
 static int digit_count(uint64_t x)
 {
-    int n = 1;
-    for (;;) {
-        if (x < 10) {
-            return n;
-        }
-        if (x < 100) {
-            return n + 1;
-        }
-        if (x < 1000) {
-            return n + 2;
-        }
-        if (x < 10000) {
-            return n + 3;
-        }
-        x /= 10000;
-        n += 4;
-    }
+    int n = (64 - __builtin_clzll(x | 1)) * 1233 >> 12;
+    return n + ((x | 1) >= ten_to[n] ? 1 : 0);
+}
+
+static void put_eight(char *p, uint32_t x)
+{
+    uint32_t high = x / 10000;
+    uint32_t low = x % 10000;
+    memcpy(p, pair_text + 2 * (high / 100), 2);
+    memcpy(p + 2, pair_text + 2 * (high % 100), 2);
+    memcpy(p + 4, pair_text + 2 * (low / 100), 2);
+    memcpy(p + 6, pair_text + 2 * (low % 100), 2);
 }
 
 /* Writes the n digits of x. */
 static void put_digits(char *out, uint64_t x, int n)
 {
     char *p = out + n;
-    while (x >= 100) {
-        p -= 2;
-        memcpy(p, pair_text + 2 * (x % 100), 2);
-        x /= 100;
+    while (x >= 100000000) {
+        p -= 8;
+        put_eight(p, (uint32_t)(x % 100000000));
+        x /= 100000000;
     }
-    if (x >= 10) {
-        memcpy(p - 2, pair_text + 2 * x, 2);
+    uint32_t rest = (uint32_t)x;
+    while (rest >= 100) {
+        p -= 2;
+        memcpy(p, pair_text + 2 * (rest % 100), 2);
+        rest /= 100;
+    }
+    if (rest >= 10) {
+        memcpy(p - 2, pair_text + 2 * rest, 2);
     } else {
-        p[-1] = (char)('0' + x);
+        p[-1] = (char)('0' + rest);
     }
 }
 
@@ -154,11 +161,14 @@ static char *put_plain(char *p, uint64_t digits, int n, int whole)
         put_digits(p, digits, n);
         return p + n;
     }
-    put_digits(p, digits, n);
     if (whole >= n) {
+        put_digits(p, digits, n);
         return put_zeros(p + n, whole - n);
     }
-    memmove(p + whole + 1, p + whole, (size_t)(n - whole));
+    put_digits(p + 1, digits, n);
+    for (int i = 0; i < whole; i++) { /* a few, where the number is of a common size */
+        p[i] = p[i + 1];
+    }
     p[whole] = '.';
     return p + n + 1;
 }

@@ -32,6 +32,12 @@ calls() {
     }' "$@"
 }
 
+# A key that is a literal is written without looking for what must be escaped (codec/json_out.h).
+mapfile -t server < <(files "$c_files" server)
+while IFS=: read -r file line _; do
+  fault "$file:$line" "has a literal key with an escape; keys in the source are plain ASCII words"
+done < <(grep -nE 'lwd_json_(key|put_[a-z]+)\([^,"]+, *"[^"]*\\' "${server[@]}" /dev/null || true)
+
 while IFS=: read -r file line name; do
   place=$file:$line
   if [[ $everywhere == *" $name "* ]]; then

@@ -73,6 +73,7 @@ echo '#include <leeway/a.h>' >>clients/cli/main.c; finds boundaries "speak HTTP 
 echo '#include "../../server/exchange.h"' >>clients/cli/main.c; finds boundaries "own"
 echo '#include <leeway/a.h>' >>server/catalog/catalog.c; finds boundaries "text and digests"
 echo 'int g(void) { return sprintf(0, ""); }' >>server/codec/in.c; finds banned server/codec/in.c:5
+echo 'void g(void *j) { lwd_json_key(j, "a\"b"); }' >>server/codec/in.c; finds banned "literal key"
 echo 'int g(void) { return atoi (""); }' >>clients/cli/main.c; finds banned "calls atoi"
 echo 'int g(void) { return malloc(1) != 0; }' >>core/query/q.c; finds banned "never allocates"
 c_file core/homotopy/track.c 'int g(void) { return malloc(1) != 0; }'; finds banned "never allocates"

@@ -63,6 +63,48 @@ static void writes_nested_values_with_their_commas(void **state)
                         "\"missing\":null,\"list\":[{\"x\":0.1},[1],[]]}");
 }
 
+/* Keys made at run time: short and longer than what is written in one go, plain and with something
+ * to escape; beside literal ones, while the buffer grows. */
+static void key_reads_back(const char *key)
+{
+    lwd_buf_clear(&buf);
+    lwd_json_init(&json, &buf);
+    lwd_json_object(&json);
+    lwd_json_put_object(&json, key);
+    for (int i = 0; i < 12; i++) {
+        char numbered[112];
+        (void)snprintf(numbered, sizeof numbered, "%s%d", key, i);
+        lwd_json_put_int(&json, numbered, i);
+    }
+    lwd_json_put_number(&json, "a literal", 0.5);
+    lwd_json_end(&json);
+    lwd_json_put_number(&json, "after it", -0.25);
+    lwd_json_end(&json);
+    assert_true(lwd_json_done(&json));
+    cJSON *back = cJSON_Parse(buf.data);
+    assert_non_null(back);
+    const cJSON *in = cJSON_GetObjectItemCaseSensitive(back, key);
+    assert_int_equal(cJSON_GetArraySize(in), 13);
+    lwt_same(cJSON_GetObjectItemCaseSensitive(in, "a literal")->valuedouble, 0.5);
+    lwt_same(cJSON_GetObjectItemCaseSensitive(back, "after it")->valuedouble, -0.25);
+    cJSON_Delete(back);
+}
+
+static void writes_keys_of_every_length_and_kind(void **state)
+{
+    char key[100];
+    (void)state;
+    for (size_t n = 0; n < 90; n++) {
+        memset(key, 'k', n);
+        key[n] = '\0';
+        key_reads_back(key);
+        for (int c = 1; n > 0 && c < 128; c++) {
+            key[n / 2] = (char)c;
+            key_reads_back(key);
+        }
+    }
+}
+
 static void writes_ascii_that_reads_back_to_the_same_text(void **state)
 {
     (void)state;
@@ -233,6 +275,7 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test_setup_teardown(writes_nested_values_with_their_commas, start, stop),
+        cmocka_unit_test_setup_teardown(writes_keys_of_every_length_and_kind, start, stop),
         cmocka_unit_test_setup_teardown(writes_ascii_that_reads_back_to_the_same_text, start, stop),
         cmocka_unit_test_setup_teardown(replaces_bytes_that_are_no_utf8, start, stop),
         cmocka_unit_test_setup_teardown(never_writes_what_is_not_finite, start, stop),
