@@ -67,6 +67,8 @@ struct lwd_http {
     lwd_conn *conns;
     unsigned n_conns;
 
+    _Atomic(struct lwd_call *) spare; /* of the last request, for the next one */
+
     _Atomic bool draining;
     _Atomic int active; /* requests begun and not completed */
     _Atomic int64_t last_begin_ms;

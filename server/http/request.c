@@ -32,7 +32,10 @@ void *lwd_call_uri(void *cls, const char *uri, struct MHD_Connection *mhd)
     if (conn == NULL || !lwd_conn_phase(conn, LWD_PHASE_HEAD, http->options.head_ms)) {
         return NULL;
     }
-    call = malloc(sizeof *call);
+    call = atomic_exchange(&http->spare, NULL);
+    if (call == NULL) {
+        call = malloc(sizeof *call);
+    }
     if (call == NULL) {
         lwd_metrics_refused(LWD_REFUSED_MEMORY);
         return NULL;
@@ -60,6 +63,9 @@ static void call_release(lwd_call *call)
     }
     free(call->owned);
     free(call->body);
+    if (call->http != NULL) {
+        call = atomic_exchange(&call->http->spare, call);
+    }
     free(call);
 }
 

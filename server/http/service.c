@@ -69,6 +69,7 @@ static void free_all(lwd_http *http)
     if (http->wake_fd >= 0) {
         close(http->wake_fd);
     }
+    free(atomic_load(&http->spare));
     lwd_router_free(http->router);
     pthread_mutex_destroy(&http->lock);
     free(http);
