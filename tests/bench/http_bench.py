@@ -1,14 +1,18 @@
 #!/usr/bin/env python3
 # SPDX-License-Identifier: GPL-3.0-or-later
-"""HTTP side by side: a reach question against the static GET /about of the same daemon.
+"""HTTP side by side: a reach question against a static answer of the same size.
 
 Starts leewayd on the loopback with one demo mechanism (or measures a running one, --url and --pid)
 and lets wrk ask over keep-alive connections, in short rounds of each case in turn, so that a
 machine that changes its pace slows all of them. Printed a case: answers a second, median and 99th
 percentile of the latency, and the CPU time the daemon's threads used a request, taken from the
-kernel (/proc/PID/task/*/schedstat). Then the ratios of the least CPU times, with the core's own
-time taken off where --core-us tells it (tests/bench/bench_* measure it), and the latency at half
+kernel (/proc/PID/task/*/schedstat). Then the ratios, with the core's own time taken off: bench_core
+beside leewayd (--core), run in each round on the daemon's core, tells it. Last, the latency at half
 of the greatest rate.
+
+No static answer of the daemon has just the size of an answer to reach. lwt_echo_daemon (--still)
+is the same program, with the same HTTP room, whose handlers only copy bytes that lie ready: it
+gives static answers of exactly the sizes of the others. Without it GET /about stands for them.
 
 On a machine shared with other work only the least CPU times and their ratio are worth quoting.
 """
@@ -63,6 +67,7 @@ class Case:
     def __init__(self, name, method, path, body=None, headers=None):
         self.name, self.method, self.path, self.body = name, method, path, body
         self.headers = headers or {}
+        self.static = None  # the case it is held against
         self.bytes = 0
         self.rounds = []
 
@@ -78,15 +83,15 @@ class Case:
 class Service:
     """The daemon measured: one of ours on a free port, or one that runs already."""
 
-    def __init__(self, options):
+    def __init__(self, options, program=None):
         self.process = self.data = None
-        if options.url:
+        if options.url and program is None:
             match = re.fullmatch(r"http://([0-9.]+):(\d+)/?", options.url)
             if not match or not options.pid:
                 stop("--url wants http://ADDRESS:PORT, together with --pid")
             self.host, self.port, self.pid = match[1], int(match[2]), options.pid
             return
-        program = os.path.join(options.bin, "leewayd")
+        program = program or os.path.join(options.bin, "leewayd")
         if not os.access(program, os.X_OK):
             stop(f"no program {program}; build it, or name its directory with --bin")
         with socket.socket() as free:
@@ -230,15 +235,28 @@ def cases_for(name):
                  {"Accept": "text/plain"})]
 
 
-def pin(service):
-    """The daemon on one core, this script and wrk on another, so that they do not trade places."""
+def core_us(program, mechanism, core):
+    """The core's own time for reach at a pose, the least of its rounds, on the daemon's core."""
+    where = ["taskset", "-c", str(core)] if core is not None else []
+    done = subprocess.run(where + [program, f"{mechanism} reach by pose"], stdin=subprocess.DEVNULL,
+                          capture_output=True, text=True, timeout=30, check=False,
+                          env={**os.environ, "LW_BENCH_ROUNDS": "25"})
+    match = re.search(r"^[a-z-]+ reach by pose,\d+,\d+,([0-9.]+),", done.stdout, re.M)
+    if not match:
+        stop(f"{program} did not report: {done.stdout[-400:]}{done.stderr[-400:]}")
+    return float(match[1])
+
+
+def pin(services):
+    """Daemons on one core, this script and wrk on another, so that they do not trade places."""
     cores = sorted(os.sched_getaffinity(0))
-    if len(cores) < 2 or not service.process:
-        return "not pinned"
-    for task in os.listdir(f"/proc/{service.pid}/task"):
-        os.sched_setaffinity(int(task), {cores[0]})
+    if len(cores) < 2 or not all(service.process for service in services):
+        return None, "not pinned"
+    for service in services:
+        for task in os.listdir(f"/proc/{service.pid}/task"):
+            os.sched_setaffinity(int(task), {cores[0]})
     os.sched_setaffinity(0, {cores[1]})
-    return f"daemon on core {cores[0]}, wrk on core {cores[1]}"
+    return cores[0], f"daemon on core {cores[0]}, wrk on core {cores[1]}"
 
 
 def half_load(rate):
@@ -251,17 +269,34 @@ def half_load(rate):
     return connections, 1e3 * connections / (rate / 2)
 
 
-def measure(service, options):
+def try_case(service, case):
+    """One answer, which must be good; notes its size."""
+    status, body = service.ask(case.method, case.path, case.body, case.headers)
+    if status != 200:
+        stop(f"{case.name} answers {status}: {body[:400]!r}")
+    case.bytes = len(body)
+
+
+def measure(service, still, options):
     cases = cases_for(options.mechanism)
-    for case in cases:
-        status, body = service.ask(case.method, case.path, case.body, case.headers)
-        if status != 200:
-            stop(f"{case.name} answers {status}: {body[:400]!r}")
-        case.bytes = len(body)
-    where = pin(service)
+    for case in list(cases):
+        try_case(service, case)
+        case.service = service
+        if case is not cases[0]:
+            case.static = cases[0]
+            if still:
+                case.static = Case(f"GET of {case.bytes} bytes (static)", "GET",
+                                   f"/still/{case.bytes}")
+                case.static.service = still
+                try_case(still, case.static)
+                cases.append(case.static)
+    core, where = pin([service, still] if still else [service])
+    own_us = []
     for turn in range(options.rounds):
         for case in cases if turn % 2 == 0 else reversed(cases):
-            case.rounds.append(run_wrk(service, case, options.seconds, options.connections))
+            case.rounds.append(run_wrk(case.service, case, options.seconds, options.connections))
+        own_us.append(core_us(options.core, options.mechanism, core) if options.core
+                      else options.core_us)
     print(f"# http: {options.mechanism}, {options.connections} keep-alive connections, {where}")
     print(f"# other load at the end (1 min): {os.getloadavg()[0]:.2f}, "
           f"daemon holds {service.resident_kb()} kB")
@@ -271,19 +306,23 @@ def measure(service, options):
         print(f"{case.name},{case.bytes},{len(case.rounds)},{best['rate']:.0f},{best['p50']},"
               f"{best['p99']},{case.least_cpu_us():.2f},"
               f"{statistics.median(r['cpu_us'] for r in case.rounds):.2f}")
+    print(f"# the core's own time: least {min(own_us):.2f} us, "
+          f"median {statistics.median(own_us):.2f} us")
     above = []
-    for case in cases[1:]:
-        paired = statistics.median(
-            (a["cpu_us"] - options.core_us) / b["cpu_us"]
-            for a, b in zip(case.rounds, cases[0].rounds))
-        least = (case.least_cpu_us() - options.core_us) / cases[0].least_cpu_us()
-        print(f"# {case.name} / static, {options.core_us:g} us of the core taken off: "
-              f"{least:.2f} of the least, {paired:.2f} median of paired rounds")
-        if least > options.ratio_max:
-            above.append(f"{case.name}: CPU ratio {least:.2f} > {options.ratio_max:g}")
+    for case in (c for c in cases if c.static):
+        paired = statistics.median((a["cpu_us"] - own) / b["cpu_us"] for a, own, b
+                                   in zip(case.rounds, own_us, case.static.rounds))
+        least = (case.least_cpu_us() - min(own_us)) / case.static.least_cpu_us()
+        print(f"# {case.name} without the core / {case.static.name}: {least:.2f} of the least, "
+              f"{paired:.2f} median of paired rounds")
+        if paired > options.ratio_max:
+            above.append(f"{case.name}: CPU ratio {paired:.2f} > {options.ratio_max:g}")
     asked = cases[1]
     rate = max(r["rate"] for r in asked.rounds)
     connections, delay_ms = half_load(rate)
+    # What a connection needs beside its wait shows in a short trial; the wait is shorter by it.
+    trial = run_wrk(service, asked, 1, connections, delay_ms)
+    delay_ms = max(0.1, 2 * delay_ms - 1e3 * connections / trial["rate"])
     half = run_wrk(service, asked, 2 * options.seconds, connections, delay_ms)
     print(f"# {asked.name} at half load: {half['rate']:.0f} of {rate:.0f} a second over "
           f"{connections} connections, p50 {half['p50']} us, p99 {half['p99']} us")
@@ -305,8 +344,10 @@ def main():
     parser.add_argument("--rounds", type=int, default=4)
     parser.add_argument("--seconds", type=int, default=1, help="length of a round")
     parser.add_argument("--connections", type=int, default=8)
+    parser.add_argument("--still", help="lwt_echo_daemon, which gives static answers of any size")
+    parser.add_argument("--core", help="bench_core, which measures the core's own time, taken off")
     parser.add_argument("--core-us", type=float, default=0.0,
-                        help="the core's own time for this question, taken off")
+                        help="that time, where it is known and --core is not given")
     parser.add_argument("--ratio-max", type=float, default=1.5)
     parser.add_argument("--p99-max-us", type=float, default=1000.0)
     parser.add_argument("--check", action="store_true", help="status 1 if a bar is not met")
@@ -318,13 +359,19 @@ def main():
     if not shutil.which("wrk"):
         stop("wrk is missing: apt-get install wrk")
     service = Service(options)
+    still = None
     try:
         service.wait_ready()
         if service.process:
             service.publish(options.mechanism)
-        return measure(service, options)
+        if options.still:
+            still = Service(options, options.still)
+            still.wait_ready()
+        return measure(service, still, options)
     finally:
         service.end()
+        if still:
+            still.end()
 
 
 if __name__ == "__main__":

@@ -128,6 +128,22 @@ static void big(void *context, const lwd_request *request, lwd_reply *reply)
     reply->content_type = "text/plain; charset=utf-8";
 }
 
+/* As many bytes as the path says, ready made: what an answer costs that needs no thought. */
+static void still(void *context, const lwd_request *request, lwd_reply *reply)
+{
+    static char bytes[16384];
+    long n = strtol(request->param[0], NULL, 10);
+
+    (void)context;
+    n = n < 1 ? 1 : n > (long)sizeof bytes ? (long)sizeof bytes : n;
+    if (bytes[0] == '\0') {
+        memset(bytes, '.', sizeof bytes); /* on the event thread, which is one */
+    }
+    lwd_buf_put(&reply->body, bytes, (size_t)n);
+    reply->status = 200;
+    reply->content_type = "text/plain; charset=utf-8";
+}
+
 static void about(void *context, const lwd_request *request, lwd_reply *reply)
 {
     (void)context;
@@ -187,6 +203,7 @@ static const lwd_route routes[] = {
     {LWD_GET, "/readyz", ready, LWD_ROLE_NONE, false, 0, "readyz"},
     {LWD_GET, "/metrics", metrics, LWD_ROLE_NONE, false, 0, "metrics"},
     {LWD_GET, "/big", big, LWD_ROLE_QUERY, false, 0, "big"},
+    {LWD_GET, "/still/{}", still, LWD_ROLE_QUERY, false, 0, "still"},
     {LWD_POST, "/echo", echo, LWD_ROLE_QUERY, false, 64 * KB, "echo"},
     {LWD_POST, "/slow", slow_echo, LWD_ROLE_QUERY, true, 64 * KB, "slow"},
     {LWD_GET, "/slow", slow_echo, LWD_ROLE_QUERY, true, 0, "slow"},
