@@ -370,6 +370,53 @@ static void show_margins(lwc_text *out, const cJSON *margins, const cJSON *least
     lwc_table_clear(&table);
 }
 
+/* ---- singularities --------------------------------------------------------------------------- */
+
+static void show_weakest(lwc_text *out, const cJSON *list)
+{
+    const cJSON *weakest = NULL;
+    cJSON_ArrayForEach(weakest, list)
+    {
+        const char *says = lwc_json_string(weakest, "says");
+        const cJSON *joints = lwc_json_get(weakest, "joints");
+        lwc_text_puts(out, "  ");
+        lwc_text_safe(out, says != NULL ? says : "?", says != NULL ? strlen(says) : 1);
+        lwc_text_putc(out, '\n');
+        if (cJSON_IsObject(joints) && joints->child != NULL) {
+            lwc_text_puts(out, "    joints ");
+            lwc_value_line(out, joints);
+            lwc_text_putc(out, '\n');
+        }
+    }
+}
+
+static void show_way_out(lwc_text *out, const char *what, const cJSON *way)
+{
+    const char *at = lwc_json_string(way, "measured_at");
+    if (!cJSON_IsObject(way)) {
+        return;
+    }
+    lwc_text_printf(out, "  %s grows by ", what);
+    lwc_value_line(out, lwc_json_get(way, "growth"));
+    lwc_text_puts(out, " over the step ");
+    lwc_value_line(out, lwc_json_get(way, at != NULL && strcmp(at, "tool") == 0 ? "outputs"
+                                                                                : "drives"));
+    lwc_text_puts(out, cJSON_IsTrue(lwc_json_get(way, "either_way")) ? ", or back\n" : "\n");
+}
+
+static void show_singular(lwc_text *out, const cJSON *answer)
+{
+    const cJSON *leave = lwc_json_get(answer, "leave_by");
+    if (!cJSON_IsArray(lwc_json_get(answer, "weakest_hold"))) {
+        return;
+    }
+    lwc_text_puts(out, "\nnearest to singular (0 = singular)\n");
+    show_weakest(out, lwc_json_get(answer, "weakest_hold"));
+    show_way_out(out, "hold", lwc_json_get(leave, "hold"));
+    show_weakest(out, lwc_json_get(answer, "weakest_motion"));
+    show_way_out(out, "motion", lwc_json_get(leave, "motion"));
+}
+
 /* ---- the answer as a whole ------------------------------------------------------------------ */
 
 static void show_head(lwc_text *out, const cJSON *answer)
@@ -439,7 +486,8 @@ static bool is_shown_already(const char *name)
     static const char *const SHOWN[] = {
         "mechanism", "revision", "state",   "digest",    "tool",    "units",    "ref",
         "asked",     "served_at", "code",   "outcome",   "found",   "complete", "basis",
-        "solutions", "margins",  "least",   "limits_broken", "solution", "posture"};
+        "solutions", "margins",  "least",   "limits_broken", "solution", "posture",
+        "weakest_hold", "weakest_motion", "leave_by"};
     for (size_t i = 0; i < sizeof SHOWN / sizeof SHOWN[0]; i++) {
         if (strcmp(name, SHOWN[i]) == 0) {
             return true;
@@ -494,6 +542,7 @@ static void show_one(lwc_text *out, const char *kind, const cJSON *answer, bool 
     if (cJSON_IsObject(lwc_json_get(answer, "margins"))) {
         show_margins(out, lwc_json_get(answer, "margins"), lwc_json_get(answer, "least"));
     }
+    show_singular(out, answer);
     show_others(out, answer, false);
 }
 

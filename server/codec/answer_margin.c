@@ -53,8 +53,9 @@ static void put_direction(lwd_json *json, const double direction[6])
     lwd_json_end(json);
 }
 
+/* spare_hold: spare alone has it, NULL for the others. */
 static void put_margin(lwd_json *json, const lwd_answer_head *head, const char *name,
-                       const lw_margin_value *value)
+                       const lw_margin_value *value, const lw_margin_answer *spare_hold)
 {
     const lwd_edge *edge = head->edge;
     lwd_json_put_object(json, name);
@@ -71,6 +72,13 @@ static void put_margin(lwd_json *json, const lwd_answer_head *head, const char *
             put_direction(json, value->direction);
         }
         put_amount(json, head->question->units, value);
+        if (spare_hold != NULL && spare_hold->spare_hold_drive >= 0) {
+            lwd_json_put_object(json, "hold");
+            lwd_json_put_number(json, "value", spare_hold->spare_hold);
+            lwd_json_put_string(json, "drive",
+                                edge->spec->drive[spare_hold->spare_hold_drive].name);
+            lwd_json_end(json);
+        }
     }
     lwd_json_end(json);
 }
@@ -80,7 +88,8 @@ void lwd_answer_margins(lwd_json *json, const lwd_answer_head *head,
 {
     lwd_json_put_object(json, "margins");
     for (size_t i = 0; i < LW_MARGIN_COUNT; i++) {
-        put_margin(json, head, lw_margin_word((lw_margin_name)i), &margin->margin[i]);
+        put_margin(json, head, lw_margin_word((lw_margin_name)i), &margin->margin[i],
+                   i == LW_MARGIN_SPARE ? margin : NULL);
     }
     lwd_json_end(json);
     if (margin->least >= 0 && margin->least < LW_MARGIN_COUNT) {
@@ -159,6 +168,9 @@ static void put_left_out(lwd_json *json, const lwd_edge *edge, const lw_margin_a
         lwd_json_put_string(json, "drive", edge->spec->drive[i].name);
         lwd_json_put_number(json, "hold", answer->hold_without[i]);
         lwd_json_put_bool(json, "indispensable", answer->indispensable[i]);
+        if (answer->singular != NULL) {
+            lwd_answer_braked(json, answer->singular, i);
+        }
         lwd_json_end(json);
         preload = preload || answer->preload[i] != 0.0;
     }
@@ -179,6 +191,9 @@ void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head, const lw_mar
     if (answer->solution != NULL) {
         lwd_answer_margins(json, head, answer);
         put_classes(json, answer->classes);
+        if (answer->singular != NULL) {
+            lwd_answer_singular(json, head, answer);
+        }
         put_ranks(json, answer);
         put_limbs(json, edge, answer);
         put_left_out(json, edge, answer);

@@ -49,6 +49,10 @@ void lwd_answer_off_by(lwd_json *json, const lwd_answer_head *head, double posit
 /* "margins" and "least". */
 void lwd_answer_margins(lwd_json *json, const lwd_answer_head *head,
                         const lw_margin_answer *margin);
+/* Kind, what is lost or weakest, the way out; in "without_drive": with the drive stuck. */
+void lwd_answer_singular(lwd_json *json, const lwd_answer_head *head,
+                         const lw_margin_answer *answer);
+void lwd_answer_braked(lwd_json *json, const lw_singular_answer *singular, size_t drive);
 /* "asked": the question as understood. */
 void lwd_answer_asked(lwd_json *json, const lwd_answer_head *head);
 /* Name of a limit's owner: "wrist.second", "strut-3", "m2". */
