@@ -301,11 +301,14 @@ static bool explore(lwi_prepare *p, lw_err *err)
     int quiet = 0;
     for (int tries = 0; tries < 60 && quiet < 12; tries++) {
         lwi_hpoint *at = &p->c;
+        size_t open = p->open_seeds;
         quiet++;
         if (p->out->paths >= p->limits->paths) {
             return true;
         }
-        if (!probe(p, at) || known(p, &p->fibre, at)) {
+        bool found = probe(p, at);
+        quiet -= p->open_seeds > open; /* of isolated solutions that one says nothing */
+        if (!found || known(p, &p->fibre, at)) {
             continue;
         }
         quiet = 0;
@@ -351,7 +354,7 @@ static lw_code attempt(lwi_prepare *p, lw_err *err)
     lwi_fibre *out = p->out;
     bool seeded = false;
     p->slice.n = p->fibre.n = p->unsettled = 0;
-    for (int tries = 0; tries < 20 && !seeded; tries++) {
+    for (int tries = 0; tries < 40 && !seeded; tries++) {
         seeded = lwi_prepare_seed(p, &p->a);
     }
     if (!seeded) {

@@ -16,6 +16,7 @@ typedef struct lwi_fibre {
     size_t pack;               /* numbers per solution */
     lwi_cx *solution;          /* n_solution * pack */
     bool trace_closed;
+    size_t open;               /* dimension of solutions that are not isolated, 0 = none was met */
     size_t degree;             /* points of the witness set behind the trace test */
     unsigned long paths, lost; /* work of preparing */
     double trace_error;

@@ -183,12 +183,38 @@ static bool seed_step(lwi_prepare *p, lwi_hpoint *at, lwi_cx *j, lwi_cx *gram, l
     return true;
 }
 
+/* How many singular values the derivative by the unknowns lacks at a point, whose rows were just
+ * evaluated: there the solution is not isolated. As a real matrix, each value comes twice. */
+static size_t rank_missing(lwi_prepare *p, const lwi_hpoint *at, double *room)
+{
+    const lwi_hom *hom = &p->out->hom;
+    size_t n = hom->n;
+    size_t m = hom->n_row;
+    double sv[2 * LWI_HOM_VARS];
+    lwi_ceval_rows(p->w.res, p->w.jac, NULL, hom->sys, &at->st, &p->w.in, &p->w.ev);
+    for (size_t r = 0; r < m; r++) {
+        for (size_t c = 0; c < n; c++) {
+            lwi_cx z = p->w.jac[r * n + c];
+            room[2 * r * (2 * n) + 2 * c] = room[(2 * r + 1) * (2 * n) + 2 * c + 1] = creal(z);
+            room[(2 * r + 1) * (2 * n) + 2 * c] = cimag(z);
+            room[2 * r * (2 * n) + 2 * c + 1] = -cimag(z);
+        }
+    }
+    lwi_svd(room, 2 * m, 2 * n, 2 * n, sv, NULL);
+    size_t rank = 0;
+    while (rank < 2 * n && sv[rank] > 1e-9 * sv[0]) {
+        rank++;
+    }
+    return (2 * n - rank + 1) / 2;
+}
+
 bool lwi_prepare_seed(lwi_prepare *p, lwi_hpoint *at)
 {
     const lwi_hom *hom = &p->out->hom;
     size_t m = hom->n_row;
     size_t cols = hom->n + hom->n_par;
-    lwi_cx *room = calloc(m * cols + m * m + m, sizeof *room);
+    /* The steps' matrices, and after the last one the derivative as a real matrix: 4 m n. */
+    lwi_cx *room = calloc(m * cols + m * m + m + 2 * m * hom->n, sizeof *room);
     bool found = false;
     if (room == NULL) {
         return false;
@@ -202,6 +228,12 @@ bool lwi_prepare_seed(lwi_prepare *p, lwi_hpoint *at)
         double worst = lwi_hom_residual(at, &p->h, 0.0, &p->w);
         if (worst < 1e-12) {
             found = !turned_around(p);
+            size_t open = found ? rank_missing(p, at, (double *)room) : 0;
+            if (open > 0) { /* at general parameters: a motion that no input takes away */
+                p->out->open = open > p->out->open ? open : p->out->open;
+                p->open_seeds++;
+                found = false;
+            }
             memcpy(p->line0, p->h.p0, sizeof p->line0);
             break;
         }

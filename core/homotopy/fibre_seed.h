@@ -21,6 +21,7 @@ typedef struct lwi_prepare {
     lwi_points slice;
     lwi_slice base;
     lwi_points fibre;
+    size_t open_seeds; /* random points that were not isolated */
     size_t unsettled; /* slice points that reached neither the fibre nor infinity */
 } lwi_prepare;
 

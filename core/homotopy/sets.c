@@ -245,7 +245,7 @@ void lwi_sets_report(lw_model *m)
 
 typedef struct set_head {
     char magic[8];
-    unsigned long long kind, n_par, pack, n_solution, closed, degree, paths;
+    unsigned long long kind, n_par, pack, n_solution, closed, open, degree, paths;
     unsigned long long sum; /* of all other bytes of the set */
 } set_head;
 
@@ -287,12 +287,13 @@ void lw_model_sets_save(void *out, const lw_model *m)
             continue;
         }
         const lwi_fibre *f = &set->fibre;
-        set_head head = {.magic = "LWSET02",
+        set_head head = {.magic = "LWSET03",
                          .kind = (unsigned)k,
                          .n_par = f->hom.n_par,
                          .pack = f->pack,
                          .n_solution = f->n_solution,
                          .closed = f->trace_closed,
+                         .open = f->open,
                          .degree = f->degree,
                          .paths = f->paths};
         unsigned char *body = to + sizeof head;
@@ -347,6 +348,7 @@ static lw_code load_one(lw_model *m, const set_head *head, const unsigned char *
     lwi_fibre *f = &set->fibre;
     f->n_solution = head->n_solution;
     f->trace_closed = head->closed == 1;
+    f->open = head->open;
     f->degree = head->degree;
     f->paths = head->paths;
     f->solution = calloc(f->n_solution * f->pack + 1, sizeof *f->solution);
@@ -379,7 +381,7 @@ lw_code lw_model_sets_load(lw_model *m, unsigned long long seed, const void *dat
             break;
         }
         memcpy(&head, from, sizeof head);
-        bool sane = memcmp(head.magic, "LWSET02", 8) == 0 && head.kind < 2 &&
+        bool sane = memcmp(head.magic, "LWSET03", 8) == 0 && head.kind < 2 &&
                     head.n_par <= LWI_HOM_PARAMS && head.pack <= LWI_HOM_OBSERVE &&
                     head.n_solution <= LWI_HOM_POINTS;
         size_t need = sane ? sizeof head + (head.n_par + head.n_solution * head.pack) *
@@ -405,9 +407,8 @@ lw_code lw_model_sets_load(lw_model *m, unsigned long long seed, const void *dat
 
 /* ---- using ---------------------------------------------------------------------------------- */
 
-/* Real state of the set's system from a complex end whose imaginary parts are rounding. */
-static bool real_state(lwi_state *state, const lwi_system *sys, const lwi_hpoint *end,
-                       lwi_track_work *w)
+/* The imaginary parts of an end are rounding. */
+static bool is_real(const lwi_system *sys, const lwi_hpoint *end, lwi_track_work *w)
 {
     size_t n = lwi_cobserve(w->observe, sys, &end->st);
     for (size_t i = 0; i < n; i++) {
@@ -415,6 +416,12 @@ static bool real_state(lwi_state *state, const lwi_system *sys, const lwi_hpoint
             return false;
         }
     }
+    return true;
+}
+
+/* Real state of the set's system from the real parts of a complex end. */
+static void real_state(lwi_state *state, const lwi_system *sys, const lwi_hpoint *end)
+{
     for (size_t k = 0; k < sys->n_element; k++) {
         const lwi_element *el = &sys->element[k];
         if (el->given) {
@@ -446,7 +453,6 @@ static bool real_state(lwi_state *state, const lwi_system *sys, const lwi_hpoint
             }
         }
     }
-    return true;
 }
 
 /* True if an end coincides with one that another path reached before: a path has jumped. */
@@ -502,7 +508,7 @@ static size_t follow_all(lwi_set_count *count, const lwi_set *set, const lwi_cx 
     const lwi_fibre *f = &set->fibre;
     size_t lost = 0;
     memset(count, 0, sizeof *count);
-    w->n_end = 0;
+    w->n_end = w->n_loose = 0;
     for (size_t i = 0; i < f->n_solution; i++) {
         lwi_end end = follow(w, set, i, by, by->tight, target);
         for (int closer = by->tight + 1; end == LWI_END_LOST && closer <= 2; closer++) {
@@ -513,6 +519,9 @@ static size_t follow_all(lwi_set_count *count, const lwi_set *set, const lwi_cx 
         } else if (end != LWI_END_GOOD) {
             count->unsettled++;
             lost += end == LWI_END_LOST;
+            if (end == LWI_END_SINGULAR && w->n_loose < LWI_LOOSE) {
+                lwi_cpack(w->loose + w->n_loose++ * f->pack, set->sys, &w->end.st);
+            }
         } else if (met_before(w, set, &w->track.stage)) {
             count->unsettled++;
             lost++;
@@ -569,8 +578,21 @@ void lwi_set_solve(lwi_set_count *count, const lwi_set *set, const lwi_cx *targe
     count->finite = w->n_end;
     for (size_t i = 0; i < w->n_end; i++) {
         lwi_cunpack(&w->end.st, set->sys, w->ends + i * f->pack);
-        if (real_state(&w->state, set->sys, &w->end, &w->track) && take(context, set, w)) {
-            count->real++;
+        if (is_real(set->sys, &w->end, &w->track)) {
+            real_state(&w->state, set->sys, &w->end);
+            count->real += take(context, set, w);
         }
     }
+}
+
+bool lwi_set_loose(const lwi_set *set, lwi_set_take take, void *context, lwi_set_work *w)
+{
+    for (size_t i = 0; i < w->n_loose; i++) {
+        lwi_cunpack(&w->end.st, set->sys, w->loose + i * set->fibre.pack);
+        real_state(&w->state, set->sys, &w->end);
+        if (take(context, set, w)) {
+            return true;
+        }
+    }
+    return false;
 }

@@ -18,6 +18,8 @@ typedef struct lwi_set {
     size_t drive[LW_MAX_DRIVES];
 } lwi_set;
 
+enum { LWI_LOOSE = 6 };
+
 /* Buffers of a question that tracks a set. */
 typedef struct lwi_set_work {
     lwi_homotopy h;
@@ -26,6 +28,8 @@ typedef struct lwi_set_work {
     lwi_state state;
     lwi_eval ev;
     lwi_certify_work certify;
+    size_t n_loose; /* ends of paths that did not settle, kept in part */
+    lwi_cx loose[LWI_LOOSE * LWI_HOM_OBSERVE];
     size_t n_end;
     lwi_cx *ends; /* packed ends of this question, LWI_HOM_POINTS at most */
 } lwi_set_work;
@@ -41,5 +45,7 @@ typedef struct lwi_set_count {
 } lwi_set_count;
 void lwi_set_solve(lwi_set_count *count, const lwi_set *set, const lwi_cx *target,
                    lwi_set_take take, void *context, lwi_set_work *work);
+/* After lwi_set_solve: real states next to ends that did not settle, until take returns true. */
+bool lwi_set_loose(const lwi_set *set, lwi_set_take take, void *context, lwi_set_work *work);
 
 #endif

@@ -113,6 +113,54 @@ static bool take(void *context, const lwi_set *set, lwi_set_work *w)
     return true;
 }
 
+/* work->state is settled; where it lies on a motion that the goals leave open it joins the list as
+ * its one posture. */
+static bool take_open_state(taking *t)
+{
+    lwi_newton_info ni;
+    lw_work *work = t->work;
+    lw_solution *sol = &work->solution[t->info->n];
+    if (t->info->n >= t->m->max_solutions ||
+        !lwi_settle(sol, &ni, t->m, t->tool, t->goal, t->n_goal, t->hint, work) ||
+        !(ni.goal <= 1e-8)) {
+        return false;
+    }
+    size_t dimension = lwi_open_dimension(t->m, t->goal, t->n_goal, work);
+    if (dimension == 0) {
+        return false;
+    }
+    sol->certified = false;
+    t->info->dimension = dimension;
+    t->info->n++;
+    return true;
+}
+
+/* An end that did not settle, its real parts: it may lie next to a motion's real postures. */
+static bool take_open(void *context, const lwi_set *set, lwi_set_work *w)
+{
+    taking *t = context;
+    lwi_eval_nodes(&w->ev, set->sys, &w->state);
+    lwi_config_from_eval(&t->work->scratch, set->sys, &w->state, &w->ev, t->hint);
+    lwi_state_from_config(&t->work->state, t->m->whole, &t->work->scratch);
+    return take_open_state(t);
+}
+
+/* The same from scattered starts, for motions that every input leaves open: no path leads there. */
+static void scatter_open(taking *t)
+{
+    lwi_random random;
+    double y[LWI_MAX_VARS];
+    lwi_random_seed(&random, 20261201ULL);
+    for (int start = 0; start < 24 && t->info->dimension == 0; start++) {
+        lwi_state_from_config(&t->work->state, t->m->whole, t->hint);
+        for (size_t i = 0; i < t->m->whole->n_var; i++) {
+            y[i] = 1.4 * (2.0 * lwi_random_unit(&random) - 1.0);
+        }
+        lwi_state_step(&t->work->state, t->m->whole, y);
+        (void)take_open_state(t);
+    }
+}
+
 static void run(lwi_all_info *info, const lwi_set *set, const lwi_cx *target, taking *t)
 {
     lwi_set_count count;
@@ -120,7 +168,14 @@ static void run(lwi_all_info *info, const lwi_set *set, const lwi_cx *target, ta
     lwi_set_solve(&count, set, target, take, t, t->work->set);
     info->finite = count.finite;
     info->unsettled = count.unsettled;
-    info->closed = set->fibre.trace_closed && count.unsettled == 0;
+    info->isolated = info->n;
+    if (set->fibre.open > 0) {
+        scatter_open(t);
+        info->dimension = info->dimension > 0 ? info->dimension : set->fibre.open;
+    } else if (count.unsettled > 0) {
+        (void)lwi_set_loose(set, take_open, t, t->work->set);
+    }
+    info->closed = set->fibre.trace_closed && count.unsettled == 0 && info->dimension == 0;
 }
 
 bool lwi_forward_all_ready(const lw_model *m, const lw_posture_ask *readings)

@@ -7,8 +7,11 @@
 
 typedef struct lwi_all_info {
     size_t n;           /* solutions stored in work->solution from 0 on */
+    size_t isolated;    /* of these */
     size_t finite;      /* isolated complex solutions that stayed finite */
     size_t unsettled;   /* paths lost or ended at a singular solution */
+    size_t dimension;   /* of a motion that the inputs leave open, 0 = none was met; the solution
+                         * behind the isolated ones is then one posture of it */
     bool closed;
 } lwi_all_info;
 
@@ -22,5 +25,9 @@ void lwi_forward_all(lwi_all_info *info, const lw_model *model, const lw_spec_to
 void lwi_inverse_all(lwi_all_info *info, const lw_model *model, const lw_spec_tool *tool,
                      const lwi_pose_known *pose, const lwi_goal *goal, size_t n_goal,
                      const lw_config *hint, lw_work *work);
+/* Freedoms of the motion on which work->state lies with all goals met, 0 where it is isolated.
+ * Uses work->trial and both scratch configurations. */
+size_t lwi_open_dimension(const lw_model *model, const lwi_goal *goal, size_t n_goal,
+                          lw_work *work);
 
 #endif

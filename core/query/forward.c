@@ -330,13 +330,6 @@ static lw_code all_solutions(lw_forward_answer *a, const lw_model *m, const lw_s
 {
     lwi_all_info info;
     a->found.within_limits = 0;
-    if (m->set[0] == NULL) {
-        a->found.within_limits = -1;
-        a->outcome = LW_OUTCOME_UNDECIDED;
-        a->reason = "no solution set is prepared for this mechanism: ask with \"near\" for the "
-                    "posture next to a known one";
-        return LW_OK;
-    }
     if (!lwi_forward_all_ready(m, ask->readings)) {
         return LW_FAIL(err, LW_E_POSTURE, "/drives",
                        "\"all\" needs the readings of the drives named in the report's solution "
@@ -357,13 +350,34 @@ static lw_code all_solutions(lw_forward_answer *a, const lw_model *m, const lw_s
         sol->contradicted = n > m->mobility && !readings_agree(sol, m, goal, drive, n);
         agree += sol->within_limits && !sol->contradicted;
     }
+    a->dimension = info.dimension;
     a->outcome = agree > 0 ? LW_OUTCOME_OK : LW_OUTCOME_LIMIT;
     a->reason = agree > 0 ? NULL : "every solution is beyond a limit or contradicted by a reading";
+    if (info.dimension > 0) {
+        a->outcome = info.isolated > 0 && agree > 0 ? LW_OUTCOME_OK : LW_OUTCOME_SINGULAR;
+        a->reason = info.n > info.isolated
+                        ? "these readings leave the mechanism a motion: the last solution is one "
+                          "posture of it, the others are isolated"
+                        : "these readings leave the mechanism a motion, of which no real posture "
+                          "was found; the solutions listed are isolated";
+        return LW_OK;
+    }
     if (info.n == 0) {
         a->outcome = a->complete ? LW_OUTCOME_OUT_OF_REACH : LW_OUTCOME_UNDECIDED;
         a->reason = a->complete ? "the mechanism does not assemble with these readings"
                                 : "no real solution was found, but not every path was settled";
     }
+    return LW_OK;
+}
+
+/* All postures were asked for, and there is nothing to find them with. */
+static lw_code no_set(lw_forward_answer *a)
+{
+    a->n_solution = 0;
+    a->found.within_limits = -1;
+    a->outcome = LW_OUTCOME_UNDECIDED;
+    a->reason = "no solution set is prepared for this mechanism: ask with \"near\" for the "
+                "posture next to a known one";
     return LW_OK;
 }
 
@@ -407,12 +421,15 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
     }
     size_t n = drive_goals(goal, drive, m, ask->readings);
     bool chain = serial_chain(m) && n == m->mobility;
-    if (ask->all && !chain) {
+    if (ask->all && !chain && m->set[0] != NULL) {
         return all_solutions(a, m, tool, ask, goal, n, drive, start, work, err);
     }
     lwi_track(&track, m, start, goal, n, work);
     a->iterations = track.iterations;
     if (!track.arrived) {
+        if (ask->all && !chain) {
+            return no_set(a);
+        }
         a->outcome = LW_OUTCOME_UNDECIDED;
         a->reason = "a wall stands on the straight way of the readings: the drives lose hold "
                     "there, so the assembly cannot be told; give \"near\"";
@@ -435,8 +452,14 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
     if (!(hold > LWI_RANK_POSTURE)) {
         a->outcome = LW_OUTCOME_SINGULAR;
         a->reason = "the drives do not hold this posture";
+        a->dimension = lwi_open_dimension(m, goal, n, work);
+        if (a->dimension > 0) {
+            a->reason = "the drives do not hold this posture: with these readings the mechanism "
+                        "can still move, and this is one posture of many";
+        }
     } else if (n > m->mobility) {
         judge_readings(a, m, goal, drive, n, work);
     }
-    return LW_OK;
+    /* Without a set the one thing that can be told of all is that they are no list. */
+    return ask->all && !chain && a->dimension == 0 ? no_set(a) : LW_OK;
 }

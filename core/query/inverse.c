@@ -449,6 +449,9 @@ static void judge_list(inverse_run *run)
     }
     if (within) {
         a->outcome = LW_OUTCOME_OK;
+        a->reason = a->dimension > 0 ? "the pose leaves the mechanism a motion: listed are postures "
+                                       "of it, by no means all"
+                                     : NULL;
     } else if (a->n_solution > 0) {
         a->outcome = LW_OUTCOME_LIMIT;
         a->reason = "every solution in question is beyond a limit";
@@ -492,6 +495,7 @@ static void run_set(inverse_run *run, const lwi_pose_known *pose, const lwi_goal
     run->a->found.complex_count = (int)info.finite;
     run->a->found.not_converged = (int)info.unsettled;
     run->a->complete = info.closed;
+    run->a->dimension = info.dimension;
     run->a->basis = run->m->set[1]->fibre.trace_closed ? LW_BASIS_TRACE : LW_BASIS_SATURATED;
 }
 

@@ -65,6 +65,9 @@ void lwd_answer_forward(lwd_json *json, const lwd_answer_head *head,
 {
     lwd_answer_begin(json, head, answer->outcome, answer->reason);
     lwd_answer_found(json, &answer->found, answer->complete, answer->basis);
+    if (answer->dimension > 0) {
+        lwd_json_put_int(json, "dimension", (int)answer->dimension);
+    }
     put_disagreement(json, head->edge, answer);
     if (answer->outcome == LW_OUTCOME_UNDECIDED) {
         lwd_json_put_number(json, "wall_at", answer->wall_at);

@@ -120,6 +120,8 @@ typedef struct lw_forward_answer {
     lw_basis basis;
     size_t n_solution;
     const lw_solution *solution;
+    /* freedoms that the readings leave open; the last solution is then one posture of a motion */
+    size_t dimension;
     /* more drives than freedoms: reading minus fitted reading, and what resolution and backlash
      * allow at 99.9 %; n_disagreement = 0 otherwise */
     size_t n_disagreement;
