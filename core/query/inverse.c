@@ -449,8 +449,8 @@ static void judge_list(inverse_run *run)
     }
     if (within) {
         a->outcome = LW_OUTCOME_OK;
-        a->reason = a->dimension > 0 ? "the pose leaves the mechanism a motion: listed are postures "
-                                       "of it, by no means all"
+        a->reason = a->dimension > 0 ? "the pose leaves the mechanism a motion: what is listed are "
+                                       "postures of it, not all"
                                      : NULL;
     } else if (a->n_solution > 0) {
         a->outcome = LW_OUTCOME_LIMIT;
