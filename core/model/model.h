@@ -120,6 +120,8 @@ struct lw_work {
     lw_jacobian_answer jacobian;
     lw_margin_answer margin;
     lw_reach_answer reach;
+    lw_distance_answer distance;
+    struct lwi_distance_work *distance_work;
     struct lwi_prove *prove; /* core/proof; NULL where moves are not proved */
     lw_path_answer path;
     lw_travel_answer travel;

@@ -3,6 +3,7 @@
 #include "../math/vec3.h"
 #include "../proof/prove.h"
 #include "../solve/newton.h"
+#include "distance.h"
 #include "singular.h"
 
 #include <stdlib.h>
@@ -87,6 +88,10 @@ static lw_code open_all(lw_work *w, const lw_model *m, lw_err *err)
     if (rc != LW_OK) {
         return rc;
     }
+    w->distance_work = calloc(1, sizeof *w->distance_work);
+    if (w->distance_work == NULL) {
+        return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
+    }
     rc = lwi_prove_new(&w->prove, m, err);
     if (rc != LW_OK) {
         return rc;
@@ -117,6 +122,7 @@ void lw_work_free(lw_work *w)
     }
     free(w->solution);
     free(w->config_store);
+    free(w->distance_work);
     free(w->limb_result);
     lwi_prove_free(w->prove);
     lwi_singular_work_close(w->singular_work);

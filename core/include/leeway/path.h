@@ -163,6 +163,7 @@ lw_code lw_travel(const lw_travel_answer **out, const lw_model *model, const lw_
 /* How far the nearest singular postures and limits are, as a ball in tool space: |dx|^2 = |dp|^2 +
  * (characteristic length * rotation)^2. */
 typedef struct lw_distance_side {
+    bool none;           /* proved that there is none anywhere; then nothing else is known */
     bool known_least;    /* at_least_m was proved */
     double at_least_m;
     bool known_most;     /* a posture at at_most_m was found and proved to lie beyond */

@@ -1,0 +1,559 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Distances to singular postures and limits: brackets against sampling, against closed forms and
+ * against a plain search over all rotations written here. What is checked against is never the code
+ * of core/proof/ball*.c: sampled postures are judged by the jacobian and inverse questions. */
+#include "lwt.h"
+#include "lwt_build.h"
+#include "lwt_kit.h"
+
+#include "../bench/demo.h"
+
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+static const double PI = 3.14159265358979323846;
+
+/* LWT_SHARE scales the number of samples: sanitizers and slow machines. */
+static size_t share(size_t n)
+{
+    const char *text = getenv("LWT_SHARE");
+    double part = text != NULL ? strtod(text, NULL) : 1.0;
+    double out = (double)n * part;
+    return out < 10.0 ? 10 : (size_t)out;
+}
+
+typedef struct subject {
+    const lw_model *model;
+    lw_work *work;
+    lw_frame tool;      /* where the question was asked */
+    double coord[LW_MAX_COORDS];
+    lw_mode mode;
+    double length;
+} subject;
+
+/* Keeps what the answer borrowed: the next question takes it away. */
+static lw_distance_answer ask(subject *s, const lw_model *model, lw_work *work,
+                              const lw_posture_ask *posture, size_t budget)
+{
+    const lw_distance_answer *a;
+    lw_err err = {.code = LW_OK};
+    lw_distance_ask question = {.posture = posture, .budget = budget};
+    if (lw_distance(&a, model, &question, work, &err) != LW_OK) {
+        lwt_fail("distance: %s %s", err.where, err.msg);
+    }
+    assert_non_null(a->solution);
+    s->model = model;
+    s->work = work;
+    s->tool = a->solution->tool;
+    s->mode = a->solution->mode;
+    s->length = a->length_m;
+    memcpy(s->coord, a->solution->config.coord,
+           lw_spec_coord_count(lw_model_spec(model)) * sizeof *s->coord);
+    return *a;
+}
+
+static void check_bracket(const lw_distance_side *side)
+{
+    assert_false(side->none && (side->known_least || side->known_most));
+    if (side->known_least) {
+        assert_true(side->at_least_m >= 0.0);
+    }
+    if (side->known_least && side->known_most) {
+        assert_true(side->at_least_m <= side->at_most_m);
+    }
+}
+
+/* A random pose within r of the subject's, as the outputs name it. */
+static void sample(lw_pose_ask *out, const subject *s, double r, lwt_random *random)
+{
+    const lw_spec *spec = lw_model_spec(s->model);
+    double y[LW_MAX_OUTPUTS];
+    double w[3] = {0, 0, 0};
+    double size = 0.0;
+    size_t turns = 0;
+    size_t one = 0;
+    memset(out, 0, sizeof *out);
+    for (size_t o = 0; o < spec->n_output; o++) {
+        y[o] = lwt_random_normal(random);
+        size += y[o] * y[o];
+    }
+    /* more of them near the rim, where a false proof would show */
+    double reach = r * pow(lwt_random_in(random, 0.0, 1.0), 0.15) / sqrt(size);
+    for (size_t o = 0; o < spec->n_output; o++) {
+        lw_output_kind kind = spec->output[o].kind;
+        y[o] *= reach;
+        if (kind <= LW_OUT_Z) {
+            out->has_position[kind] = true;
+            out->position_m[kind] = s->tool.pos_m[kind] + y[o];
+        } else if (kind < LW_OUT_COORD) {
+            one = (size_t)LW_OUT_RZ - (size_t)kind;
+            w[kind - LW_OUT_RX] = y[o] / s->length;
+            turns++;
+        } else {
+            size_t coord = spec->output[o].coord;
+            bool turning = lw_spec_coord_turning(spec, coord);
+            out->joint_coord[out->n_joint] = coord;
+            out->joint_value[out->n_joint++] = s->coord[coord] +
+                                               (turning ? y[o] / s->length : y[o]);
+        }
+    }
+    double zyx[3];
+    lw_zyx_from_rot(zyx, s->tool.rot);
+    if (turns == 1) {
+        out->orient = LW_ORIENT_ZYX;
+        out->has_zyx[one] = true;
+        out->zyx_rad[one] = zyx[one] + w[2 - one];
+    } else if (turns == 3) {
+        double angle = lwt_norm(w);
+        double q[4] = {cos(0.5 * angle), 0, 0, 0};
+        double p[4];
+        for (int k = 0; k < 3; k++) {
+            q[k + 1] = angle > 0.0 ? sin(0.5 * angle) * w[k] / angle : 0.0;
+        }
+        lw_quat_from_rot(p, s->tool.rot);
+        out->orient = LW_ORIENT_QUATERNION;
+        out->quat[0] = q[0] * p[0] - q[1] * p[1] - q[2] * p[2] - q[3] * p[3];
+        out->quat[1] = q[0] * p[1] + q[1] * p[0] + q[2] * p[3] - q[3] * p[2];
+        out->quat[2] = q[0] * p[2] + q[2] * p[0] + q[3] * p[1] - q[1] * p[3];
+        out->quat[3] = q[0] * p[3] + q[3] * p[0] + q[1] * p[2] - q[2] * p[1];
+    }
+}
+
+static const lw_inverse_answer *solve(const subject *s, const lw_pose_ask *pose)
+{
+    const lw_inverse_answer *a;
+    lw_err err = {.code = LW_OK};
+    lw_inverse_ask question = {.pose = *pose, .has_mode = true, .mode = s->mode};
+    if (lw_inverse(&a, s->model, &question, s->work, &err) != LW_OK) {
+        lwt_fail("inverse: %s %s", err.where, err.msg);
+    }
+    return a;
+}
+
+/* Sign of the rates' determinant where it is square, else 1 where they have full rank, 0 where
+ * not. */
+static int forward_sign(const subject *s, const lw_pose_ask *pose)
+{
+    const lw_margin_answer *margin;
+    const lw_jacobian_answer *j;
+    lw_err err = {.code = LW_OK};
+    lw_posture_ask posture = {.kind = LW_BY_POSE, .pose = *pose, .has_mode = true,
+                              .mode = s->mode};
+    lw_jacobian_ask question = {.posture = &posture};
+    assert_int_equal(lw_jacobian(&j, s->model, &question, s->work, &err), LW_OK);
+    if (j->has_inverse && j->n_drive == j->n_output) {
+        return lwt_det(j->inverse, j->n_drive) > 0.0 ? 1 : -1;
+    }
+    assert_int_equal(lw_margin(&margin, s->model, 0, NULL, &posture, s->work, &err), LW_OK);
+    return (margin->classes & (LW_CLASS_FORWARD | LW_CLASS_CONSTRAINT)) == 0 ? 1 : 0;
+}
+
+/* Samples in each proved ball: no change of sign, no dead point passed, no limit broken. */
+static void check_balls(const lw_model *model, lw_work *work, const lw_posture_ask *posture,
+                        size_t budget, size_t samples, lwt_random *random)
+{
+    subject s;
+    lw_distance_answer a = ask(&s, model, work, posture, budget);
+    lw_pose_ask pose;
+    check_bracket(&a.forward);
+    check_bracket(&a.inverse);
+    check_bracket(&a.limit);
+    sample(&pose, &s, 0.0, random);
+    int sign = forward_sign(&s, &pose);
+    for (size_t i = 0; i < samples; i++) {
+        if (a.forward.known_least && a.forward.at_least_m > 0.0) {
+            sample(&pose, &s, a.forward.at_least_m, random);
+            /* where no posture of the mode is, none is singular */
+            if (solve(&s, &pose)->n_solution > 0) {
+                assert_int_equal(forward_sign(&s, &pose), sign);
+            }
+        }
+        if (a.inverse.known_least && a.inverse.at_least_m > 0.0) {
+            sample(&pose, &s, a.inverse.at_least_m, random);
+            assert_int_equal(solve(&s, &pose)->n_solution, 1);
+        }
+        if (a.limit.known_least && a.limit.at_least_m > 0.0) {
+            sample(&pose, &s, a.limit.at_least_m, random);
+            const lw_inverse_answer *at = solve(&s, &pose);
+            assert_true(at->n_solution == 1 && at->solution->within_limits);
+        }
+    }
+}
+
+static void sampled_demo(const char *name, double spread_m, size_t budget, size_t samples)
+{
+    lw_model *model = lwt_bench_demo(name);
+    lw_work *work;
+    lw_err err = {.code = LW_OK};
+    lwt_random random;
+    subject s;
+    assert_int_equal(lw_work_new(&work, model, &err), LW_OK);
+    lwt_random_init(&random, 41);
+    (void)ask(&s, model, work, &lw_model_spec(model)->home, 0);
+    check_balls(model, work, &lw_model_spec(model)->home, budget, share(samples), &random);
+    size_t done = 0;
+    for (size_t i = 0; i < 200 && done < 4; i++) {
+        lw_posture_ask at = {.kind = LW_BY_POSE, .has_mode = true, .mode = s.mode};
+        const lw_posture_answer *got;
+        sample(&at.pose, &s, spread_m, &random);
+        if (lw_posture(&got, model, 0, NULL, &at, work, &err) == LW_OK &&
+            got->outcome == LW_OUTCOME_OK) {
+            check_balls(model, work, &at, budget, share(samples), &random);
+            done++;
+        }
+    }
+    assert_int_equal(done, 4);
+    lw_work_free(work);
+    lw_model_free(model);
+}
+
+static void six_struts_hold_in_their_balls(void **state)
+{
+    (void)state;
+    sampled_demo("tilt-table", 0.05, 300, 1500);
+}
+
+static void four_arms_hold_in_their_balls(void **state)
+{
+    (void)state;
+    sampled_demo("label-stage", 0.1, 1500, 1500);
+}
+
+static void carriages_hold_in_their_balls(void **state)
+{
+    (void)state;
+    sampled_demo("belt-hopper", 0.12, 1500, 1500);
+}
+
+static void stacked_plates_hold_in_their_balls(void **state)
+{
+    (void)state;
+    sampled_demo("lid-turner", 0.09, 1500, 1500);
+}
+
+/* ---- three struts in the plane ---------------------------------------------------------------- */
+
+static const double tri_base[6] = {0.0, 0.0, 1.2, 0.1, 0.5, 1.0};
+static const double tri_plate[6] = {-0.25, -0.15, 0.3, -0.1, 0.02, 0.28};
+
+/* Determinant of the three lines, each scaled by its strut's length. */
+static double three_lines(double x, double y, double turn)
+{
+    double row[9];
+    for (size_t i = 0; i < 3; i++) {
+        double bx = cos(turn) * tri_plate[2 * i] - sin(turn) * tri_plate[2 * i + 1];
+        double by = sin(turn) * tri_plate[2 * i] + cos(turn) * tri_plate[2 * i + 1];
+        double dx = x + bx - tri_base[2 * i];
+        double dy = y + by - tri_base[2 * i + 1];
+        row[3 * i] = dx;
+        row[3 * i + 1] = dy;
+        row[3 * i + 2] = bx * dy - by * dx;
+    }
+    return lwt_det(row, 3);
+}
+
+/* Nearest singular pose by a plain search: for each turn the singular positions form a conic
+ * (Sefrioui & Gosselin 1995, Mechanism and Machine Theory 30(4); from memory), which every ray
+ * meets at most twice. Lengths count over 1 m. Never below the truth, and above it by less than
+ * the grid allows. */
+static double three_lines_nearest(const double pose[3])
+{
+    double best = INFINITY;
+    for (int a = -240; a <= 240; a++) {
+        double turn = a / 160.0;
+        for (int k = 0; k < 240 && fabs(turn) < best; k++) {
+            double c = cos(2.0 * PI * k / 240.0);
+            double s = sin(2.0 * PI * k / 240.0);
+            double most = fmin(2.0, sqrt(best * best - turn * turn));
+            double f0 = three_lines(pose[0], pose[1], pose[2] + turn);
+            for (int t = 1; t <= 24; t++) {
+                double high = most * t / 24.0;
+                double low = most * (t - 1) / 24.0;
+                double f = three_lines(pose[0] + high * c, pose[1] + high * s, pose[2] + turn);
+                if ((f > 0.0) == (f0 > 0.0)) {
+                    continue;
+                }
+                for (int i = 0; i < 40; i++) {
+                    double mid = 0.5 * (low + high);
+                    f = three_lines(pose[0] + mid * c, pose[1] + mid * s, pose[2] + turn);
+                    low = (f > 0.0) == (f0 > 0.0) ? mid : low;
+                    high = (f > 0.0) == (f0 > 0.0) ? high : mid;
+                }
+                best = fmin(best, hypot(high, turn));
+                break;
+            }
+        }
+    }
+    return best;
+}
+
+static void brackets_the_conic_of_three_planar_struts(void **state)
+{
+    (void)state;
+    static const double pose[5][3] = {
+        {0.55, 0.4, 0.3}, {0.5, 0.35, -0.4}, {0.7, 0.5, 0.9}, {0.4, 0.6, -0.2}, {0.6, 0.2, 0.1}};
+    lwt_random random;
+    lwt_random_init(&random, 5);
+    for (size_t i = 0; i < 5; i++) {
+        lwt_machine *m = lwt_kit_planar_struts("struts", tri_base, tri_plate, pose[i]);
+        lwt_machine_load(m);
+        lw_frame frame = lwt_frame_planar(pose[i][0], pose[i][1], pose[i][2]);
+        const lw_posture_ask *at = lwt_by_pose(m, &frame, NULL, NULL, NULL);
+        double truth = three_lines_nearest(pose[i]);
+        subject s;
+        lw_distance_answer once = ask(&s, m->model, m->work, at, 0);
+        lw_distance_answer many = ask(&s, m->model, m->work, at, 20000);
+        assert_true(once.forward.known_least && once.forward.known_most);
+        assert_true(once.forward.at_least_m <= truth && many.forward.at_least_m <= truth);
+        assert_true(many.forward.at_least_m >= once.forward.at_least_m);
+        assert_true(many.forward.at_least_m >= 0.95 * many.forward.at_most_m);
+        /* 1/160 rad of turn and 1/240 turn of ray: less than a hundredth of the way */
+        assert_true(once.forward.at_most_m <= truth * (1.0 + 1e-6));
+        assert_true(once.forward.at_most_m >= 0.99 * truth);
+        /* the posture returned is at that distance, and its lines meet in a point */
+        const lw_frame *found = &once.forward.tool;
+        double turn = lwt_wrap(atan2(found->rot[3], found->rot[0]) - pose[i][2]);
+        double far = sqrt(pow(found->pos_m[0] - pose[i][0], 2) +
+                          pow(found->pos_m[1] - pose[i][1], 2) + turn * turn);
+        lwt_near_rel(far, once.forward.at_most_m, 1e-9);
+        lwt_near(three_lines(found->pos_m[0], found->pos_m[1], pose[i][2] + turn), 0.0, 1e-5);
+        assert_true(once.inverse.none); /* a strut has no dead point but length zero */
+        assert_true(once.limit.none);
+        check_balls(m->model, m->work, at, 500, share(700), &random);
+        lwt_machine_free(m);
+    }
+}
+
+/* ---- arms in the plane: stretched and folded --------------------------------------------------- */
+
+static const double arm_base[6] = {0.0, 0.0, 1.0, 0.0, 0.5, 0.9};
+static const double arm_plate[6] = {-0.15, -0.1, 0.15, -0.1, 0.0, 0.17};
+
+/* For one turn an arm is stretched or folded on two circles about its base: the way to them is
+ * straight. Over all turns by a plain scan. (Textbook: a two-link arm reaches an annulus of radii l1
+ * + l2 and |l1 - l2|.) */
+static double annulus_nearest(const double pose[3], double l1, double l2)
+{
+    double best = INFINITY;
+    for (int a = -30000; a <= 30000; a++) {
+        double turn = a / 30000.0;
+        for (size_t i = 0; i < 3; i++) {
+            double t = pose[2] + turn;
+            double x = pose[0] + cos(t) * arm_plate[2 * i] - sin(t) * arm_plate[2 * i + 1];
+            double y = pose[1] + sin(t) * arm_plate[2 * i] + cos(t) * arm_plate[2 * i + 1];
+            double d = hypot(x - arm_base[2 * i], y - arm_base[2 * i + 1]);
+            double gap = fmin(l1 + l2 - d, d - fabs(l1 - l2));
+            best = fmin(best, hypot(fmax(gap, 0.0), turn));
+        }
+    }
+    return best;
+}
+
+static void brackets_stretched_and_folded_arms(void **state)
+{
+    (void)state;
+    static const double pose[4][3] = {
+        {0.5, 0.3, 0.1}, {0.45, 0.35, -0.5}, {0.55, 0.25, 0.6}, {0.5, 0.45, 0.0}};
+    static const int elbow[4][3] = {{1, 1, 1}, {-1, 1, -1}, {1, -1, -1}, {-1, -1, -1}};
+    lwt_random random;
+    lwt_random_init(&random, 6);
+    for (size_t i = 0; i < 4; i++) {
+        double theta[3];
+        double l1 = i % 2 == 0 ? 0.45 : 0.6;
+        double l2 = 0.5;
+        lwt_machine *m = lwt_kit_planar_rrr("arms", 3, arm_base, arm_plate, l1, l2, pose[i],
+                                            elbow[i], theta);
+        lwt_machine_load(m);
+        lw_frame frame = lwt_frame_planar(pose[i][0], pose[i][1], pose[i][2]);
+        const lw_mode *mode = &m->report->reference_mode;
+        const lw_posture_ask *at = lwt_by_pose(m, &frame, NULL, mode, NULL);
+        double truth = annulus_nearest(pose[i], l1, l2);
+        subject s;
+        lw_distance_answer a = ask(&s, m->model, m->work, at, 8000);
+        assert_true(a.inverse.known_least && a.inverse.known_most);
+        assert_true(a.inverse.at_least_m <= truth);
+        lwt_near_rel(a.inverse.at_most_m, truth, 1e-4);
+        assert_true(a.inverse.at_least_m >= 0.95 * truth);
+        assert_true(a.inverse.limb < 3);
+        check_balls(m->model, m->work, at, 800, share(700), &random);
+        lwt_machine_free(m);
+    }
+}
+
+/* ---- machines that never turn: closed forms ---------------------------------------------------- */
+
+/* A rod of a carriage stands square to the rail where its end is as far from the rail's line as the
+ * rod is long; the hand does not turn, so the way there is straight. Figures of the belt hopper's
+ * document: rods 400 mm, rail through the carriage ball centres. */
+static void a_rod_square_to_its_rail_is_a_straight_way_off(void **state)
+{
+    (void)state;
+    static const double rail[3][2] = {{0, 0.3}, {-0.24, -0.18}, {0.24, -0.18}};
+    static const double ball[3][2] = {{0, 0.06}, {-0.048, -0.036}, {0.048, -0.036}};
+    lw_model *model = lwt_bench_demo("belt-hopper");
+    lw_work *work;
+    lw_err err = {.code = LW_OK};
+    lwt_random random;
+    subject s;
+    assert_int_equal(lw_work_new(&work, model, &err), LW_OK);
+    lwt_random_init(&random, 8);
+    (void)ask(&s, model, work, &lw_model_spec(model)->home, 0);
+    for (size_t i = 0; i < 20; i++) {
+        lw_posture_ask at = {.kind = LW_BY_POSE, .has_mode = true, .mode = s.mode};
+        const lw_posture_answer *got;
+        subject here;
+        sample(&at.pose, &s, 0.12, &random);
+        if (lw_posture(&got, model, 0, NULL, &at, work, &err) != LW_OK ||
+            got->solution == NULL) {
+            continue;
+        }
+        double truth = INFINITY;
+        for (size_t k = 0; k < 3; k++) {
+            double d = hypot(at.pose.position_m[0] + ball[k][0] - rail[k][0],
+                             at.pose.position_m[1] + ball[k][1] - rail[k][1]);
+            truth = fmin(truth, 0.4 - d);
+        }
+        lw_distance_answer a = ask(&here, model, work, &at, 0);
+        lwt_near(a.inverse.at_least_m, truth, 1e-6);
+        lwt_near(a.inverse.at_most_m, truth, 1e-6);
+    }
+    lw_work_free(work);
+    lw_model_free(model);
+}
+
+/* A crank's rod is at a dead point where its end is as near to, or as far from, the knee's circle as
+ * the rod is long. Delta-type machine of the kit; distance of a point to a circle is textbook
+ * geometry. */
+static void a_crank_in_line_with_its_rod_is_a_straight_way_off(void **state)
+{
+    (void)state;
+    static const double angle[3] = {0.0, 2.0943951023931953, 4.1887902047863905};
+    static const double ref[3] = {0.0, 0.0, -0.7};
+    const double base = 0.2;
+    const double hand = 0.06;
+    const double crank = 0.3;
+    const double rod = 0.7;
+    double theta[3];
+    lwt_machine *m = lwt_kit_delta("delta", base, hand, crank, rod, 0.03, angle, ref, theta);
+    lwt_machine_load(m);
+    lwt_random random;
+    lwt_random_init(&random, 9);
+    for (size_t i = 0; i < 12; i++) {
+        lw_frame frame = lwt_frame_planar(0, 0, 0);
+        double truth = INFINITY;
+        for (int k = 0; k < 3; k++) {
+            frame.pos_m[k] = ref[k] + lwt_random_in(&random, -0.15, 0.15);
+        }
+        for (size_t k = 0; k < 3; k++) {
+            double c = cos(angle[k]);
+            double sn = sin(angle[k]);
+            double out = frame.pos_m[0] * c + frame.pos_m[1] * sn + hand - base;
+            double aside = -frame.pos_m[0] * sn + frame.pos_m[1] * c;
+            double reach = hypot(out, frame.pos_m[2]);
+            truth = fmin(truth, rod - hypot(reach - crank, aside));
+            truth = fmin(truth, hypot(reach + crank, aside) - rod);
+        }
+        subject s;
+        const lw_posture_ask *at = lwt_by_pose(m, &frame, NULL, &m->report->reference_mode, NULL);
+        lw_distance_answer a = ask(&s, m->model, m->work, at, 0);
+        lwt_near(a.inverse.at_least_m, truth, 1e-6);
+        lwt_near(a.inverse.at_most_m, truth, 1e-5);
+        check_balls(m->model, m->work, at, 300, share(300), &random);
+    }
+    lwt_machine_free(m);
+}
+
+/* Strut lengths are limited by spheres (in the plane circles) about the base points; over all turns
+ * by a plain scan. */
+static void brackets_the_limits_of_struts(void **state)
+{
+    (void)state;
+    static const double pose[3] = {0.55, 0.4, 0.3};
+    const double low = 0.3;
+    const double high = 0.95;
+    lwt_machine *m = lwt_kit_planar_struts("struts", tri_base, tri_plate, pose);
+    for (size_t i = 0; i < 3; i++) {
+        m->spec->rod[i].range_m =
+            (lw_range){.has_low = true, .low = low, .has_high = true, .high = high};
+    }
+    lwt_machine_load(m);
+    lwt_random random;
+    lwt_random_init(&random, 10);
+    for (size_t i = 0; i < 8; i++) {
+        double at[3];
+        double truth = INFINITY;
+        for (size_t k = 0; k < 3; k++) {
+            at[k] = pose[k] + lwt_random_in(&random, -0.05, 0.05);
+        }
+        for (int a = -30000; a <= 30000; a++) {
+            double turn = a / 30000.0;
+            for (size_t k = 0; k < 3; k++) {
+                double t = at[2] + turn;
+                double x = at[0] + cos(t) * tri_plate[2 * k] - sin(t) * tri_plate[2 * k + 1];
+                double y = at[1] + sin(t) * tri_plate[2 * k] + cos(t) * tri_plate[2 * k + 1];
+                double d = hypot(x - tri_base[2 * k], y - tri_base[2 * k + 1]);
+                truth = fmin(truth, hypot(fmax(fmin(high - d, d - low), 0.0), turn));
+            }
+        }
+        lw_frame frame = lwt_frame_planar(at[0], at[1], at[2]);
+        const lw_posture_ask *posture = lwt_by_pose(m, &frame, NULL, NULL, NULL);
+        subject s;
+        lw_distance_answer a = ask(&s, m->model, m->work, posture, 0);
+        assert_true(a.limit.known_least && a.limit.known_most);
+        assert_true(a.limit.at_least_m <= truth);
+        assert_true(a.limit.at_least_m >= 0.6 * truth);
+        lwt_near_rel(a.limit.at_most_m, truth, 1e-3);
+        assert_int_equal(a.limit.limit.of, LW_LIMIT_ROD);
+        assert_true(a.limit.limit.over > 0.0);
+    }
+    lwt_machine_free(m);
+}
+
+/* The same question gets the same answer, and takes no memory. */
+static void answers_alike_and_allocates_nothing(void **state)
+{
+    (void)state;
+    lw_model *model = lwt_bench_demo("tilt-table");
+    lw_work *work[2];
+    lw_err err = {.code = LW_OK};
+    subject s;
+    assert_int_equal(lw_work_new(&work[0], model, &err), LW_OK);
+    assert_int_equal(lw_work_new(&work[1], model, &err), LW_OK);
+    const lw_posture_ask *home = &lw_model_spec(model)->home;
+    lw_distance_answer a = ask(&s, model, work[0], home, 500);
+    lwt_alloc_reset();
+    (void)ask(&s, model, work[0], home, 0);
+    lw_distance_answer b = ask(&s, model, work[0], home, 500);
+    assert_int_equal(lwt_alloc_calls(), 0);
+    lw_distance_answer c = ask(&s, model, work[1], home, 500);
+    lwt_same(b.forward.at_least_m, a.forward.at_least_m);
+    lwt_same(b.forward.at_most_m, a.forward.at_most_m);
+    lwt_same(b.limit.at_least_m, a.limit.at_least_m);
+    lwt_same(c.forward.at_least_m, a.forward.at_least_m);
+    lwt_same(c.limit.at_most_m, a.limit.at_most_m);
+    assert_true(a.forward.at_least_m >= 0.4 * a.forward.at_most_m);
+    assert_true(a.cells <= 1000);
+    assert_true(a.inverse.none);
+    lw_work_free(work[0]);
+    lw_work_free(work[1]);
+    lw_model_free(model);
+}
+
+int main(void)
+{
+    lw_init();
+    const struct CMUnitTest tests[] = {
+        cmocka_unit_test(six_struts_hold_in_their_balls),
+        cmocka_unit_test(four_arms_hold_in_their_balls),
+        cmocka_unit_test(carriages_hold_in_their_balls),
+        cmocka_unit_test(stacked_plates_hold_in_their_balls),
+        cmocka_unit_test(brackets_the_conic_of_three_planar_struts),
+        cmocka_unit_test(brackets_stretched_and_folded_arms),
+        cmocka_unit_test(a_rod_square_to_its_rail_is_a_straight_way_off),
+        cmocka_unit_test(a_crank_in_line_with_its_rod_is_a_straight_way_off),
+        cmocka_unit_test(brackets_the_limits_of_struts),
+        cmocka_unit_test(answers_alike_and_allocates_nothing),
+    };
+    return cmocka_run_group_tests(tests, NULL, NULL);
+}
