@@ -122,7 +122,8 @@ struct lw_work {
     lw_reach_answer reach;
     lw_distance_answer distance;
     struct lwi_distance_work *distance_work;
-    struct lwi_prove *prove; /* core/proof; NULL where moves are not proved */
+    struct lwi_prove *prove; /* core/proof: moves of the tool, */
+    struct lwi_prove *prove_joints; /* moves by readings */
     lw_path_answer path;
     lw_travel_answer travel;
     lw_singular_answer singular;

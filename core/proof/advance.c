@@ -55,23 +55,44 @@ static verdict judge_margins(run *r)
     return r->margin >= 0 ? MARGIN : GOOD;
 }
 
+/* The posture at t by closed formulas, in the mode of the start: near a fold, where Newton's steps
+ * from the last proved end grow too large. GOOD where it was found. */
+static verdict by_formula(run *r, double t)
+{
+    lwi_prove *p = r->p;
+    lwi_pose_known pose;
+    lw_solution *found;
+    double miss = 0.0;
+    bool open = false;
+    if (p->joints || !p->model->explicit_inverse) {
+        return UNKNOWN;
+    }
+    memset(&pose, 0, sizeof pose);
+    lwi_move_at(&pose.body, pose.output_coord, p->move, p->model, t);
+    r->limb = lwi_inverse_misses(&miss, p->model, &pose, &r->mode, r->work);
+    if (r->limb != SIZE_MAX) {
+        /* 0: by how much is not known. */
+        return miss == 0.0 || fabs(miss) > 1e-9 ? NO_REACH : UNKNOWN;
+    }
+    if (!lwi_inverse_one(&found, &open, p->model, r->ask->tool, &pose, &r->mode, &r->sol->config,
+                         r->work) ||
+        open) {
+        return UNKNOWN;
+    }
+    lwi_follow_take(p, &found->config, &r->sol->config);
+    return GOOD;
+}
+
 /* The posture at t, followed from where the proof ended; what is wrong with it. */
 static verdict look(run *r, double t)
 {
-    lwi_prove *p = r->p;
-    if (!lwi_follow_to(p, r->low, t, &r->sol->config)) {
-        lwi_pose_known pose;
-        double miss = 0.0;
-        if (!p->model->explicit_inverse) {
-            return UNKNOWN;
+    if (!lwi_follow_to(r->p, r->low, t, &r->sol->config)) {
+        verdict v = by_formula(r, t);
+        if (v != GOOD) {
+            return v;
         }
-        memset(&pose, 0, sizeof pose);
-        lwi_move_at(&pose.body, pose.output_coord, p->move, p->model, t);
-        size_t limb = lwi_inverse_misses(&miss, p->model, &pose, &r->mode, r->work);
-        r->limb = limb;
-        return limb != SIZE_MAX && fabs(miss) > 1e-9 ? NO_REACH : UNKNOWN;
     }
-    lwi_solution_finish(r->sol, p->model, r->ask->tool);
+    lwi_solution_finish(r->sol, r->p->model, r->ask->tool);
     if (!r->sol->within_limits) {
         return LIMIT;
     }
@@ -191,6 +212,23 @@ static void take_piece(run *r, double high)
     a->n_piece++;
 }
 
+/* Readings that can not be followed further: where hold is all but lost, the posture that the drives
+ * do not hold is at hand, since its distance goes with the square of what hold is left. */
+static void stuck_readings(run *r, double high)
+{
+    const lw_rank_info *drives = &r->work->margin.drives;
+    verdict v = look(r, r->low);
+    size_t n = drives->n_singular;
+    if (v == HOLD || (v != UNKNOWN && n > 0 && drives->columns <= n &&
+                      drives->singular[drives->columns - 1] < 5e-3 * drives->singular[0])) {
+        witness(r, HOLD, r->low);
+        return;
+    }
+    undecided(r, LW_STOP_RESOLUTION, high,
+              "the readings that lead could not be proved to be followed further, nor that they "
+              "cannot: with spare drives, others may lead");
+}
+
 /* The smallest interval was not enough. An inverse singularity: beyond it the limb has no solution
  * (found before this), or has one, in another branch. */
 static void stuck(run *r, double high)
@@ -202,6 +240,10 @@ static void stuck(run *r, double high)
         undecided(r, LW_STOP_RESOLUTION, high,
                   "the smallest interval was not enough: the way grazes a threshold, a limit or a "
                   "singular posture here; ask for a lower threshold, or move the way aside");
+        return;
+    }
+    if (p->joints) {
+        stuck_readings(r, high);
         return;
     }
     r->a->limb = p->limb;

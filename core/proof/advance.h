@@ -17,6 +17,7 @@ typedef struct lwi_advance_ask {
     const atomic_bool *abort;
     lw_proof_piece *piece; /* room for piece_room; NULL none */
     size_t piece_room;
+    bool by_readings;      /* a move by readings */
     bool close_up;         /* prove up to a witness, not only find it */
 } lwi_advance_ask;
 

@@ -23,12 +23,34 @@ void lwi_state_from_point(lwi_state *out, const lwi_prove *p, const lwi_prove_po
 static void give(lwi_prove *p, double t)
 {
     double coord[LW_MAX_OUTPUTS];
+    p->t = t;
+    if (p->joints) {
+        return;
+    }
     lwi_move_at(&p->state->given[p->tool_node], coord, p->move, p->model, t);
     for (size_t k = 0; k < p->sys->n_element; k++) {
         if (p->sys->element[k].given) {
             p->state->value[k] = p->given[k][0] + t * p->given[k][1];
         }
     }
+}
+
+/* Residual of a row or a reading that leads, and its derivative into p->rows. */
+static double row_at(lwi_prove *p, size_t row)
+{
+    size_t d;
+    double value;
+    if (!lwi_row_is_drive(p, row, &d)) {
+        lwi_row_derivative(p->rows, p->sys, &p->sys->row[row], p->state, p->ev);
+        return lwi_row_residual(p->sys, &p->sys->row[row], p->state, p->ev);
+    }
+    const lw_spec_drive *drive = &p->model->spec->drive[d];
+    double scale = drive->turning ? 1.0 : 1.0 / p->sys->length_m;
+    (void)lwi_terms(&value, p->rows, p->sys, p->state, p->ev, drive->term, drive->n_term);
+    for (size_t j = 0; j < p->sys->n_var; j++) {
+        p->rows[j] *= scale;
+    }
+    return scale * (value - p->from[d] - p->t * p->along[d]);
 }
 
 /* Newton on all blocks from p->state as it stands; false where a block does not converge. The
@@ -46,12 +68,10 @@ static bool solve(lwi_prove *p)
             double log2_abs;
             double size = 0.0;
             for (size_t i = 0; i < n; i++) {
-                const lwi_row *row = &sys->row[block->pick[i]];
-                lwi_row_derivative(p->rows, sys, row, p->state, p->ev);
+                p->res[i] = -row_at(p, block->pick[i]);
                 for (size_t j = 0; j < n; j++) {
                     p->square[i * n + j] = p->rows[block->var[j]];
                 }
-                p->res[i] = -lwi_row_residual(sys, row, p->state, p->ev);
             }
             if (lwi_lu(p->square, n, n, p->perm, &log2_abs) == 0) {
                 p->limb = block->limb;
@@ -186,6 +206,21 @@ void lwi_follow_config(lwi_prove *p, lw_config *config)
     lwi_config_from_eval(config, p->sys, p->state, p->ev, &hint);
 }
 
+void lwi_follow_take(lwi_prove *p, const lw_config *found, lw_config *config)
+{
+    const double whole = 6.283185307179586476925;
+    lwi_state_from_config(p->state, p->sys, found);
+    for (size_t k = 0; k < p->sys->n_element; k++) {
+        const lwi_element *el = &p->sys->element[k];
+        if (el->kind == LWI_TURN && !el->given) {
+            double *value = &p->state->value[k];
+            *value += whole * round((p->left.value[k] - *value) / whole);
+        }
+    }
+    lwi_eval_nodes(p->ev, p->sys, p->state);
+    lwi_follow_config(p, config);
+}
+
 /* Rows of every block that are solved: the best conditioned at the present state. */
 void lwi_follow_pick(lwi_prove *p)
 {
@@ -195,18 +230,22 @@ void lwi_follow_pick(lwi_prove *p)
         lwi_prove_block *block = &p->block[b];
         size_t n = block->n;
         size_t m = block->n_row;
+        size_t solved = n - p->n_lead;
+        for (size_t l = 0; l < p->n_lead; l++) {
+            block->pick[solved + l] = (unsigned short)(sys->n_row + p->lead[l]);
+        }
         for (size_t i = 0; i < m; i++) {
             lwi_row_derivative(p->rows, sys, &sys->row[block->row[i]], p->state, p->ev);
             for (size_t j = 0; j < n; j++) {
                 p->square[j * m + i] = p->rows[block->var[j]];
             }
         }
-        if (m == n) {
-            memcpy(block->pick, block->row, n * sizeof *block->pick);
+        if (m == solved) {
+            memcpy(block->pick, block->row, m * sizeof *block->pick);
             continue;
         }
         (void)lwi_qrp(p->square, n, m, m, p->tau, p->perm);
-        for (size_t i = 0; i < n; i++) {
+        for (size_t i = 0; i < solved; i++) {
             block->pick[i] = block->row[p->perm[i]];
         }
     }

@@ -51,6 +51,8 @@ static size_t stack(lwi_prove *p, double weight)
 {
     const lwi_system *whole = p->model->whole;
     const lw_spec *spec = p->model->spec;
+    const lwi_pm_point *point = p->joints ? p->point : p->whole_point;
+    const lwi_pm_eval *ev = p->joints ? p->eval : p->whole_eval;
     size_t n = whole->n_var;
     lwi_pm *a = p->big[2];
     for (size_t i = 0; i < (whole->n_row + spec->n_drive) * n; i++) {
@@ -58,8 +60,7 @@ static size_t stack(lwi_prove *p, double weight)
     }
     for (size_t i = 0; i < whole->n_row; i++) {
         lwi_pm *row = a + i * n;
-        (void)lwi_pm_row(row, NULL, whole, &whole->row[i], p->whole_point, p->whole_eval,
-                         &p->inputs);
+        (void)lwi_pm_row(row, NULL, whole, &whole->row[i], point, ev, &p->inputs);
         for (size_t j = 0; j < n && weight != 1.0; j++) {
             row[j] = lwi_pm_scale(row[j], weight);
         }
@@ -67,8 +68,8 @@ static size_t stack(lwi_prove *p, double weight)
     for (size_t d = 0; d < spec->n_drive; d++) {
         lwi_pm *row = a + (whole->n_row + d) * n;
         lwi_pm value;
-        (void)lwi_pm_terms(&value, row, NULL, whole, p->whole_point, p->whole_eval,
-                           spec->drive[d].term, spec->drive[d].n_term, &p->inputs);
+        (void)lwi_pm_terms(&value, row, NULL, whole, point, ev, spec->drive[d].term,
+                           spec->drive[d].n_term, &p->inputs);
         for (size_t j = 0; j < n && !spec->drive[d].turning; j++) {
             row[j] = lwi_pm_scale(row[j], 1.0 / p->model->length_m);
         }
@@ -117,14 +118,56 @@ static bool hold_of_rates(lwi_prove *p)
     return judge(p, a, spec->n_drive, m, false);
 }
 
+/* Without closure rows and rods the drives see the joints through constants: judged once. */
+void lwi_hold_constant(lwi_prove *p)
+{
+    const lwi_system *whole = p->model->whole;
+    const lw_spec *spec = p->model->spec;
+    size_t n = whole->n_var;
+    size_t n_scalar = lw_spec_coord_count(spec) - spec->n_rod;
+    double sv[LWI_MAX_VARS];
+    double *a = p->square;
+    p->hold_constant = 0.0;
+    if (whole->n_row > 0 || n == 0 || spec->n_drive < n || n > 24) {
+        return;
+    }
+    memset(a, 0, spec->n_drive * n * sizeof *a);
+    for (size_t d = 0; d < spec->n_drive; d++) {
+        double scale = spec->drive[d].turning ? 1.0 : 1.0 / p->model->length_m;
+        for (size_t t = 0; t < spec->drive[d].n_term; t++) {
+            const lw_term *term = &spec->drive[d].term[t];
+            int k = term->coord < n_scalar ? whole->coord_element[term->coord] : -1;
+            if (k < 0) {
+                return;
+            }
+            int var = whole->element[k].var;
+            a[d * n + (size_t)var] += scale * term->factor * whole->var_scale[var];
+        }
+    }
+    lwi_svd(a, spec->n_drive, n, n, sv, NULL);
+    /* A part in 1e12 for the roundings of a decomposition of this size. */
+    p->hold_constant = sv[n - 1] > LWI_RANK_POSTURE * sv[0] ? sv[n - 1] * (1.0 - 1e-12) : 0.0;
+}
+
 bool lwi_hold_model(lwi_prove *p)
 {
     const lwi_system *whole = p->model->whole;
     bool asked = p->min->asked[LW_MARGIN_HOLD];
+    if (p->hold_constant > 0.0) {
+        p->hold = p->hold_constant;
+        p->low[LW_MARGIN_HOLD] = fmin(p->low[LW_MARGIN_HOLD], p->hold);
+        p->met[LW_MARGIN_HOLD] = fmin(p->met[LW_MARGIN_HOLD], p->hold * (1.0 + 4e-12));
+        return true;
+    }
+    if (p->joints && !asked) {
+        /* The leading readings and the closure rows are regular: with them locked nothing moves. */
+        p->hold = p->sigma;
+        return p->hold > LWI_RANK_POSTURE * largest(p->jac, p->block[0].n * p->block[0].n);
+    }
     if (!p->whole_needed && !asked) {
         return hold_of_rates(p);
     }
-    if (!place_whole(p)) {
+    if (!p->joints && !place_whole(p)) {
         p->stage = LWI_STAGE_UNSUPPORTED;
         return false;
     }

@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Margins on a whole interval, from below; definitions as in query/margin_*.c, which speak of one
- * posture. With J the drive rates by output rates and W the tool twist by output rates, no basis of
- * the freedoms is needed: accuracy is W J^+, load the vertices square to rows of J, speed rows of
- * J. */
+ * posture. They do not depend on the basis of the freedoms: with J the drives by the basis and W
+ * the tool twist by it, accuracy is W J^+, load the vertices square to rows of J; speed is of rows
+ * of the drives by outputs. */
 #include "../math/tol.h"
 #include "../math/vec3.h"
 #include "../query/margin.h"
@@ -69,25 +69,35 @@ static bool invert_rates(lwi_pm *x, const scaled *s, lwi_prove *p)
     return true;
 }
 
-/* Velocity (half 0) or turn (half 1) of the tool by a column of output rates. */
-static void twist_of(lwi_pm out[3], const lwi_prove *p, const lwi_pm *x, size_t step, size_t half)
+/* Sum of c[j] x[j]; most factors are 0 or 1. */
+static lwi_pm combine(const lwi_pm *c, size_t c_step, const lwi_pm *x, size_t x_step, size_t m)
 {
-    const lwi_pm_inputs *in = &p->inputs;
-    for (int i = 0; i < 3; i++) {
-        out[i] = lwi_pm_const(0.0);
-        for (size_t j = 0; j < in->m; j++) {
-            lwi_pm v = in->v[j][i];
-            if (half == 1) {
-                if (in->w[j][i] != 0.0) {
-                    out[i] = lwi_pm_axpy(out[i], in->w[j][i], x[j * step]);
-                }
-            } else if (v.c[0] == 1.0 && lwi_pm_norm(v) == 1.0 && v.e == 0.0) {
-                out[i] = lwi_pm_add(out[i], x[j * step]);
-            } else if (lwi_pm_mag(v) > 0.0) {
-                out[i] = lwi_pm_add(out[i], lwi_pm_mul(v, x[j * step]));
+    lwi_pm sum = lwi_pm_const(0.0);
+    for (size_t j = 0; j < m; j++) {
+        lwi_pm k = c[j * c_step];
+        if (k.e == 0.0 && lwi_pm_norm(k) == fabs(k.c[0])) {
+            if (k.c[0] != 0.0) {
+                sum = lwi_pm_axpy(sum, k.c[0], x[j * x_step]);
             }
+        } else {
+            sum = lwi_pm_add(sum, lwi_pm_mul(k, x[j * x_step]));
         }
     }
+    return sum;
+}
+
+/* Velocity (half 0) or turn (half 1) of the tool by a column of rates of the basis. */
+static void twist_of(lwi_pm out[3], const lwi_prove *p, const lwi_pm *x, size_t step, size_t half)
+{
+    for (size_t i = 0; i < 3; i++) {
+        out[i] = combine(half == 0 ? &p->vel[0][i] : &p->turn[0][i], 3, x, step, p->inputs.m);
+    }
+}
+
+/* Rate of an output joint. */
+static lwi_pm joint_of(const lwi_prove *p, size_t output, const lwi_pm *x, size_t step)
+{
+    return combine(p->coord_rate[output], 1, x, step, p->inputs.m);
 }
 
 /* need / |v| where |v|^2 is a model: takes the least over the interval into low, and what it is
@@ -187,7 +197,7 @@ static bool accuracy(lwi_prove *p, int margin, size_t without)
             if (spec->output[o].kind == LW_OUT_COORD &&
                 spec->output[o].coord == needs->joint[k].coord) {
                 for (size_t d = 0; d < s.n; d++) {
-                    e[d][0] = x[o * s.n + d];
+                    e[d][0] = joint_of(p, o, x + d, s.n);
                     e[d][1] = e[d][2] = lwi_pm_const(0.0);
                 }
                 worst_error(p, margin, needs->joint[k].tolerance.value, (const lwi_pm (*)[3])e,
@@ -233,7 +243,7 @@ static lwi_pm power_of(const lwi_prove *p, const lwi_pm *x, size_t step)
         for (size_t o = 0; needs->joint[k].effort.asked && o < spec->n_output; o++) {
             if (spec->output[o].kind == LW_OUT_COORD &&
                 spec->output[o].coord == needs->joint[k].coord) {
-                lwi_pm one[3] = {x[o * step], lwi_pm_const(0.0), lwi_pm_const(0.0)};
+                lwi_pm one[3] = {joint_of(p, o, x, step), lwi_pm_const(0.0), lwi_pm_const(0.0)};
                 sum = lwi_pm_axpy(sum, needs->joint[k].effort.value, length_of(one));
             }
         }
@@ -405,16 +415,19 @@ static void speed_of(lwi_prove *p, const size_t *column, size_t n, double need)
         }
         lwi_pm sum = lwi_pm_const(0.0);
         for (size_t i = 0; i < n; i++) {
-            sum = lwi_pm_add(sum, lwi_pm_sqr(p->rates[d * p->inputs.m + column[i]]));
+            sum = lwi_pm_add(sum, lwi_pm_sqr(p->by_output[d * p->inputs.m + column[i]]));
         }
         take_ratio(p, LW_MARGIN_SPEED, spec->drive[d].speed / need, sum);
     }
 }
 
-static void speed(lwi_prove *p)
+static bool speed(lwi_prove *p)
 {
     const lw_spec *spec = p->model->spec;
     const lw_needs *needs = &spec->needs;
+    if (!lwi_rates_by_output(p)) {
+        return false;
+    }
     for (size_t half = 0; half < 2; half++) {
         const lw_figure *need = half == 0 ? &needs->speed_m_s : &needs->turn_rate_rad_s;
         size_t column[LW_MAX_OUTPUTS];
@@ -437,6 +450,7 @@ static void speed(lwi_prove *p)
             }
         }
     }
+    return true;
 }
 
 static bool spare(lwi_prove *p)
@@ -465,7 +479,7 @@ bool lwi_least_hold(lwi_prove *p)
             continue;
         }
         if (k == LW_MARGIN_SPEED) {
-            speed(p);
+            done = speed(p);
         } else if (k == LW_MARGIN_ACCURACY) {
             done = accuracy(p, k, SIZE_MAX);
         } else if (k == LW_MARGIN_LOAD) {

@@ -150,7 +150,39 @@ static bool open_points(lwi_prove *p)
     return true;
 }
 
-lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, lw_err *err)
+/* The whole system as one block: its closure rows, and readings that lead. */
+static void fill_whole(lwi_prove *p)
+{
+    const lw_model *m = p->model;
+    lwi_prove_block *b = &p->block[0];
+    const lwi_system *sys = p->sys;
+    p->n_lead = m->mobility;
+    p->usable = sys->n_var <= LWI_BLOCK_VARS && sys->n_row <= LWI_BLOCK_ROWS &&
+                m->rank + m->mobility == sys->n_var && m->mobility <= LW_MAX_OUTPUTS &&
+                m->spec->n_drive >= m->mobility;
+    if (!p->usable) {
+        return;
+    }
+    b->limb = SIZE_MAX;
+    b->n = sys->n_var;
+    b->n_row = sys->n_row;
+    for (size_t i = 0; i < sys->n_row; i++) {
+        b->row[i] = (unsigned short)i;
+    }
+    for (size_t v = 0; v < sys->n_var; v++) {
+        b->var[v] = (unsigned short)v;
+        p->var_block[v] = 0;
+    }
+    for (size_t d = 0; d < m->spec->n_drive; d++) {
+        size_t n_scalar = lw_spec_coord_count(m->spec) - m->spec->n_rod;
+        for (size_t t = 0; t < m->spec->drive[d].n_term; t++) {
+            size_t coord = m->spec->drive[d].term[t].coord;
+            p->usable = p->usable && (coord >= n_scalar || sys->coord_element[coord] >= 0);
+        }
+    }
+}
+
+lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, const lwi_prove *other, lw_err *err)
 {
     *out = NULL;
     lwi_prove *p = calloc(1, sizeof *p);
@@ -159,19 +191,23 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, lw_err *err)
     }
     *out = p;
     p->model = m;
-    p->sys = m->inverse;
-    p->usable = m->inverse != NULL && m->completion.usable && m->spec->n_drive >= m->mobility;
+    p->joints = other != NULL;
+    p->borrows = p->joints && other->solver != NULL;
+    p->sys = p->joints ? m->whole : m->inverse;
+    p->usable = p->joints || (m->inverse != NULL && m->completion.usable &&
+                              m->spec->n_drive >= m->mobility);
     if (!p->usable) {
         return LW_OK;
     }
     const lwi_system *sys = p->sys;
     size_t n = sys->n_var + 1;
     size_t most = sys->n_row > 48 ? sys->n_row : 48;
+    most = sys->n_var > most ? sys->n_var : most;
     size_t side = m->whole->n_var > m->whole->n_row + m->spec->n_drive
                       ? m->whole->n_var
                       : m->whole->n_row + m->spec->n_drive;
-    p->inputs.m = m->spec->n_output;
-    p->n_block = sys->n_block;
+    p->inputs.m = p->joints ? m->mobility : m->spec->n_output;
+    p->n_block = p->joints ? 1 : sys->n_block;
     p->block = calloc(p->n_block + 1, sizeof *p->block);
     p->var_block = calloc(n, sizeof *p->var_block);
     p->given = calloc(sys->n_element + 1, sizeof *p->given);
@@ -192,8 +228,13 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, lw_err *err)
         return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
     }
     lwi_state_reference(p->state, sys);
-    fill_blocks(p);
-    set_roots(p);
+    if (p->joints) {
+        fill_whole(p);
+        p->inputs.node = SIZE_MAX;
+    } else {
+        fill_blocks(p);
+        set_roots(p);
+    }
     size_t jac = 1;
     size_t in = 1;
     for (size_t b = 0; b < p->n_block; b++) {
@@ -205,18 +246,19 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, lw_err *err)
     p->solved = calloc(n * p->inputs.m, sizeof *p->solved);
     side = side > 24 ? side : 24;
     for (int i = 0; i < 3; i++) {
-        p->big[i] = calloc(side * side, sizeof *p->big[i]);
+        p->big[i] = p->borrows ? other->big[i] : calloc(side * side, sizeof *p->big[i]);
     }
-    p->rank = calloc(1, sizeof *p->rank);
-    p->solver = calloc(1, sizeof *p->solver);
+    p->rank = p->borrows ? other->rank : calloc(1, sizeof *p->rank);
+    p->solver = p->borrows ? other->solver : calloc(1, sizeof *p->solver);
     if (p->whole_needed) {
         p->whole_eval = calloc(1, sizeof *p->whole_eval);
         p->whole_point = calloc(1, sizeof *p->whole_point);
     }
-    if (!p->jac || !p->in || !p->solved || !p->big[0] || !p->big[1] || !p->big[2] || !p->rank || !p->solver ||
-        (p->whole_needed && (!p->whole_eval || !p->whole_point))) {
+    if (!p->jac || !p->in || !p->solved || !p->big[0] || !p->big[1] || !p->big[2] || !p->rank ||
+        !p->solver || (p->whole_needed && (!p->whole_eval || !p->whole_point))) {
         return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
     }
+    lwi_hold_constant(p);
     for (size_t r = 0; r < m->spec->n_rod; r++) {
         p->point->rod_m[r] = lwi_pm_const(sys->rod[r].length_m);
     }
@@ -250,13 +292,28 @@ void lwi_prove_free(lwi_prove *p)
     free(p->jac);
     free(p->in);
     free(p->solved);
-    for (int i = 0; i < 3; i++) {
+    for (int i = 0; i < 3 && !p->borrows; i++) {
         free(p->big[i]);
     }
-    free(p->rank);
-    free(p->solver);
+    if (!p->borrows) {
+        free(p->rank);
+        free(p->solver);
+    }
     free(p->point_store);
     free(p);
+}
+
+static void open_start(lwi_prove *p, const lw_config *start)
+{
+    lwi_state_from_config(p->state, p->sys, start);
+    lwi_follow_pick(p);
+    lwi_point_from_state(&p->left, p, p->state);
+    for (size_t b = 0; b < p->n_block; b++) {
+        p->left.radius[b] = 1e-8; /* the start is a root as postures are: to Newton's last step */
+        p->left.unique[b] = 0.0;
+    }
+    memcpy(p->coord_left, start->coord, p->model->n_coord * sizeof *p->coord_left);
+    memcpy(p->coord_right, start->coord, p->model->n_coord * sizeof *p->coord_right);
 }
 
 void lwi_prove_begin(lwi_prove *p, const lwi_move *move, const lw_spec_tool *tool,
@@ -272,15 +329,15 @@ void lwi_prove_begin(lwi_prove *p, const lwi_move *move, const lw_spec_tool *too
             p->given[k][1] += p->inputs.rate[o][k] * move->coord_along[o];
         }
     }
-    lwi_state_from_config(p->state, p->sys, start);
-    lwi_follow_pick(p);
-    lwi_point_from_state(&p->left, p, p->state);
-    for (size_t b = 0; b < p->n_block; b++) {
-        p->left.radius[b] = 1e-8; /* the start is a root as postures are: to Newton's last step */
-        p->left.unique[b] = 0.0;
-    }
-    memcpy(p->coord_left, start->coord, p->model->n_coord * sizeof *p->coord_left);
-    memcpy(p->coord_right, start->coord, p->model->n_coord * sizeof *p->coord_right);
+    open_start(p, start);
+}
+
+void lwi_prove_begin_joints(lwi_prove *p, const lw_spec_tool *tool, const lw_margin_min *min,
+                            const lw_config *start)
+{
+    p->tool = tool;
+    p->min = min;
+    open_start(p, start);
 }
 
 bool lwi_prove_interval(lwi_prove *p, double low, double high)

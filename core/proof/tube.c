@@ -98,31 +98,28 @@ static double far_from(const lwi_pm a[3], const lwi_pm b[3])
     return sqrt(sum) * OUT;
 }
 
-/* Bound of a row's second derivative (Frobenius norm over the unknowns) in the room. */
-static double bend_of(const lwi_prove *p, const lwi_row *row)
+/* What the elements between two points do to a row that sees them. */
+typedef struct bend {
+    double first;  /* sum of squares of the point's speeds */
+    double size;   /* Frobenius bound of the point's, or the axes', second derivative */
+} bend;
+
+static bool bend_links(bend *out, const lwi_prove *p, const lwi_pm at[3], size_t link, size_t n_link,
+                       bool axes)
 {
     const lwi_system *sys = p->sys;
     double turn[LWI_BLOCK_VARS];
     double speed[LWI_BLOCK_VARS];
     size_t n = 0;
-    double first = 0.0;
-    double size = 0.0;
-    lwi_pm at[3];
-    if (row->kind == LWI_ROW_SPIN || (row->kind == LWI_ROW_LINEAR && row->n_rod_term == 0)) {
-        return 0.0;
-    }
-    if (row->kind == LWI_ROW_LINEAR) {
-        return INFINITY;
-    }
-    lwi_pm_place(at, &p->eval->node[row->b], row->pb);
-    for (size_t i = 0; i < row->n_link; i++) {
-        size_t k = (size_t)sys->link[row->link + i].element;
+    out->first = out->size = 0.0;
+    for (size_t i = 0; i < n_link; i++) {
+        size_t k = (size_t)sys->link[link + i].element;
         const lwi_element *el = &sys->element[k];
         if (el->var < 0) {
             continue;
         }
         if (n >= LWI_BLOCK_VARS) {
-            return INFINITY;
+            return false;
         }
         double scale = sys->var_scale[el->var];
         turn[n] = el->kind == LWI_SLIDE ? 0.0 : 1.0 + ROOM;
@@ -135,28 +132,122 @@ static double bend_of(const lwi_prove *p, const lwi_row *row)
             turn[n] *= el->kind == LWI_HELIX ? scale : 1.0;
             speed[n] = far;
         }
-        first += speed[n] * speed[n];
+        out->first += speed[n] * speed[n];
         n++;
     }
     for (size_t i = 0; i < n; i++) {
         for (size_t j = 0; j < n; j++) {
-            double a = row->kind == LWI_ROW_AXIS ? turn[i] * turn[j]
-                                                 : fmax(turn[i] * speed[j], turn[j] * speed[i]);
-            size += a * a;
+            double a = axes ? turn[i] * turn[j] : fmax(turn[i] * speed[j], turn[j] * speed[i]);
+            out->size += a * a;
         }
     }
-    size = sqrt(size) * OUT;
+    out->size = sqrt(out->size) * OUT;
+    return true;
+}
+
+/* Bound of a row's second derivative (Frobenius norm over the unknowns) in the room. */
+static double bend_of(const lwi_prove *p, const lwi_row *row)
+{
+    const lwi_system *sys = p->sys;
+    bend b;
+    lwi_pm at[3];
+    lwi_pm from[3];
+    if (row->kind == LWI_ROW_SPIN || (row->kind == LWI_ROW_LINEAR && row->n_rod_term == 0)) {
+        return 0.0;
+    }
+    if (row->kind == LWI_ROW_LINEAR) {
+        return INFINITY;
+    }
+    lwi_pm_place(at, &p->eval->node[row->b], row->pb);
+    if (!bend_links(&b, p, at, row->link, row->n_link, row->kind == LWI_ROW_AXIS)) {
+        return INFINITY;
+    }
     if (row->kind == LWI_ROW_AXIS) {
-        return size;
+        return b.size;
     }
     if (row->kind == LWI_ROW_POINT) {
-        return size / sys->length_m * OUT;
+        return b.size / sys->length_m * OUT;
     }
-    lwi_pm from[3];
     lwi_pm_place(from, &p->eval->node[row->a], row->pa);
     double length = GROW * (far_from(at, from) + (GROW - 1.0) * sys->length_m);
     double scale = 1.0 / (sys->rod[row->rod].length_m * sys->length_m);
-    return scale * (first + length * size) * OUT;
+    return scale * (b.first + length * b.size) * OUT;
+}
+
+/* The same of a reading: rods alone bend it. A length's second derivative is at most that of its
+ * vector and the square of its first over the length, which in the room does not fall below its
+ * least value less what the ends can move. */
+static double bend_of_drive(const lwi_prove *p, const lw_spec_drive *drive)
+{
+    const lwi_system *sys = p->sys;
+    size_t n_scalar = lw_spec_coord_count(sys->spec) - sys->spec->n_rod;
+    double sum = 0.0;
+    for (size_t t = 0; t < drive->n_term; t++) {
+        bend b;
+        lwi_pm at[3];
+        lwi_pm from[3];
+        double lo;
+        double hi;
+        if (drive->term[t].coord < n_scalar) {
+            continue;
+        }
+        const lwi_rod_info *rod = &sys->rod[drive->term[t].coord - n_scalar];
+        lwi_pm_place(at, &p->eval->node[rod->b], rod->end[1]);
+        lwi_pm_place(from, &p->eval->node[rod->a], rod->end[0]);
+        if (!bend_links(&b, p, at, rod->link, rod->n_link, false)) {
+            return INFINITY;
+        }
+        for (int i = 0; i < 3; i++) {
+            from[i] = lwi_pm_sub(at[i], from[i]);
+        }
+        lwi_pm_range(lwi_pm_dot3(from, from), &lo, &hi);
+        double least = (lo > 0.0 ? sqrt(lo) : 0.0) - 2.0 * ROOM * sqrt(b.first);
+        if (!(least > 0.0)) {
+            return INFINITY;
+        }
+        sum += fabs(drive->term[t].factor) * (b.size + b.first / least);
+    }
+    return (drive->turning ? sum : sum / sys->length_m) * OUT;
+}
+
+/* Residual of a solved row, its derivative into p->row, its bend. */
+static lwi_pm row_model(lwi_prove *p, const lwi_prove_block *block, size_t row, double *bent)
+{
+    size_t d;
+    for (size_t c = 0; c < block->n; c++) {
+        p->row[block->var[c]] = lwi_pm_const(0.0);
+    }
+    if (!lwi_row_is_drive(p, row, &d)) {
+        if (bent != NULL) {
+            *bent = bend_of(p, &p->sys->row[row]);
+        }
+        return lwi_pm_row(p->row, NULL, p->sys, &p->sys->row[row], p->point, p->eval, &p->inputs);
+    }
+    const lw_spec_drive *drive = &p->model->spec->drive[d];
+    double scale = drive->turning ? 1.0 : 1.0 / p->sys->length_m;
+    lwi_pm value;
+    (void)lwi_pm_terms(&value, p->row, NULL, p->sys, p->point, p->eval, drive->term, drive->n_term,
+                       &p->inputs);
+    for (size_t c = 0; c < block->n && scale != 1.0; c++) {
+        p->row[block->var[c]] = lwi_pm_scale(p->row[block->var[c]], scale);
+    }
+    if (bent != NULL) {
+        *bent = bend_of_drive(p, drive);
+    }
+    lwi_pm target = lwi_pm_shift(lwi_pm_scale(lwi_pm_var(p->mid, p->half), p->along[d]),
+                                 p->from[d]);
+    return lwi_pm_scale(lwi_pm_sub(value, target), scale);
+}
+
+void lwi_block_models(lwi_prove *p, const lwi_prove_block *block)
+{
+    size_t n = block->n;
+    for (size_t i = 0; i < n; i++) {
+        (void)row_model(p, block, block->pick[i], NULL);
+        for (size_t c = 0; c < n; c++) {
+            p->jac[block->jac + i * n + c] = p->row[block->var[c]];
+        }
+    }
 }
 
 static double least_singular(lwi_prove *p, const lwi_prove_block *block, const lwi_pm *j)
@@ -184,24 +275,19 @@ static double least_singular(lwi_prove *p, const lwi_prove_block *block, const l
 
 static bool prove_block(lwi_prove *p, lwi_prove_block *block)
 {
-    const lwi_system *sys = p->sys;
     size_t n = block->n;
     lwi_pm *j = p->jac + block->jac;
     double residual = 0.0;
-    double bend = 0.0;
+    double bent = 0.0;
     for (size_t i = 0; i < n; i++) {
-        const lwi_row *row = &sys->row[block->pick[i]];
-        for (size_t c = 0; c < n; c++) {
-            p->row[block->var[c]] = lwi_pm_const(0.0);
-        }
-        lwi_pm res = lwi_pm_row(p->row, NULL, sys, row, p->point, p->eval, &p->inputs);
+        double q;
+        lwi_pm res = row_model(p, block, block->pick[i], &q);
+        double m = lwi_pm_mag(res);
         for (size_t c = 0; c < n; c++) {
             j[i * n + c] = p->row[block->var[c]];
         }
-        double m = lwi_pm_mag(res);
-        double q = bend_of(p, row);
         residual += m * m;
-        bend += q * q;
+        bent += q * q;
     }
     double s = least_singular(p, block, j);
     double most = ROOM / sqrt((double)n);
@@ -210,7 +296,7 @@ static bool prove_block(lwi_prove *p, lwi_prove_block *block)
         return false;
     }
     lwi_pm_root root;
-    lwi_pm_kantorovich(&root, sqrt(residual) * OUT, s, sqrt(bend) * OUT, most);
+    lwi_pm_kantorovich(&root, sqrt(residual) * OUT, s, sqrt(bent) * OUT, most);
     block->radius = root.radius;
     block->unique = root.unique;
     return root.holds;
@@ -287,8 +373,12 @@ bool lwi_tube(lwi_prove *p, double low, double high)
 {
     double mid = 0.5 * (low + high);
     double half = 0.5 * (high - low);
-    lwi_move_models(&p->point->given[p->tool_node], p->arm, p->coord, p->move, p->model, mid,
-                    half);
+    p->mid = mid;
+    p->half = half;
+    if (!p->joints) {
+        lwi_move_models(&p->point->given[p->tool_node], p->arm, p->coord, p->move, p->model, mid,
+                        half);
+    }
     evaluate(p, mid, half, false);
     p->sigma = INFINITY;
     p->tube = 0.0;

@@ -5,13 +5,24 @@
 
 #include "../proof/advance.h"
 
-/* True where every threshold is on a margin that the document has figures for. */
-bool lwi_min_judged(const lw_model *model, const lw_margin_min *min);
 void lwi_move_answer_open(lw_move_answer *out);
-/* A line or circle from a configuration: proved as far as it goes. sol holds the start and then the
- * end, or the witness. */
+/* False where this version does not prove moves with this mechanism, tool and thresholds; the
+ * answer says why. */
+bool lwi_move_supported(lw_move_answer *out, const lw_model *model, const lwi_advance_ask *ask,
+                        const lw_work *work);
+/* A move from a configuration, proved as far as it goes. sol holds the end then, or the witness;
+ * the slot of the start of all moves tells the mode. */
+void lwi_move_run(lw_move_answer *out, double *proved, const lw_model *model,
+                  const lwi_advance_ask *ask, const lwi_move *move, const lw_config *start,
+                  lw_solution *sol, lw_work *work);
+/* The same for a line or circle as a question gives it. Failures: places inside the move. */
 lw_code lwi_move_line(lw_move_answer *out, double *proved, const lw_model *model,
                       const lwi_advance_ask *ask, const lw_move *move, const lw_config *start,
                       lw_solution *sol, lw_work *work, lw_err *err);
+
+/* The same by readings, on the other prover: ask->by_readings is set. */
+lw_code lwi_move_joints(lw_move_answer *out, double *proved, const lw_model *model,
+                        const lwi_advance_ask *ask, const lw_move *move, const lw_config *start,
+                        lw_solution *sol, lw_work *work, lw_err *err);
 
 #endif

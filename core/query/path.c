@@ -10,7 +10,7 @@
 #include <stdio.h>
 
 /* A threshold on a margin that the document gives no figures for can not be judged. */
-bool lwi_min_judged(const lw_model *m, const lw_margin_min *min)
+static bool min_judged(const lw_model *m, const lw_margin_min *min)
 {
     const bool asked[LW_MARGIN_COUNT] = {
         [LW_MARGIN_ACCURACY] = lwi_accuracy_asked(m), [LW_MARGIN_LOAD] = lwi_load_asked(m),
@@ -73,62 +73,95 @@ static bool joints_agree(const lw_model *m, const lw_pose_ask *pose, const lw_co
     return true;
 }
 
+void lwi_move_run(lw_move_answer *a, double *proved, const lw_model *m,
+                  const lwi_advance_ask *ask, const lwi_move *move, const lw_config *start,
+                  lw_solution *sol, lw_work *work)
+{
+    bool lost = false;
+    a->examined = true;
+    a->length_m = move->length_m;
+    a->turn_rad = fabs(move->turn_rad);
+    lwi_solution_copy(sol, m, lwi_slot(work, LWI_SLOT_MOVE_START));
+    lwi_config_copy(&sol->config, m, start);
+    lwi_prove_begin(work->prove, move, ask->tool, ask->min, start);
+    lwi_advance(a, proved, &lost, work->prove, ask, sol, work);
+    if (a->outcome == LW_OUTCOME_OK && !lost) {
+        a->has_end = true;
+        memcpy(a->end_drive, sol->drive, sizeof a->end_drive);
+        a->end_tool = sol->tool;
+    }
+}
+
+bool lwi_move_supported(lw_move_answer *a, const lw_model *m, const lwi_advance_ask *ask,
+                        const lw_work *work)
+{
+    if (!min_judged(m, ask->min)) {
+        undecided(a, "a threshold names a margin that the document does not ask for (\"asked\": "
+                     "false): state the need in the document, or leave the threshold out");
+        return false;
+    }
+    bool other = m->fused[ask->tool->body] != m->fused[m->spec->tool[0].body];
+    if (ask->by_readings ? !work->prove_joints->usable : !work->prove->usable || other) {
+        undecided(a, "moves of this mechanism are not proved by this version: its pose does not "
+                     "follow from its outputs without iteration, or a part of it is not supported");
+        return false;
+    }
+    return true;
+}
+
+static lw_code via_point(double via[3], const lw_model *m, const lw_spec_tool *tool,
+                         const lw_pose_ask *pose, const lw_config *start, lw_err *err)
+{
+    static const char *const where[3] = {"/via/x", "/via/y", "/via/z"};
+    lwi_frame_apply(via, &start->body[tool->body], tool->frame.pos_m);
+    for (int i = 0; i < 3; i++) {
+        if (!m->completion.pos_output[i]) {
+            continue;
+        }
+        if (!pose->has_position[i]) {
+            return LW_FAIL(err, LW_E_POSTURE, where[i], "%s of the point in between is needed",
+                           where[i] + 5);
+        }
+        via[i] = pose->position_m[i];
+    }
+    return LW_OK;
+}
+
 lw_code lwi_move_line(lw_move_answer *a, double *proved, const lw_model *m,
                       const lwi_advance_ask *ask, const lw_move *move, const lw_config *start,
                       lw_solution *sol, lw_work *work, lw_err *err)
 {
     lwi_pose_known end;
-    lwi_move model_of;
-    bool lost = false;
+    lwi_move along;
     double via[3];
+    bool arc = move->kind == LW_MOVE_CIRCLE;
     *proved = 0.0;
-    if (work->prove == NULL || !work->prove->usable ||
-        m->fused[ask->tool->body] != m->fused[m->spec->tool[0].body]) {
-        undecided(a, "moves of this mechanism are not proved by this version: its pose does not "
-                     "follow from its outputs without iteration, or a part of it is not supported");
+    if (!lwi_move_supported(a, m, ask, work)) {
         return LW_OK;
     }
     lw_code rc = lwi_pose_complete(&end, m, ask->tool, &move->pose, err);
+    if (rc == LW_OK && arc) {
+        rc = via_point(via, m, ask->tool, &move->via, start, err);
+    }
+    if (rc == LW_OK) {
+        rc = lwi_move_make(&along, m, ask->tool, start, &end, arc ? via : NULL, err);
+    }
     if (rc != LW_OK) {
         return rc;
     }
-    a->examined = true;
     if (given_contradicts(m, &end)) {
+        a->examined = true;
         a->outcome = LW_OUTCOME_OUT_OF_REACH;
         a->stop = LW_STOP_REACH;
         a->at = 1.0;
         a->reason = "the end asks for components that this mechanism cannot change";
         return LW_OK;
     }
-    for (int i = 0; i < 3 && move->kind == LW_MOVE_CIRCLE; i++) {
-        double now[3];
-        lwi_frame_apply(now, &start->body[ask->tool->body], ask->tool->frame.pos_m);
-        via[i] = move->via.has_position[i] ? move->via.position_m[i] : now[i];
-        if (!move->via.has_position[i] && m->completion.pos_output[i]) {
-            static const char *const where[3] = {"/via/x", "/via/y", "/via/z"};
-            return LW_FAIL(err, LW_E_POSTURE, where[i], "%s of the point in between is needed",
-                           where[i] + 5);
-        }
-        via[i] = m->completion.pos_output[i] ? via[i] : now[i];
-    }
-    rc = lwi_move_make(&model_of, m, ask->tool, start, &end,
-                       move->kind == LW_MOVE_CIRCLE ? via : NULL, err);
-    if (rc != LW_OK) {
-        return rc;
-    }
-    a->length_m = model_of.length_m;
-    a->turn_rad = fabs(model_of.turn_rad);
-    lwi_prove_begin(work->prove, &model_of, ask->tool, ask->min, start);
-    lwi_advance(a, proved, &lost, work->prove, ask, sol, work);
-    if (a->outcome == LW_OUTCOME_OK && !lost) {
-        a->has_end = true;
-        memcpy(a->end_drive, sol->drive, sizeof a->end_drive);
-        a->end_tool = sol->tool;
-        if (!joints_agree(m, &move->pose, &sol->config)) {
-            a->outcome = LW_OUTCOME_OUT_OF_REACH;
-            a->stop = LW_STOP_REACH;
-            a->reason = "a joint given with the end stands elsewhere there";
-        }
+    lwi_move_run(a, proved, m, ask, &along, start, sol, work);
+    if (a->has_end && !joints_agree(m, &move->pose, &sol->config)) {
+        a->outcome = LW_OUTCOME_OUT_OF_REACH;
+        a->stop = LW_STOP_REACH;
+        a->reason = "a joint given with the end stands elsewhere there";
     }
     return LW_OK;
 }
@@ -147,9 +180,7 @@ static lw_code run_moves(lw_path_answer *a, const lw_model *m, const lw_path_ask
     lw_solution *sol = lwi_slot(work, LWI_SLOT_MOVE);
     lw_solution *start = lwi_slot(work, LWI_SLOT_MOVE_START);
     const lw_config *at = &start->config;
-    bool judged = lwi_min_judged(m, &ask->margin_min);
     a->outcome = LW_OUTCOME_OK;
-    lwi_solution_copy(sol, m, start);
     for (size_t i = 0; i < ask->n_move; i++) {
         lw_move_answer *move = &ask->store[i];
         double proved;
@@ -158,16 +189,13 @@ static lw_code run_moves(lw_path_answer *a, const lw_model *m, const lw_path_ask
                                .min = &ask->margin_min,
                                .budget = ask->budget > 0 ? ask->budget : LW_PATH_BUDGET,
                                .abort = ask->abort,
+                               .by_readings = ask->move[i].kind == LW_MOVE_JOINTS,
                                .piece = left > 0 ? ask->piece + a->n_piece : NULL,
                                .piece_room = left};
         lw_code rc = LW_OK;
         move->first_piece = a->n_piece;
-        if (!judged) {
-            undecided(move, "a threshold names a margin that the document does not ask for "
-                            "(\"asked\": false): state the need in the document, or leave the "
-                            "threshold out");
-        } else if (ask->move[i].kind == LW_MOVE_JOINTS) {
-            undecided(move, "moves by readings are not proved by this version");
+        if (ask->move[i].kind == LW_MOVE_JOINTS) {
+            rc = lwi_move_joints(move, &proved, m, &how, &ask->move[i], at, sol, work, err);
         } else {
             rc = lwi_move_line(move, &proved, m, &how, &ask->move[i], at, sol, work, err);
         }

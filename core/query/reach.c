@@ -5,6 +5,7 @@
 #include "../math/tol.h"
 #include "../math/vec3.h"
 #include "margin.h"
+#include "moves.h"
 
 #include <stdint.h>
 
@@ -56,10 +57,6 @@ static void judge_margins(lw_reach_answer *a, const lw_model *m, const lw_spec_t
         a->outcome = LW_OUTCOME_UNDECIDED;
         a->reason = "a threshold names a margin that the document does not ask for (\"asked\": "
                     "false): state the need in the document, or leave the threshold out";
-    } else if (ask->from != NULL && a->outcome == LW_OUTCOME_OK) {
-        a->outcome = LW_OUTCOME_UNDECIDED;
-        a->reason = "the posture is good, but the move to it is not proved: moves are not examined "
-                    "by this version; ask without \"from\" for the posture alone";
     }
 }
 
@@ -197,12 +194,59 @@ static lw_code full_path(lw_reach_answer *a, const lw_model *m, const lw_spec_to
     return LW_OK;
 }
 
+/* The straight move from `from` to a posture that is good by itself. The move keeps the mode it
+ * starts in; where it ends elsewhere, the posture asked for is not reached without a mode change. */
+static lw_code judge_move(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
+                          const lw_reach_ask *ask, lw_work *work, lw_err *err)
+{
+    lw_solution *start = lwi_slot(work, LWI_SLOT_START);
+    lw_solution *sol = lwi_slot(work, LWI_SLOT_MOVE);
+    lw_move move = {.kind = LW_MOVE_LINE, .pose = ask->pose};
+    lwi_advance_ask how = {.tool = tool,
+                           .min = &ask->margin_min,
+                           .budget = ask->budget > 0 ? ask->budget : LW_PATH_BUDGET,
+                           .abort = ask->abort};
+    lw_move_answer answer;
+    double proved;
+    lwi_move_answer_open(&answer);
+    lwi_solution_copy(lwi_slot(work, LWI_SLOT_MOVE_START), m, start);
+    lw_code rc = lwi_move_line(&answer, &proved, m, &how, &move, &start->config, sol, work, err);
+    if (rc != LW_OK) {
+        return rc;
+    }
+    a->move_checked = answer.stop != LW_STOP_UNSUPPORTED;
+    a->move_at = answer.at;
+    a->outcome = answer.outcome;
+    a->reason = answer.reason;
+    if (answer.outcome == LW_OUTCOME_LOW_MARGIN) {
+        a->failed_margin = answer.margin;
+    }
+    if (answer.outcome == LW_OUTCOME_OUT_OF_REACH && answer.limb != SIZE_MAX) {
+        a->off_by_limb = answer.limb;
+    }
+    if (answer.has_end && !ask->any_mode && !lwi_mode_fits(&sol->mode, &a->asked_mode)) {
+        a->outcome = LW_OUTCOME_OTHER_MODE;
+        a->reason = "the straight move ends in another mode than the one asked for";
+    }
+    if (answer.stop != LW_STOP_UNSUPPORTED) { /* the end, or the witness on the way */
+        bool seen = answer.outcome != LW_OUTCOME_UNDECIDED &&
+                    answer.outcome != LW_OUTCOME_OUT_OF_REACH &&
+                    answer.outcome != LW_OUTCOME_OTHER_MODE;
+        if (seen) {
+            take_solution(a, m, sol, work);
+        }
+        lwi_margin_at(&work->margin, m, tool, a->solution, false, work);
+    }
+    return LW_OK;
+}
+
 lw_code lw_reach(const lw_reach_answer **out, const lw_model *m, const lw_reach_ask *ask,
                  lw_work *work, lw_err *err)
 {
     lw_reach_answer *a = &work->reach;
     lw_mode mode = m->home_mode;
     bool stop = false;
+    lw_code rc = LW_OK;
     *out = NULL;
     memset(a, 0, sizeof *a);
     a->failed_margin = -1;
@@ -216,7 +260,7 @@ lw_code lw_reach(const lw_reach_answer **out, const lw_model *m, const lw_reach_
     }
     const lw_config *hint = &m->home;
     if (ask->from != NULL && ask->from->kind != LW_BY_NOTHING) {
-        lw_code rc = judge_from(a, &stop, &mode, m, ask, work, err);
+        rc = judge_from(a, &stop, &mode, m, ask, work, err);
         if (rc != LW_OK) {
             return rc;
         }
@@ -229,9 +273,12 @@ lw_code lw_reach(const lw_reach_answer **out, const lw_model *m, const lw_reach_
     }
     if (fast_path(a, m, tool, ask, hint, work)) {
         judge_margins(a, m, tool, ask, work);
-        return LW_OK;
+    } else {
+        rc = full_path(a, m, tool, ask, work, err);
     }
-    lw_code rc = full_path(a, m, tool, ask, work, err);
+    if (rc == LW_OK && a->outcome == LW_OUTCOME_OK && hint != &m->home) {
+        rc = judge_move(a, m, tool, ask, work, err);
+    }
     if (rc != LW_OK) {
         *out = NULL;
     }

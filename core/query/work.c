@@ -92,7 +92,10 @@ static lw_code open_all(lw_work *w, const lw_model *m, lw_err *err)
     if (w->distance_work == NULL) {
         return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
     }
-    rc = lwi_prove_new(&w->prove, m, err);
+    rc = lwi_prove_new(&w->prove, m, NULL, err);
+    if (rc == LW_OK) {
+        rc = lwi_prove_new(&w->prove_joints, m, w->prove, err);
+    }
     if (rc != LW_OK) {
         return rc;
     }
@@ -124,6 +127,7 @@ void lw_work_free(lw_work *w)
     free(w->config_store);
     free(w->distance_work);
     free(w->limb_result);
+    lwi_prove_free(w->prove_joints);
     lwi_prove_free(w->prove);
     lwi_singular_work_close(w->singular_work);
     free(w->k);

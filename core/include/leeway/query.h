@@ -8,6 +8,8 @@
 
 #include <leeway/model.h>
 
+#include <stdatomic.h>
+
 typedef enum lw_outcome { /* the numbers of the contract */
     LW_OUTCOME_NONE = 0,
     LW_OUTCOME_OK = 1,
@@ -323,12 +325,16 @@ typedef struct lw_reach_ask {
     bool any_mode;
     lw_mode mode;
     lw_margin_min margin_min;
+    size_t budget;              /* with `from`: boxes of the proof; 0: the default of moves */
+    const atomic_bool *abort;   /* NULL, or set by the caller's clock: see path.h */
 } lw_reach_ask;
 
 typedef struct lw_reach_answer {
     lw_outcome outcome;
     const char *reason;
-    bool move_checked;            /* false: "checked" says posture */
+    bool move_checked;            /* with `from`: the straight move was examined, and outcome is
+                                   * OK only where it is proved; false: the posture alone */
+    double move_at;               /* how far the move is good, 0..1: where it breaks, or the proof */
     lw_found found;
     bool complete;
     lw_basis basis;
