@@ -146,4 +146,32 @@ typedef enum lwi_ball_verdict { LWI_BALL_OPEN, LWI_BALL_PROVED, LWI_BALL_EMPTY }
 lwi_ball_verdict lwi_ball_test(lwi_ball_local *local, const lwi_ball *ball, lwi_ball_side side,
                                const double *y, const double *width);
 
+/* What ball.c asks of ball_rods.c. */
+#define LWI_BALL_UP (1.0 + 1e-9)
+
+typedef struct lwi_rod_rates {
+    double end[LWI_BALL_DIRS][3];  /* P' */
+    double arm[LWI_BALL_DIRS][3];
+    double turned[LWI_BALL_DIRS][3]; /* the part by turning: w x arm */
+    double u[LWI_BALL_DIRS][3];
+    double foot[LWI_BALL_DIRS];    /* q' */
+} lwi_rod_rates;
+
+typedef struct lwi_unit_bounds {
+    double u1, u2, u3;
+} lwi_unit_bounds;
+
+double lwi_ball_spread(const double (*v)[3], size_t n);
+double lwi_ball_lever(const lwi_ball *b, const double arm[3]);
+void lwi_ball_wrench(double *out, const lwi_ball *b, const lwi_ball_rod *rod, const double u[3],
+                   const double moment[3]);
+void lwi_ball_rates(lwi_rod_rates *r, const lwi_ball *b, const lwi_ball_rod *rod,
+                     const lwi_rod_at *at);
+void lwi_ball_moment(double out[3], const double a[3], const double u[3], double length_m);
+void lwi_ball_bend(double *out, const lwi_ball *b, const lwi_ball_rod *rod, const lwi_rod_at *at,
+                    const lwi_rod_rates *r, size_t k, size_t l);
+double lwi_ball_along(const lwi_ball_rod *rod, const lwi_rod_at *at, double d);
+void lwi_ball_unit(lwi_unit_bounds *out, const lwi_ball_rod *rod, double length, double s,
+                       double p1, double p2, double p3);
+
 #endif
