@@ -188,7 +188,7 @@ static void six_struts_in_a_complex_leave_its_screw(void **state)
     }
 }
 
-/* ---- inverse: two-link limbs ------------------------------------------------------------------ */
+/* ---- inverse: two-link limbs --------------------------------------------------------------- */
 
 /* Three or four limbs; limb 0 (and 1) stretched (+1) or folded (-1) in the reference posture. */
 static lwt_machine *stretched(size_t n, const int *how, double crank, double link)
@@ -362,7 +362,7 @@ static void a_posture_that_spends_the_spare_drive(void **state)
     lwt_machine_free(m);
 }
 
-/* ---- inverse: arms ---------------------------------------------------------------------------- */
+/* ---- inverse: arms ------------------------------------------------------------------------- */
 
 static const lw_margin_answer *arm_at(lwt_machine *m, const double *theta, const double *ref)
 {
@@ -500,7 +500,7 @@ static void singularities_of_a_wrist_arm(void **state)
     lwt_machine_free(m);
 }
 
-/* ---- constraints ------------------------------------------------------------------------------ */
+/* ---- constraints --------------------------------------------------------------------------- */
 
 /* Cranks of length 0.3 at (0, 0) and (1, 0), coupler of length 1, all on one line. */
 static lwt_machine *flat_parallelogram(bool both)
@@ -562,9 +562,10 @@ static void a_flat_parallelogram_gains_a_freedom(void **state)
 }
 
 /* Three limbs universal-prismatic-universal, base axes tangential: each limb withholds one couple,
- * square to both of its universal axes, which is along the leg. Three legs in one plane: the couples
- * leave the turn about that plane's normal; the platform gains it. The legs' forces then also lie
- * in the plane and meet, so that the drives hold neither that turn nor the shift along the normal. */
+ * square to both of its universal axes, which is along the leg. Three legs in one plane: the
+ * couples leave the turn about that plane's normal; the platform gains it. The legs' forces then
+ * also lie in the plane and meet, so that the drives hold neither that turn nor the shift along
+ * the normal. */
 static void legs_in_a_plane_free_the_platform(void **state)
 {
     (void)state;
@@ -607,7 +608,7 @@ static void legs_in_a_plane_free_the_platform(void **state)
     lwt_machine_free(m);
 }
 
-/* ---- architecture ----------------------------------------------------------------------------- */
+/* ---- architecture -------------------------------------------------------------------------- */
 
 /* Base and platform similar regular hexagons, corner to corner: singular at every pose (Ma &
  * Angeles, Architecture singularities of platform manipulators, ICRA 1991; from memory, see
