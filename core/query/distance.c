@@ -76,6 +76,10 @@ static void forward_side(lw_distance_answer *a, const lw_model *m, const lw_dist
 {
     lw_distance_side *side = &a->forward;
     lwi_ball_work *w = &work->distance_work->balls;
+    if (work->distance_work->is_arm && work->distance_work->arm.all_driven) {
+        side->none = true; /* drives locked, no joint moves */
+        return;
+    }
     lwi_distance_forward_most(side, m, work);
     if (!w->ball.forward) {
         return;
@@ -97,6 +101,12 @@ static void inverse_side(lw_distance_answer *a, const lw_model *m, const lw_dist
     lw_distance_side *side = &a->inverse;
     lwi_ball_work *w = &work->distance_work->balls;
     size_t limb;
+    if (work->distance_work->is_arm) {
+        lwi_distance_arm_most(side, m, work);
+        side->at_least_m = lwi_ball_arm_once(&work->distance_work->arm, bound_of(side, &w->ball));
+        side->known_least = side->at_least_m > 0.0;
+        return;
+    }
     if (!w->ball.inverse) {
         return;
     }
@@ -167,6 +177,7 @@ lw_code lw_distance(const lw_distance_answer **out, const lw_model *m, const lw_
                         : a->reason;
         return LW_OK;
     }
+    w->is_arm = lwi_ball_arm_make(&w->arm, m, tool, sol);
     lwi_rates_at(&r, m, tool, &sol->config, sol->tool.pos_m, work);
     bool closed = m->rank == 0 || r.closure_ratio > LWI_RANK_POSTURE;
     double *scaled = work->matrix[3];

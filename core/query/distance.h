@@ -5,6 +5,7 @@
 #define LWI_DISTANCE_H
 
 #include "../proof/ball.h"
+#include "../proof/ball_arm.h"
 #include "rates.h"
 
 enum { LWI_DISTANCE_LIMITS = LW_MAX_COORDS + 2 * LW_MAX_RODS + LW_MAX_BALLS + LW_MAX_DRIVES };
@@ -17,6 +18,7 @@ typedef enum lwi_limit_bend {
     LWI_BEND_ELBOW,   /* between crank and second link */
     LWI_BEND_UNIT,    /* between second link and tool */
     LWI_BEND_CONE,    /* a rod against an axis: its cosine */
+    LWI_BEND_ARM,     /* joint `rod` of an arm with a spherical wrist */
     LWI_BEND_ANY      /* bounded by the configuration alone */
 } lwi_limit_bend;
 
@@ -35,6 +37,8 @@ typedef struct lwi_limit_entry {
 typedef struct lwi_distance_work {
     lwi_ball_work balls;
     lwi_ball *ball;            /* = &balls.ball */
+    bool is_arm;
+    lwi_ball_arm arm;
     const lw_spec_tool *tool;
     lw_config start;           /* of the posture: borrowed */
     lw_mode mode;
@@ -52,6 +56,7 @@ const lw_solution *lwi_distance_solve(const lw_model *model, const double *y, lw
 /* Nearest postures beyond, by eight starts. */
 void lwi_distance_forward_most(lw_distance_side *out, const lw_model *model, lw_work *work);
 void lwi_distance_inverse_most(lw_distance_side *out, const lw_model *model, lw_work *work);
+void lwi_distance_arm_most(lw_distance_side *out, const lw_model *model, lw_work *work);
 /* Tool and drives at y, and its distance. */
 void lwi_distance_take(lw_distance_side *out, const lw_model *model, const double *y,
                        double distance_m, lw_work *work);

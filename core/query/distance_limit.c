@@ -96,13 +96,21 @@ static bool determined(const lw_model *m, size_t coord)
     return false;
 }
 
-static void bend_of_joint(lwi_limit_entry *e, const lw_model *m, const lwi_ball *b, size_t joint,
-                          size_t part)
+static void bend_of_joint(lwi_limit_entry *e, const lw_model *m, const lwi_distance_work *w,
+                          size_t joint, size_t part)
 {
+    const lwi_ball *b = w->ball;
     e->bend = LWI_BEND_ANY;
     if (part < LW_PART_CONE && determined(m, lw_spec_joint_coord(m->spec, joint, part))) {
         e->bend = LWI_BEND_NONE;
         return;
+    }
+    for (size_t k = 0; k < 6 && w->is_arm; k++) {
+        if (w->arm.joint[k] == joint) {
+            e->bend = LWI_BEND_ARM;
+            e->rod = k;
+            return;
+        }
     }
     for (size_t i = 0; i < m->n_limb && part < LW_PART_CONE; i++) {
         const lwi_limb *limb = &m->limb[i];
@@ -162,7 +170,7 @@ static void add_joint(lwi_distance_work *w, const lw_model *m, size_t j)
     for (size_t k = 0; k < lw_joint_coords(joint->type); k++) {
         lwi_limit_entry *e = entry(w, LW_LIMIT_JOINT, j, k, &joint->range[k]);
         if (e != NULL) {
-            bend_of_joint(e, m, w->ball, j, k);
+            bend_of_joint(e, m, w, j, k);
         }
     }
     if (joint->type == LW_SPHERICAL && joint->has_cone) {
@@ -190,7 +198,7 @@ static void add_drive(lwi_distance_work *w, const lw_model *m, size_t d)
         if (joint == SIZE_MAX) {
             bend_of_rod(e, m, w->ball, rod);
         } else {
-            bend_of_joint(e, m, w->ball, joint, part);
+            bend_of_joint(e, m, w, joint, part);
         }
         e->factor = fabs(drive->term[0].factor);
     }
@@ -272,7 +280,7 @@ static double bend_within(const lwi_limit_entry *e, const lwi_ball *b, const lwi
     if (e->bend == LWI_BEND_NONE) {
         return 0.0;
     }
-    if (e->bend == LWI_BEND_ANY) {
+    if (e->bend == LWI_BEND_ANY || e->bend == LWI_BEND_ARM) {
         return INFINITY;
     }
     lwi_ball_bounds(&v, b, &b->rod[e->rod], &at[e->rod], r);
@@ -304,9 +312,15 @@ static double room_of(const lwi_limit_entry *e)
     return fmax(fmin(low, high), 0.0);
 }
 
-static bool inside(const lwi_limit_entry *e, const lwi_ball *b, const lwi_rod_at *at, double r,
-                   double m_length)
+static bool inside(const lwi_limit_entry *e, const lwi_distance_work *w, const lwi_rod_at *at,
+                   double r)
 {
+    const lwi_ball *b = w->ball;
+    double m_length = b->length_m;
+    if (e->bend == LWI_BEND_ARM) {
+        double turn[6];
+        return lwi_ball_arm_turns(turn, &w->arm, r) && e->factor * turn[e->rod] <= room_of(e);
+    }
     double unit = e->factor * SLOPE_OFF * (1.0 + 1.0 / m_length);
     double bend = bend_within(e, b, at, r);
     return (e->steep * (1.0 + SLOPE_OFF) + unit) * r + 0.5 * bend * r * r <= room_of(e);
@@ -466,12 +480,12 @@ void lwi_distance_limits(lw_distance_side *out, const lw_model *m, const lw_solu
     for (size_t i = 0; i < w->n_entry; i++) {
         double low = 0.0;
         double high = least;
-        if (inside(&w->entry[i], b, at, least, m->length_m)) {
+        if (inside(&w->entry[i], w, at, least)) {
             continue;
         }
         for (int s = 0; s < 30; s++) {
             double r = 0.5 * (low + high);
-            bool good = inside(&w->entry[i], b, at, r, m->length_m);
+            bool good = inside(&w->entry[i], w, at, r);
             low = good ? r : low;
             high = good ? high : r;
         }

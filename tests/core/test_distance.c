@@ -131,22 +131,35 @@ static const lw_inverse_answer *solve(const subject *s, const lw_pose_ask *pose)
     return a;
 }
 
+/* The very posture of a solution: by its bodies, so that limits and modes have no say. */
+static void by_bodies(lw_posture_ask *out, const lw_spec *spec, const lw_solution *at)
+{
+    memset(out, 0, sizeof *out);
+    out->kind = LW_BY_BODIES;
+    for (size_t i = 0; i < spec->n_body; i++) {
+        out->has_body[i] = i != spec->frame;
+        out->body[i] = at->config.body[i];
+    }
+}
+
 /* Sign of the rates' determinant where it is square, else 1 where they have full rank, 0 where
- * not. */
-static int forward_sign(const subject *s, const lw_pose_ask *pose)
+ * not. `inverse`: of the tool rates by the drive rates, else the other way round. */
+static int sign_at(const subject *s, const lw_solution *at, bool inverse)
 {
     const lw_margin_answer *margin;
     const lw_jacobian_answer *j;
     lw_err err = {.code = LW_OK};
-    lw_posture_ask posture = {.kind = LW_BY_POSE, .pose = *pose, .has_mode = true,
-                              .mode = s->mode};
+    lw_posture_ask posture;
     lw_jacobian_ask question = {.posture = &posture};
+    by_bodies(&posture, lw_model_spec(s->model), at);
     assert_int_equal(lw_jacobian(&j, s->model, &question, s->work, &err), LW_OK);
-    if (j->has_inverse && j->n_drive == j->n_output) {
-        return lwt_det(j->inverse, j->n_drive) > 0.0 ? 1 : -1;
+    if (j->n_drive == j->n_output && (inverse ? j->has_forward : j->has_inverse)) {
+        return lwt_det(inverse ? j->forward : j->inverse, j->n_drive) > 0.0 ? 1 : -1;
     }
     assert_int_equal(lw_margin(&margin, s->model, 0, NULL, &posture, s->work, &err), LW_OK);
-    return (margin->classes & (LW_CLASS_FORWARD | LW_CLASS_CONSTRAINT)) == 0 ? 1 : 0;
+    assert_non_null(margin->solution);
+    unsigned lost = inverse ? LW_CLASS_INVERSE : LW_CLASS_FORWARD | LW_CLASS_CONSTRAINT;
+    return (margin->classes & lost) == 0 ? 1 : 0;
 }
 
 /* Samples in each proved ball: no change of sign, no dead point passed, no limit broken. */
@@ -160,22 +173,32 @@ static void check_balls(const lw_model *model, lw_work *work, const lw_posture_a
     check_bracket(&a.inverse);
     check_bracket(&a.limit);
     sample(&pose, &s, 0.0, random);
-    int sign = forward_sign(&s, &pose);
+    const lw_inverse_answer *at = solve(&s, &pose);
+    assert_int_equal(at->n_solution, 1);
+    int sign = sign_at(&s, &at->solution[0], false);
+    at = solve(&s, &pose);
+    int inverse_sign = sign_at(&s, &at->solution[0], true);
     for (size_t i = 0; i < samples; i++) {
         if (a.forward.known_least && a.forward.at_least_m > 0.0) {
             sample(&pose, &s, a.forward.at_least_m, random);
             /* where no posture of the mode is, none is singular */
-            if (solve(&s, &pose)->n_solution > 0) {
-                assert_int_equal(forward_sign(&s, &pose), sign);
+            at = solve(&s, &pose);
+            if (at->n_solution > 0) {
+                assert_int_equal(sign_at(&s, &at->solution[0], false), sign);
             }
         }
         if (a.inverse.known_least && a.inverse.at_least_m > 0.0) {
             sample(&pose, &s, a.inverse.at_least_m, random);
-            assert_int_equal(solve(&s, &pose)->n_solution, 1);
+            at = solve(&s, &pose);
+            assert_int_equal(at->n_solution, 1);
+            /* passing a forward singularity is no matter here, and flips it too */
+            if (!a.forward.known_least) {
+                assert_int_equal(sign_at(&s, &at->solution[0], true), inverse_sign);
+            }
         }
         if (a.limit.known_least && a.limit.at_least_m > 0.0) {
             sample(&pose, &s, a.limit.at_least_m, random);
-            const lw_inverse_answer *at = solve(&s, &pose);
+            at = solve(&s, &pose);
             assert_true(at->n_solution == 1 && at->solution->within_limits);
         }
     }
@@ -230,6 +253,72 @@ static void stacked_plates_hold_in_their_balls(void **state)
 {
     (void)state;
     sampled_demo("lid-turner", 0.09, 1500, 1500);
+}
+
+/* The arm's brackets, and what was found. */
+static void check_arm(const lw_model *model, lw_work *work, const lw_posture_ask *at)
+{
+    subject s;
+    lw_err err = {.code = LW_OK};
+    lw_distance_answer a = ask(&s, model, work, at, 0);
+    assert_true(a.forward.none);
+    assert_true(a.inverse.known_least && a.inverse.known_most && a.inverse.limb == 0);
+    assert_true(a.inverse.at_least_m <= a.inverse.at_most_m);
+    /* Axes four and six in line (textbook), or the elbow stretched or folded, or the wrist centre
+     * over the post: the rates lose rank, and the way there is as long as said. */
+    lw_posture_ask found = {.kind = LW_BY_DRIVES};
+    for (size_t d = 0; d < 6; d++) {
+        found.has_drive[d] = true;
+        found.drive[d] = a.inverse.drive[d];
+    }
+    const lw_margin_answer *margin;
+    assert_int_equal(lw_margin(&margin, model, 0, NULL, &found, work, &err), LW_OK);
+    assert_non_null(margin->solution);
+    assert_true(margin->tool.singular[5] < 1e-2 * margin->tool.singular[0]);
+    double moved = 0.0;
+    for (size_t k = 0; k < 3; k++) {
+        moved += pow(margin->solution->tool.pos_m[k] - s.tool.pos_m[k], 2);
+    }
+    double cosine = -1.0;
+    for (size_t k = 0; k < 9; k++) {
+        cosine += margin->solution->tool.rot[k] * s.tool.rot[k];
+    }
+    moved += pow(s.length * acos(fmin(fmax(0.5 * cosine, -1.0), 1.0)), 2);
+    lwt_near_rel(sqrt(moved), a.inverse.at_most_m, 1e-4);
+}
+
+static void an_arm_with_a_spherical_wrist_holds_in_its_balls(void **state)
+{
+    (void)state;
+    lw_model *model = lwt_bench_demo("case-packer");
+    lw_work *work;
+    lw_err err = {.code = LW_OK};
+    lwt_random random;
+    subject s;
+    assert_int_equal(lw_work_new(&work, model, &err), LW_OK);
+    lwt_random_init(&random, 43);
+    const lw_posture_ask *home = &lw_model_spec(model)->home;
+    (void)ask(&s, model, work, home, 0);
+    check_arm(model, work, home);
+    check_balls(model, work, home, 0, share(1000), &random);
+    /* Every mode of the document: its example. */
+    const lw_spec *spec = lw_model_spec(model);
+    for (size_t i = 0; i < spec->n_mode; i++) {
+        check_arm(model, work, &spec->mode[i].example);
+        check_balls(model, work, &spec->mode[i].example, 0, share(300), &random);
+    }
+    for (size_t i = 0; i < 6; i++) {
+        lw_posture_ask at = {.kind = LW_BY_POSE, .has_mode = true, .mode = s.mode};
+        const lw_posture_answer *got;
+        sample(&at.pose, &s, 0.2, &random);
+        if (lw_posture(&got, model, 0, NULL, &at, work, &err) == LW_OK &&
+            got->outcome == LW_OUTCOME_OK) {
+            check_arm(model, work, &at);
+            check_balls(model, work, &at, 0, share(300), &random);
+        }
+    }
+    lw_work_free(work);
+    lw_model_free(model);
 }
 
 /* ---- three struts in the plane ---------------------------------------------------------------- */
@@ -548,6 +637,7 @@ int main(void)
         cmocka_unit_test(four_arms_hold_in_their_balls),
         cmocka_unit_test(carriages_hold_in_their_balls),
         cmocka_unit_test(stacked_plates_hold_in_their_balls),
+        cmocka_unit_test(an_arm_with_a_spherical_wrist_holds_in_its_balls),
         cmocka_unit_test(brackets_the_conic_of_three_planar_struts),
         cmocka_unit_test(brackets_stretched_and_folded_arms),
         cmocka_unit_test(a_rod_square_to_its_rail_is_a_straight_way_off),
