@@ -7,6 +7,7 @@
 
 #include "../math/tol.h"
 #include "../math/vec3.h"
+#include "../proof/ball_any.h"
 
 #include <stdint.h>
 
@@ -80,10 +81,10 @@ static void forward_side(lw_distance_answer *a, const lw_model *m, const lw_dist
         side->none = true; /* drives locked, no joint moves */
         return;
     }
-    lwi_distance_forward_most(side, m, work);
     if (!w->ball.forward) {
-        return;
+        return; /* what the closure rows told stands */
     }
+    lwi_distance_forward_most(side, m, work);
     double most = bound_of(side, &w->ball);
     side->at_least_m = lwi_ball_forward_once(&w->ball, &w->local, most);
     side->known_least = side->at_least_m > 0.0;
@@ -138,6 +139,25 @@ static bool lost(const double *matrix, size_t rows, size_t cols, size_t need, lw
     return n < need || !(sv[need - 1] > LWI_RANK_POSTURE * sv[0]);
 }
 
+/* What the closure rows alone say, where rods and arms do not say more. */
+static void any_side(lw_distance_answer *a, const lw_model *m, const lw_spec_tool *tool,
+                     const lw_solution *sol, lw_work *work)
+{
+    const lwi_distance_work *w = work->distance_work;
+    lwi_ball_any any;
+    if ((w->ball->forward && w->ball->inverse) || w->is_arm) {
+        return;
+    }
+    lwi_ball_any_at(&any, m, tool, sol, work);
+    a->forward.none = any.forward_none;
+    a->forward.known_least = any.forward && !any.forward_none;
+    a->forward.at_least_m = a->forward.known_least ? any.forward_m : 0.0;
+    a->inverse.known_least = any.inverse;
+    a->inverse.at_least_m = any.inverse_m;
+    a->limit.known_least = any.limit;
+    a->limit.at_least_m = any.limit_m;
+}
+
 lw_code lw_distance(const lw_distance_answer **out, const lw_model *m, const lw_distance_ask *ask,
                     lw_work *work, lw_err *err)
 {
@@ -170,14 +190,8 @@ lw_code lw_distance(const lw_distance_answer **out, const lw_model *m, const lw_
     w->start = sol->config;
     w->mode = sol->mode;
     w->explicit_inverse = m->explicit_inverse;
-    if (!lwi_ball_make(w->ball, m, tool, sol)) {
-        a->reason = a->outcome == LW_OUTCOME_OK
-                        ? "distances are not told by this version where the tool's pose does not "
-                          "follow from the outputs"
-                        : a->reason;
-        return LW_OK;
-    }
-    w->is_arm = lwi_ball_arm_make(&w->arm, m, tool, sol);
+    bool posed = lwi_ball_make(w->ball, m, tool, sol);
+    w->is_arm = posed && lwi_ball_arm_make(&w->arm, m, tool, sol);
     lwi_rates_at(&r, m, tool, &sol->config, sol->tool.pos_m, work);
     bool closed = m->rank == 0 || r.closure_ratio > LWI_RANK_POSTURE;
     double *scaled = work->matrix[3];
@@ -193,21 +207,22 @@ lw_code lw_distance(const lw_distance_answer **out, const lw_model *m, const lw_
             a->inverse.limb = i;
         }
     }
+    any_side(a, m, tool, sol, work);
     if (forward) {
         here(&a->forward, sol);
         a->outcome = a->outcome == LW_OUTCOME_OK ? LW_OUTCOME_SINGULAR : a->outcome;
-    } else {
+    } else if (posed) {
         forward_side(a, m, ask, work);
     }
     if (inverse) {
         here(&a->inverse, sol);
-    } else {
+    } else if (posed) {
         inverse_side(a, m, ask, work);
     }
     if (!sol->within_limits) {
         here(&a->limit, sol);
         a->limit.limit = sol->limit[0];
-    } else {
+    } else if (posed) {
         lwi_distance_limits(&a->limit, m, sol, work);
     }
     return LW_OK;

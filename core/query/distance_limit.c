@@ -491,6 +491,7 @@ void lwi_distance_limits(lw_distance_side *out, const lw_model *m, const lw_solu
         }
         least = low;
     }
-    out->at_least_m = least;
-    out->known_least = least > 0.0;
+    /* Where some quantity is not bounded here, what the closure rows told may be more. */
+    out->at_least_m = out->known_least ? fmax(out->at_least_m, least) : least;
+    out->known_least = out->at_least_m > 0.0;
 }

@@ -599,6 +599,83 @@ static void brackets_the_limits_of_struts(void **state)
     lwt_machine_free(m);
 }
 
+/* ---- any mechanism, by its closure rows -------------------------------------------------------- */
+
+/* Samples reached from the posture itself: there is no list of modes to go by. */
+static void check_any(lwt_machine *m, const lw_posture_ask *at, lwt_random *random)
+{
+    subject s;
+    lw_distance_answer a = ask(&s, m->model, m->work, at, 0);
+    lw_posture_ask start;
+    lw_err err = {.code = LW_OK};
+    const lw_posture_answer *posture;
+    assert_true(a.forward.none || a.forward.known_least);
+    assert_true(a.inverse.known_least);
+    check_bracket(&a.forward);
+    check_bracket(&a.inverse);
+    assert_int_equal(lw_posture(&posture, m->model, 0, NULL, at, m->work, &err), LW_OK);
+    by_bodies(&start, m->spec, posture->solution);
+    for (int side = 0; side < 2; side++) {
+        double r = side == 0 ? a.forward.at_least_m : a.inverse.at_least_m;
+        int sign = 0;
+        for (size_t i = 0; i < share(300) && (side == 1 || !a.forward.none); i++) {
+            const lw_inverse_answer *found;
+            lw_inverse_ask question = {.near = &start};
+            sample(&question.pose, &s, i == 0 ? 0.0 : r, random);
+            assert_int_equal(lw_inverse(&found, m->model, &question, m->work, &err), LW_OK);
+            assert_true(found->n_solution > 0);
+            int here = sign_at(&s, &found->solution[0], side == 1);
+            sign = i == 0 ? here : sign;
+            assert_int_equal(here, sign);
+        }
+    }
+}
+
+/* Two links and a tip in the plane, outputs x y: the tip reaches an annulus (textbook). */
+static void a_planar_arm_of_two_links_keeps_off_its_annulus(void **state)
+{
+    (void)state;
+    static const lwt_table table = {.n = 2, .a = {0.6, 0.4}};
+    lwt_random random;
+    lwt_random_init(&random, 11);
+    for (size_t i = 0; i < 6; i++) {
+        double theta[2] = {lwt_random_in(&random, -2.0, 2.0), lwt_random_in(&random, 0.4, 2.7)};
+        lwt_machine *m = lwt_kit_arm("two links", &table, theta, "x y");
+        lwt_machine_load(m);
+        double zero[2] = {0, 0};
+        const lw_posture_ask *at = lwt_by_drives(m, zero, NULL);
+        subject s;
+        lw_distance_answer a = ask(&s, m->model, m->work, at, 0);
+        double d = hypot(s.tool.pos_m[0], s.tool.pos_m[1]);
+        assert_true(a.forward.none);
+        assert_true(a.inverse.known_least);
+        assert_true(a.inverse.at_least_m <= fmin(1.0 - d, d - 0.2));
+        assert_true(a.inverse.at_least_m >= 0.02 * fmin(1.0 - d, d - 0.2));
+        check_any(m, at, &random);
+        lwt_machine_free(m);
+    }
+}
+
+static void two_arms_on_one_pin_hold_in_their_balls(void **state)
+{
+    (void)state;
+    static const double base[4] = {0.0, 0.0, 0.6, 0.0};
+    static const double first[2] = {0.5, 0.55};
+    static const double second[2] = {0.6, 0.5};
+    static const int elbow[2] = {1, -1};
+    lwt_random random;
+    lwt_random_init(&random, 12);
+    for (size_t i = 0; i < 4; i++) {
+        double theta[2];
+        double point[2] = {lwt_random_in(&random, 0.1, 0.5), lwt_random_in(&random, 0.5, 0.8)};
+        lwt_machine *m = lwt_kit_pin_arms("pin", 2, base, first, second, point, elbow, theta);
+        lwt_machine_load(m);
+        double zero[2] = {0, 0};
+        check_any(m, lwt_by_drives(m, zero, NULL), &random);
+        lwt_machine_free(m);
+    }
+}
+
 /* The same question gets the same answer, and takes no memory. */
 static void answers_alike_and_allocates_nothing(void **state)
 {
@@ -643,6 +720,8 @@ int main(void)
         cmocka_unit_test(a_rod_square_to_its_rail_is_a_straight_way_off),
         cmocka_unit_test(a_crank_in_line_with_its_rod_is_a_straight_way_off),
         cmocka_unit_test(brackets_the_limits_of_struts),
+        cmocka_unit_test(a_planar_arm_of_two_links_keeps_off_its_annulus),
+        cmocka_unit_test(two_arms_on_one_pin_hold_in_their_balls),
         cmocka_unit_test(answers_alike_and_allocates_nothing),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
