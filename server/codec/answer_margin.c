@@ -184,25 +184,19 @@ static void put_left_out(lwd_json *json, const lwd_edge *edge, const lw_margin_a
     }
 }
 
-void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head, const lw_margin_answer *answer)
+void lwd_answer_room(lwd_json *json, const lwd_answer_head *head, const lw_margin_answer *answer)
 {
     const lwd_edge *edge = head->edge;
-    lwd_answer_begin(json, head, answer->outcome, answer->reason);
-    if (answer->solution != NULL) {
-        lwd_answer_margins(json, head, answer);
-        put_classes(json, answer->classes);
-        if (answer->singular != NULL) {
-            lwd_answer_singular(json, head, answer);
-        }
-        put_ranks(json, answer);
-        put_limbs(json, edge, answer);
-        put_left_out(json, edge, answer);
-        lwd_json_put_number(json, "hold_length",
-                            lwd_length_out(head->question->units, answer->hold_length_m));
-        lwd_json_key(json, "posture");
-        lwd_answer_solution(json, head, answer->solution);
-    } else {
-        lwd_json_put_null(json, "posture");
+    lwd_answer_margins(json, head, answer);
+    put_classes(json, answer->classes);
+    if (answer->singular != NULL) {
+        lwd_answer_singular(json, head, answer);
     }
-    lwd_answer_end(json);
+    put_ranks(json, answer);
+    put_limbs(json, edge, answer);
+    put_left_out(json, edge, answer);
+    lwd_json_put_number(json, "hold_length",
+                        lwd_length_out(head->question->units, answer->hold_length_m));
+    lwd_json_key(json, "posture");
+    lwd_answer_solution(json, head, answer->solution);
 }

@@ -49,6 +49,8 @@ void lwd_answer_off_by(lwd_json *json, const lwd_answer_head *head, double posit
 /* "margins" and "least". */
 void lwd_answer_margins(lwd_json *json, const lwd_answer_head *head,
                         const lw_margin_answer *margin);
+/* All of a margin answer that belongs to its posture. */
+void lwd_answer_room(lwd_json *json, const lwd_answer_head *head, const lw_margin_answer *answer);
 /* Kind, what is lost or weakest, the way out; in "without_drive": with the drive stuck. */
 void lwd_answer_singular(lwd_json *json, const lwd_answer_head *head,
                          const lw_margin_answer *answer);

@@ -252,6 +252,45 @@ static void put_kind(lwd_json *json, unsigned classes)
     lwd_json_put_string(json, "kind", w.len > 0 ? w.text : "regular");
 }
 
+/* What the core says in general, with the names of the drives: "still held; drives m1 m4 no longer
+ * spare". */
+static const char *reason_of(words *w, const lwd_edge *edge, const lw_margin_answer *answer)
+{
+    size_t n = 0;
+    for (size_t d = 0; answer->singular != NULL && d < edge->spec->n_drive; d++) {
+        n += answer->singular->no_longer_spare[d];
+    }
+    if (n == 0 || answer->outcome != LW_OUTCOME_OK) {
+        return answer->reason;
+    }
+    say(w, "%sstill held; drive%s",
+        (answer->classes & LW_CLASS_CONSTRAINT) != 0
+            ? "constraint singularity: the mechanism gains a freedom here; "
+        : (answer->classes & LW_CLASS_INVERSE) != 0
+            ? "inverse singularity: a tool direction is lost; "
+            : "",
+        n > 1 ? "s" : "");
+    for (size_t d = 0; d < edge->spec->n_drive; d++) {
+        if (answer->singular->no_longer_spare[d]) {
+            say(w, " %s", edge->spec->drive[d].name);
+        }
+    }
+    say(w, " no longer spare");
+    return w->text;
+}
+
+void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head, const lw_margin_answer *answer)
+{
+    words w = {.len = 0};
+    lwd_answer_begin(json, head, answer->outcome, reason_of(&w, head->edge, answer));
+    if (answer->solution != NULL) {
+        lwd_answer_room(json, head, answer);
+    } else {
+        lwd_json_put_null(json, "posture");
+    }
+    lwd_answer_end(json);
+}
+
 static void put_preloads(lwd_json *json, const lwd_edge *edge, const lw_margin_answer *answer)
 {
     const lw_singular_answer *s = answer->singular;

@@ -126,15 +126,22 @@ def near(got, want, tolerance, *what):
 
 
 class Service:
+    """A daemon with one mechanism published, whatever it warns of."""
+
+    def __init__(self, text):
+        self.document = json.loads(text)
+        self.path = f"/v1/mechanisms/{self.document['name']}"
+
     def __enter__(self):
         self.daemon = Daemon("--prepare-paths", "1").__enter__()
         try:
-            put = self.daemon.ask("PUT", "/v1/mechanisms/five-cranks",
-                                   json.dumps(document()).encode(),
-                                   [("Content-Type", "application/json")])
+            put = self.daemon.ask("PUT", self.path, json.dumps(self.document).encode(),
+                                  [("Content-Type", "application/json")])
             expect(put.status == 201, "PUT", put.status, put.body)
-            publish = self.daemon.ask("POST", "/v1/mechanisms/five-cranks/revisions/1/publish",
-                                       b"{}", [("Content-Type", "application/json")])
+            accept = [f["finding"] for f in put.json()["findings"] if f["severity"] == "warning"]
+            publish = self.daemon.ask("POST", f"{self.path}/revisions/1/publish",
+                                      json.dumps({"accept": accept}).encode(),
+                                      [("Content-Type", "application/json")])
             expect(publish.status == 200, "publish", publish.status, publish.body)
         except BaseException:
             self.daemon.__exit__(*sys.exc_info())
@@ -145,8 +152,8 @@ class Service:
         return self.daemon.__exit__(*what)
 
     def ask(self, question, body):
-        answer = self.daemon.ask("POST", f"/v1/mechanisms/five-cranks/{question}",
-                                  json.dumps(body).encode(), [("Content-Type", "application/json")])
+        answer = self.daemon.ask("POST", f"{self.path}/{question}", json.dumps(body).encode(),
+                                 [("Content-Type", "application/json")])
         expect(answer.status == 200, question, answer.status, answer.body)
         return answer.json()
 
@@ -156,7 +163,7 @@ def pose_of(pose):
 
 
 def margins_by_their_definitions():
-    with Service() as service:
+    with Service(json.dumps(document())) as service:
         for pose in POSES:
             a = rates(pose)
             answer = service.ask("margin", {"pose": pose_of(pose)})
@@ -194,7 +201,7 @@ def margins_by_their_definitions():
 
 
 def thresholds_by_name():
-    with Service() as service:
+    with Service(json.dumps(document())) as service:
         for pose in POSES[:3]:
             margins = service.ask("margin", {"pose": pose_of(pose)})["margins"]
             for name in ("accuracy", "load", "speed", "spare", "travel", "hold"):
@@ -209,5 +216,67 @@ def thresholds_by_name():
                     expect(answer["margins"][name]["value"] == value, name, "the same in both")
 
 
+def demo(name):
+    with open(os.path.join(HERE, "..", "..", "deploy", "demo", f"{name}.json"),
+              encoding="utf-8") as f:
+        return f.read()
+
+
+def spent(answer, drive, limb_name, joints):
+    """Inverse singular and held, one drive no longer spare; the limb's joints move alone."""
+    expect(answer["code"] in (1, 3), answer["code"], answer.get("reason"))
+    expect(answer["classes"] == ["inverse"] and answer["kind"] == "inverse", answer["kind"])
+    expect(answer["held"], "held")
+    expect(drive in answer["no_longer_spare"], answer["no_longer_spare"])
+    if answer["code"] == 1:
+        names = answer["no_longer_spare"]
+        expect(f"still held; drive{'s' if len(names) > 1 else ''} {' '.join(names)} no longer spare"
+               in answer["reason"], answer["reason"])
+    expect(not answer["weakest_hold"][0]["lost"], "nothing lost of hold")
+    lost = answer["weakest_motion"]
+    expect(len(lost) == 1 and lost[0]["lost"], lost)
+    expect(lost[0]["limbs"] == [limb_name], lost[0]["limbs"])
+    expect(sorted(lost[0]["joints"]) == sorted(joints), lost[0]["joints"])
+    expect(list(lost[0]["drives"]) == [drive], lost[0]["drives"])
+    expect("motion lost: shifting along the line" in lost[0]["says"] and
+           f"moves with the tool at rest: limb {limb_name}" in lost[0]["says"], lost[0]["says"])
+    expect(answer["leave_by"]["motion"]["either_way"], answer["leave_by"])
+    without = {w["drive"]: w for w in answer["without_drive"]}
+    expect(without[drive]["indispensable"] and without[drive]["hold"] < 1e-6, without[drive])
+    # Stuck is another matter than free: one freedom less, and what is left is held.
+    expect(without[drive]["braked"]["hold"] > 0.01, without[drive])
+    expect(answer["margins"]["hold"]["value"] > 0.01, answer["margins"]["hold"])
+
+
+def a_stretched_limb_of_the_label_stage():
+    """Crank 150 and link 200 mm in line, by the drawing: from (-260, -190) to (20, 20), which the
+    plate's first pivot (-60, -40) reaches at x = 80, y = 60."""
+    with Service(demo("label-stage")) as service:
+        answer = service.ask("margin", {"pose": {"x": 80, "y": 60, "rz": 0}})
+        spent(answer, "m1", "shoulder-1", ["shoulder-1", "elbow-1", "pivot-1"])
+        joints = answer["weakest_motion"][0]["joints"]
+        # By hand: crank 1, link -150/200, so elbow -1.75 and pivot 0.75; shares of the largest.
+        for name, rate in (("shoulder-1", 1.0), ("elbow-1", -1.75), ("pivot-1", 0.75)):
+            near(joints[name] / joints["shoulder-1"], rate, 1e-5, name)
+        axis, point = (answer["weakest_motion"][0]["screw"][k] for k in ("axis", "point"))
+        near(abs(0.8 * axis["x"] + 0.6 * axis["y"]), 1.0, 1e-9, "along the limb")
+        expect(abs((point["x"] - 20) * 0.6 - (point["y"] - 20) * 0.8) < 1e-3, "on the limb", point)
+
+
+def a_level_rod_of_the_lid_turner():
+    """By the drawing: the upper north rods, 212.424 long between their axes, lie level where the
+    plate stands that far across from (0, 130); at 15 degrees the other rods still reach."""
+    length = math.sqrt(130.0 ** 2 + 168.0 ** 2)
+    turn = math.radians(15)
+    with Service(demo("lid-turner")) as service:
+        answer = service.ask("margin", {"pose": {"x": length * math.sin(turn),
+                                                 "y": 130.0 - length * math.cos(turn), "z": 430,
+                                                 "joints": {"shaft": 0}}, "mode": "all-hanging"})
+        drive = [d["name"] for d in service.document["drives"]
+                 if d["moves"] == "upper-rail-north"]
+        spent(answer, drive[0], "upper-rail-north", ["upper-rail-north"])
+
+
 if __name__ == "__main__":
-    run(margins_by_their_definitions, thresholds_by_name)
+    run(margins_by_their_definitions, thresholds_by_name, a_stretched_limb_of_the_label_stage,
+        a_level_rod_of_the_lid_turner)
