@@ -26,7 +26,7 @@
 
 /* Frobenius norm of the third derivative of the wrenches along any unit motion within r of the
  * pose; infinite where a rod may come to its dead point. */
-static double third_of(const lwi_ball *b, const lwi_rod_at *rod, double radius)
+double lwi_ball_third(const lwi_ball *b, const lwi_rod_at *rod, double radius)
 {
     enum { SLICES = 8 };
     double total = 0.0;
@@ -258,7 +258,7 @@ static bool test_radius(const lwi_ball_local *l, const lwi_ball *b, double r, bo
     size_t m = l->m;
     double a[LWI_BALL_COLS * LWI_BALL_COLS];
     double size = 0.0;
-    double rest = third_of(b, l->rod, r) * r * r * r / 6.0;
+    double rest = lwi_ball_third(b, l->rod, r) * r * r * r / 6.0;
     double arm = 1.0;
     double one = box ? 1.0 : r * r;
     double two = box ? 1.0 : r * r * r * r;

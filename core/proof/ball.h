@@ -142,6 +142,9 @@ void lwi_ball_pose(lw_frame *tool, const lwi_ball *ball, const double *y);
 bool lwi_ball_way(const lwi_ball *ball, const double *y);
 
 /* For the files of this kind alone. */
+/* Frobenius norm of the wrenches' third derivative along any unit motion within r. */
+double lwi_ball_third(const lwi_ball *b, const lwi_rod_at *rod, double r);
+
 typedef enum lwi_ball_verdict { LWI_BALL_OPEN, LWI_BALL_PROVED, LWI_BALL_EMPTY } lwi_ball_verdict;
 lwi_ball_verdict lwi_ball_test(lwi_ball_local *local, const lwi_ball *ball, lwi_ball_side side,
                                const double *y, const double *width);
