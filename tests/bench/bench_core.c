@@ -21,7 +21,7 @@ typedef struct bars {
 } bars;
 
 static const bars demo[DEMOS] = {
-    {"tilt-table", 2.0, 15.0, 5.0, 60.0}, {"belt-hopper", 0, 0, 0, 0},
+    {"tilt-table", 2.0, 15.0, 5.0, 25.0}, {"belt-hopper", 0, 0, 0, 0},
     {"lid-turner", 0, 0, 0, 200.0},       {"label-stage", 0, 0, 0, 0},
     {"case-packer", 0, 0, 0, 0},
 };
