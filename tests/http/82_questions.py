@@ -183,7 +183,8 @@ def verdicts_are_answers_and_nonsense_is_an_error():
         expect(far["code"] == 4 and far["outcome"] == "out_of_reach", far["code"])
         from_here = {"pose": POSES["label-stage"], "margin_min": 0,
                      "from": {"drives": {"m1": 90, "m2": 180, "m3": 270, "m4": 0}}}
-        expect(line.ask("label-stage", "reach", from_here)["code"] == 5)
+        move = line.ask("label-stage", "reach", from_here)
+        expect(move["code"] == 1 and move["checked"] == "move")
         demand = dict(pose=POSES["label-stage"], margin_min={"accuracy": 1000})
         low = line.ask("label-stage", "reach", demand)
         expect(low["code"] == 2 and low["failed_margin"] == "accuracy", low["code"])
