@@ -260,6 +260,29 @@ class Answers(Case):
         self.assertEqual(rows["accuracy"].split()[:3], ["accuracy", "no", "-"])
         self.assertIn("\nposture\n", got)
 
+    def test_margin_says_what_is_nearest_to_singular(self):
+        got = self.ask("margin", answer(
+            kind="inverse", held=True, freedoms=3, no_longer_spare=["m1", "m4"],
+            weakest_hold=[{"value": 0.2, "lost": False, "says": "motion held least (0.2): turning",
+                           "screw": {"kind": "none"}, "outputs": {"x": 1}}],
+            weakest_motion=[{"value": 0, "lost": True, "says": "motion lost: shifting along x",
+                             "screw": {"kind": "none"}, "outputs": {"x": 1}, "limbs": ["a"],
+                             "joints": {"elbow-1": 1, "shoulder-1": -0.5}, "drives": {"m1": 1}}],
+            leave_by={"hold": None,
+                      "motion": {"growth": 0.01, "measured_at": "drives", "either_way": True,
+                                 "outputs": {"x": 0}, "drives": {"m1": 0.25}}},
+            posture=solution("++", {"m1": 1}))).out
+        self.assertRegex(got, r"(?m)^kind +inverse$")
+        self.assertRegex(got, r"(?m)^no longer spare m1, m4$")
+        lines = got.splitlines()
+        at = lines.index("nearest to singular (0 = singular)")
+        self.assertEqual(lines[at + 1:at + 5], [
+            "  motion held least (0.2): turning",
+            "  motion lost: shifting along x",
+            "    joints elbow-1 1, shoulder-1 -0.5",
+            "  motion grows by 0.01 over the step m1 0.25, or back"])
+        self.assertNotIn("weakest", got, "told once")
+
     def test_matrices_have_names_and_units(self):
         got = self.ask("jacobian", answer(forward={
             "rows": [{"name": "x", "unit": "mm/s"}, {"name": "rz", "unit": "deg/s"}],

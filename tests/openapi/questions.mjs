@@ -64,6 +64,8 @@ export const asked = [
   ['lid-turner', 'margin', { pose: { x: 0.02, y: -0.015, z: 0.42, joints: { shaft: 360 } },
     units: { length: 'm' } }, 1],
   ['case-packer', 'margin', { drives: { j1: 0, j2: 10, j3: 20, j4: 0, j5: 0, j6: 0 } }, null],
+  // One limb stretched: singular, held, one drive no longer spare.
+  ['label-stage', 'margin', { pose: { x: 80, y: 60, rz: 0 } }, 1],
   ['label-stage', 'margin', { pose: { x: 900, y: 0, rz: 0 } }, 4],
   ['label-stage', 'margin', { drives: { m1: 90, m2: 180, m3: 270, m4: 8 } }, 8],
   ['belt-hopper', 'margin', { pose: { x: 35, y: -25, z: 400 } }, null],
