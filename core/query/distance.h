@@ -32,6 +32,8 @@ typedef struct lwi_limit_entry {
     bool axis_cranks;   /* CONE: the axis goes with a crank */
     double factor;      /* of the quantity in the limited sum */
     double value, slope[LWI_BALL_DIRS], steep;
+    double period;      /* of a turn that is told up to whole turns, 0 else */
+    bool tried;
 } lwi_limit_entry;
 
 typedef struct lwi_distance_work {
@@ -52,6 +54,17 @@ typedef struct lwi_distance_work {
 /* The posture of the tool pose y in the mode of the start, NULL where there is none; lives in the
  * work's first list slot until the next one. */
 const lw_solution *lwi_distance_solve(const lw_model *model, const double *y, lw_work *work);
+
+/* Going to the nearest point of a curved surface by its tangents converges by a factor of distance
+ * times curvature, which may be near one or beyond: steps are stretched or shortened by what two of
+ * them in a row tell (Aitken's method for vectors; Irons & Tuck 1969, from memory). Returns the
+ * share of the step to take. */
+typedef struct lwi_pace {
+    double share;
+    bool known;
+    double last[LWI_BALL_DIRS];
+} lwi_pace;
+double lwi_pace_stride(lwi_pace *pace, const double *step, size_t n);
 
 /* Nearest postures beyond, by eight starts. */
 void lwi_distance_forward_most(lw_distance_side *out, const lw_model *model, lw_work *work);

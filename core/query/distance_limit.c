@@ -16,6 +16,7 @@
 #define SLOPE_OFF 1e-6
 /* Difference step, of the characteristic length. */
 #define SLOPE_STEP 1e-5
+#define WHOLE_TURN 6.283185307179586476925
 
 static double cosine(const double a[3], const double b[3])
 {
@@ -55,6 +56,15 @@ static double value_of(const lw_model *m, const lwi_limit_entry *e, const lw_sol
                sol->config.coord[lw_spec_rod_coord(m->spec, e->index)];
     }
     return sol->config.coord[lw_spec_joint_coord(m->spec, e->index, e->part)];
+}
+
+/* Turns come back next to their range: here they are followed from where they were. */
+static double followed(const lwi_limit_entry *e, double value, double from)
+{
+    if (e->period > 0.0) {
+        value -= e->period * floor((value - from) / e->period + 0.5);
+    }
+    return value;
 }
 
 /* ---- which quantities, and how they bend ----------------------------------------------------- */
@@ -171,6 +181,10 @@ static void add_joint(lwi_distance_work *w, const lw_model *m, size_t j)
         lwi_limit_entry *e = entry(w, LW_LIMIT_JOINT, j, k, &joint->range[k]);
         if (e != NULL) {
             bend_of_joint(e, m, w, j, k);
+            e->period = lw_spec_coord_turning(m->spec, lw_spec_joint_coord(m->spec, j, k)) &&
+                                joint->type != LW_HELICAL
+                            ? WHOLE_TURN
+                            : 0.0;
         }
     }
     if (joint->type == LW_SPHERICAL && joint->has_cone) {
@@ -201,6 +215,10 @@ static void add_drive(lwi_distance_work *w, const lw_model *m, size_t d)
             bend_of_joint(e, m, w, joint, part);
         }
         e->factor = fabs(drive->term[0].factor);
+        e->period = drive->turning && joint != SIZE_MAX &&
+                            m->spec->joint[joint].type != LW_HELICAL
+                        ? WHOLE_TURN * e->factor
+                        : 0.0;
     }
 }
 
@@ -238,7 +256,7 @@ static bool values_at(double *out, const lw_model *m, const double *y, lw_work *
     lwi_distance_work *w = work->distance_work;
     const lw_solution *sol = lwi_distance_solve(m, y, work);
     for (size_t i = 0; sol != NULL && i < w->n_entry; i++) {
-        out[i] = value_of(m, &w->entry[i], sol);
+        out[i] = followed(&w->entry[i], value_of(m, &w->entry[i], sol), w->entry[i].value);
     }
     return sol != NULL;
 }
@@ -335,11 +353,12 @@ static bool crossing(double *y, const lw_model *m, const lwi_limit_entry *e, dou
     lwi_distance_work *w = work->distance_work;
     double slope[LWI_BALL_DIRS];
     double value = e->value;
+    lwi_pace pace = {.known = false};
     size_t n = w->ball->n_dir;
     size_t index = (size_t)(e - w->entry);
     memset(y, 0, LWI_BALL_DIRS * sizeof *y);
     memcpy(slope, e->slope, sizeof slope);
-    for (int s = 0; s < 12; s++) {
+    for (int s = 0; s < 20; s++) {
         double square = 0.0;
         double along = 0.0;
         double z[LWI_BALL_DIRS] = {0};
@@ -353,14 +372,16 @@ static bool crossing(double *y, const lw_model *m, const lwi_limit_entry *e, dou
         }
         double step = 0.0;
         for (size_t k = 0; k < n; k++) {
-            z[k] = (along + to - value) / square * slope[k];
-            step += (z[k] - y[k]) * (z[k] - y[k]);
+            z[k] = (along + to - value) / square * slope[k] - y[k];
+            step += z[k] * z[k];
         }
-        double share = fmin(1.0, m->length_m / sqrt(step));
+        step = sqrt(step);
+        bool close = step < 1e-6 * m->length_m;
+        double share = close ? 1.0 : fmin(lwi_pace_stride(&pace, z, n), m->length_m / step);
         bool solved = false;
         for (int half = 0; half < 6 && !solved; half++, share *= 0.5) {
             for (size_t k = 0; k < n; k++) {
-                w->probe[0][k] = y[k] + share * (z[k] - y[k]);
+                w->probe[0][k] = y[k] + share * z[k];
             }
             solved = values_at(w->plus, m, w->probe[0], work);
         }
@@ -369,7 +390,7 @@ static bool crossing(double *y, const lw_model *m, const lwi_limit_entry *e, dou
         }
         memcpy(y, w->probe[0], n * sizeof *y);
         value = w->plus[index];
-        if (sqrt(step) < 1e-9 * m->length_m) {
+        if (close) {
             return true;
         }
         for (size_t k = 0; k < n; k++) {
@@ -388,12 +409,32 @@ static bool crossing(double *y, const lw_model *m, const lwi_limit_entry *e, dou
     return false;
 }
 
-static bool same_limit(const lw_limit *l, const lwi_limit_entry *e)
+/* The value at z, followed along the straight way there; false where that is not sure. */
+static bool value_along(double *value, const lw_model *m, const lwi_limit_entry *e,
+                        const double *z, lw_work *work)
 {
-    return l->of == e->of && l->index == e->index && l->part == e->part;
+    enum { PARTS = 8 };
+    lwi_distance_work *w = work->distance_work;
+    *value = e->value;
+    for (int part = e->period > 0.0 ? 1 : PARTS; part <= PARTS; part++) {
+        double y[LWI_BALL_DIRS] = {0};
+        for (size_t k = 0; k < w->ball->n_dir; k++) {
+            y[k] = z[k] * part / PARTS;
+        }
+        const lw_solution *sol = lwi_distance_solve(m, y, work);
+        if (sol == NULL) {
+            return false;
+        }
+        double next = followed(e, value_of(m, e, sol), *value);
+        if (e->period > 0.0 && fabs(next - *value) > 0.2 * e->period) {
+            return false;
+        }
+        *value = next;
+    }
+    return true;
 }
 
-/* Beyond y the posture breaks the limit of the entry. */
+/* Beyond y the posture breaks the limit of the entry; y moves there. */
 static double confirmed(double *y, lw_limit *limit, const lw_model *m, const lwi_limit_entry *e,
                         lw_work *work)
 {
@@ -401,17 +442,27 @@ static double confirmed(double *y, lw_limit *limit, const lw_model *m, const lwi
     for (double over = 1e-8; over < 2e-3; over *= 10.0) {
         double z[LWI_BALL_DIRS] = {0};
         double size = 0.0;
+        double value;
         for (size_t k = 0; k < b->n_dir; k++) {
             z[k] = y[k] * (1.0 + over);
             size += z[k] * z[k];
         }
-        const lw_solution *sol = lwi_distance_solve(m, z, work);
-        for (size_t i = 0; sol != NULL && i < sol->n_limit; i++) {
-            if (same_limit(&sol->limit[i], e) && (b->n_rod == 0 || lwi_ball_way(b, z))) {
-                *limit = sol->limit[i];
-                memcpy(y, z, b->n_dir * sizeof *y);
-                return sqrt(size);
+        if (!value_along(&value, m, e, z, work) || (b->n_rod > 0 && !lwi_ball_way(b, z))) {
+            continue;
+        }
+        double beyond = fmax(e->range.has_low ? e->range.low - value : -INFINITY,
+                             e->range.has_high ? value - e->range.high : -INFINITY);
+        if (beyond > LWI_LIMIT_SLACK) {
+            bool cone = e->part >= LW_PART_CONE;
+            *limit = (lw_limit){.of = e->of, .index = e->index, .part = e->part, .value = value,
+                                .range = e->range, .over = beyond};
+            if (cone) { /* told as an angle */
+                limit->value = acos(fmin(fmax(value, -1.0), 1.0));
+                limit->range = (lw_range){.has_high = true, .high = acos(e->range.low)};
+                limit->over = limit->value - limit->range.high;
             }
+            memcpy(y, z, b->n_dir * sizeof *y);
+            return sqrt(size);
         }
     }
     return INFINITY;
@@ -419,26 +470,25 @@ static double confirmed(double *y, lw_limit *limit, const lw_model *m, const lwi
 
 static void nearest_limit(lw_distance_side *out, const lw_model *m, lw_work *work)
 {
-    enum { TRIES = 6 };
+    enum { TRIES = 10 };
     lwi_distance_work *w = work->distance_work;
     double best[LWI_BALL_DIRS] = {0};
     double most = INFINITY;
-    double tried = -1.0;
     for (int t = 0; t < TRIES; t++) {
         /* the next by what its slope alone says */
         size_t pick = SIZE_MAX;
         double least = INFINITY;
         for (size_t i = 0; i < w->n_entry; i++) {
             double far = room_of(&w->entry[i]) / w->entry[i].steep;
-            if (far > tried && far < least) {
+            if (!w->entry[i].tried && far < least) {
                 least = far;
                 pick = i;
             }
         }
-        if (pick == SIZE_MAX || least > 1.5 * most) {
+        if (pick == SIZE_MAX || least > 2.0 * most) {
             break;
         }
-        tried = least;
+        w->entry[pick].tried = true;
         const lwi_limit_entry *e = &w->entry[pick];
         double y[LWI_BALL_DIRS];
         lw_limit limit;

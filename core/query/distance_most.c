@@ -106,6 +106,22 @@ static bool solve_small(double *a, double *x, size_t n)
     return true;
 }
 
+double lwi_pace_stride(lwi_pace *p, const double *step, size_t n)
+{
+    double top = 0.0;
+    double bottom = 0.0;
+    for (size_t k = 0; k < n && p->known; k++) {
+        double change = step[k] - p->last[k];
+        top += p->last[k] * change;
+        bottom += change * change;
+    }
+    p->share = p->known && bottom > 0.0 ? -p->share * top / bottom : 1.0;
+    p->share = fmin(fmax(p->share, 0.15), 3.0);
+    p->known = true;
+    memcpy(p->last, step, n * sizeof *step);
+    return p->share;
+}
+
 typedef struct iterate {
     size_t n, m, q;
     double sigma, top;
@@ -191,37 +207,12 @@ static bool nearest(double *y_new, const iterate *it, const double *y, size_t n_
     return true;
 }
 
-/* The iteration converges by a factor of distance times curvature, which may be near one or beyond:
- * steps are stretched or shortened by what two of them in a row tell (Aitken's method for vectors;
- * Irons & Tuck 1969, from memory). */
-typedef struct pace {
-    double share;
-    bool known;
-    double last[LWI_BALL_DIRS];
-} pace;
-
-static double stride(pace *p, const double *step, size_t n)
-{
-    double top = 0.0;
-    double bottom = 0.0;
-    for (size_t k = 0; k < n && p->known; k++) {
-        double change = step[k] - p->last[k];
-        top += p->last[k] * change;
-        bottom += change * change;
-    }
-    p->share = p->known && bottom > 0.0 ? -p->share * top / bottom : 1.0;
-    p->share = fmin(fmax(p->share, 0.15), 3.0);
-    p->known = true;
-    memcpy(p->last, step, n * sizeof *step);
-    return p->share;
-}
-
 /* One start; y holds it and then where the iteration ended. */
 static bool descend(double *y, const lwi_ball *b, lwi_ball_local *l, double most)
 {
     iterate it;
     iterate next;
-    pace own = {.known = false};
+    lwi_pace own = {.known = false};
     double weight = 0.0;
     if (!evaluate(&it, b, l, y)) {
         return false;
@@ -250,7 +241,7 @@ static bool descend(double *y, const lwi_ball *b, lwi_ball_local *l, double most
         }
         weight = fmax(weight, 2.0 * far / sqrt(steep + 1e-300));
         slope -= weight * it.sigma;
-        double share = fmin(stride(&own, way, b->n_dir), 0.7 * b->length_m / step);
+        double share = fmin(lwi_pace_stride(&own, way, b->n_dir), 0.7 * b->length_m / step);
         double merit = 0.5 * far * far + weight * it.sigma;
         bool moved = false;
         for (int half = 0; half < 10 && !moved; half++, share *= 0.5) {
@@ -473,7 +464,7 @@ static double gap_of(double grows[3], const lwi_ball_rod *rod, const lwi_rod_at 
 static bool dead_point(double *y, const lwi_ball *b, lwi_rod_at *at, size_t i, double sign)
 {
     const lwi_ball_rod *rod = &b->rod[i];
-    pace own = {.known = false};
+    lwi_pace own = {.known = false};
     memset(y, 0, LWI_BALL_DIRS * sizeof *y);
     for (int s = 0; s < STEPS; s++) {
         double grows[3];
@@ -501,7 +492,7 @@ static bool dead_point(double *y, const lwi_ball *b, lwi_rod_at *at, size_t i, d
         }
         step = sqrt(step);
         bool close = step < CLOSE * b->length_m;
-        double share = close ? 1.0 : fmin(stride(&own, slope, b->n_dir), 0.7 * b->length_m / step);
+        double share = close ? 1.0 : fmin(lwi_pace_stride(&own, slope, b->n_dir), 0.7 * b->length_m / step);
         for (size_t k = 0; k < b->n_dir; k++) {
             y[k] += share * slope[k];
         }
