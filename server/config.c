@@ -237,6 +237,7 @@ static bool action_option(lwd_config *config, int argc, char **argv, int *i, con
                    {"-h", LWD_ACTION_HELP},
                    {"--version", LWD_ACTION_VERSION},
                    {"--quick-check", LWD_ACTION_QUICK_CHECK},
+                   {"--backup", LWD_ACTION_BACKUP},
                    {"--make-token", LWD_ACTION_MAKE_TOKEN}};
 
     for (size_t k = 0; k < sizeof actions / sizeof actions[0]; k++) {
@@ -244,6 +245,13 @@ static bool action_option(lwd_config *config, int argc, char **argv, int *i, con
             continue;
         }
         config->action = actions[k].action;
+        if (config->action == LWD_ACTION_BACKUP) {
+            if (*i + 1 >= argc || argv[*i + 1][0] == '\0' || argv[*i + 1][0] == '-') {
+                *wrong = "--backup: needs the file to write, such as: --backup copy.sqlite";
+                return true;
+            }
+            config->backup_file = argv[++*i];
+        }
         if (config->action == LWD_ACTION_MAKE_TOKEN) {
             if (*i + 2 >= argc) {
                 *wrong = "--make-token: needs a name and a role, such as: --make-token plc query";
@@ -359,6 +367,8 @@ void lwd_config_help(FILE *out)
         "                                         serve the network, to holders of a token\n"
         "  leewayd --quick-check --data DIR ...   try everything a start needs, then leave:\n"
         "                                         exit status 0 if it would start\n"
+        "  leewayd --backup FILE --data DIR       copy the catalog to FILE, checked, also while a\n"
+        "                                         daemon serves it, then leave\n"
         "  leewayd --make-token NAME ROLE         print a new token, and the line to add to the\n"
         "                                         token file; roles: query, author, admin\n"
         "\n"

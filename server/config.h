@@ -21,7 +21,8 @@ typedef enum lwd_action {
     LWD_ACTION_HELP,
     LWD_ACTION_VERSION,
     LWD_ACTION_MAKE_TOKEN,
-    LWD_ACTION_QUICK_CHECK
+    LWD_ACTION_QUICK_CHECK,
+    LWD_ACTION_BACKUP
 } lwd_action;
 
 typedef struct lwd_config {
@@ -35,6 +36,7 @@ typedef struct lwd_config {
     lwd_log_level log_level;
     lwd_http_options http;
     unsigned prepare_paths; /* 0: the default */
+    const char *backup_file; /* of --backup; from argv */
     const char *token_name; /* of --make-token; from argv */
     const char *token_role;
 } lwd_config;

@@ -55,6 +55,17 @@ static int make_token(const lwd_config *config)
     return status;
 }
 
+static int make_backup(const lwd_config *config)
+{
+    char why[WHY_SIZE];
+
+    if (!lwd_app_backup(config->data_dir, config->backup_file, why, sizeof why)) {
+        return complain(EXIT_FAILURE, why);
+    }
+    printf("leewayd: %s holds a checked copy of the catalog\n", config->backup_file);
+    return EXIT_SUCCESS;
+}
+
 /* Many connections and the catalog need more descriptors than some shells allow. */
 static void raise_descriptors(const lwd_config *config)
 {
@@ -303,6 +314,9 @@ int main(int argc, char **argv)
             break;
         case LWD_ACTION_MAKE_TOKEN:
             status = make_token(&d.config);
+            break;
+        case LWD_ACTION_BACKUP:
+            status = make_backup(&d.config);
             break;
         default:
             status = run(&d);

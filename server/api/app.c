@@ -85,6 +85,16 @@ void lwd_app_stop(lwd_app *app)
     free(app);
 }
 
+bool lwd_app_backup(const char *data_dir, const char *file, char *why, size_t why_size)
+{
+    lwd_catalog_error err;
+    if (lwd_catalog_backup_of(data_dir, file, &err) == LWD_CATALOG_OK) {
+        return true;
+    }
+    (void)snprintf(why, why_size, "%s", err.why);
+    return false;
+}
+
 static bool open_catalog(lwd_app *app, const char *dir, char *why, size_t why_size)
 {
     lwd_catalog_error err;

@@ -23,6 +23,9 @@ lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_siz
  * meanwhile. Ends early when `stop` says so. */
 void lwd_app_load(lwd_app *app, bool (*stop)(void));
 
+/* Without an app: a checked copy of the catalog in a data directory, beside whatever serves it. */
+bool lwd_app_backup(const char *data_dir, const char *file, char *why, size_t why_size);
+
 /* The routes; static, valid for ever. Handlers are called with the lwd_app as their context. */
 const lwd_route *lwd_app_routes(size_t *n);
 

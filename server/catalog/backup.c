@@ -7,6 +7,7 @@
 #include <errno.h>
 #include <fcntl.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 #include <sys/stat.h>
 #include <unistd.h>
@@ -124,6 +125,32 @@ lwd_catalog_result lwd_catalog_backup(lwd_catalog *c, const char *path, lwd_cata
     }
     result = flush(n.directory, O_RDONLY | O_DIRECTORY, err);
     return result == LWD_CATALOG_OK ? lwd_catalog_succeed(err) : result;
+}
+
+lwd_catalog_result lwd_catalog_backup_of(const char *dir, const char *path,
+                                         lwd_catalog_error *err)
+{
+    static const char file[] = "/catalog.sqlite";
+    struct stat own;
+    lwd_catalog *c = calloc(1, sizeof *c); /* its path is all that a backup looks at */
+    if (!c)
+        return lwd_catalog_fail(err, LWD_CATALOG_MEMORY, "no memory for the backup");
+    lwd_catalog_result result = LWD_CATALOG_OK;
+    if (strlen(dir) + 32 > sizeof c->path)
+        result = lwd_catalog_fail(err, LWD_CATALOG_ARGUMENT,
+                                  "the name of the data directory is too long");
+    else
+        (void)snprintf(c->path, sizeof c->path, "%s%s", dir, file);
+    if (result == LWD_CATALOG_OK && stat(c->path, &own) != 0)
+        result = lwd_catalog_fail(err,
+                                  errno == ENOENT || errno == ENOTDIR ? LWD_CATALOG_NOT_FOUND
+                                                                      : LWD_CATALOG_STORAGE,
+                                  "there is no catalog to copy: %.120s: %s", c->path,
+                                  strerror(errno));
+    if (result == LWD_CATALOG_OK)
+        result = lwd_catalog_backup(c, path, err);
+    free(c);
+    return result;
 }
 
 lwd_catalog_result lwd_catalog_verify(lwd_catalog *c, bool thorough, lwd_catalog_error *err)

@@ -307,6 +307,11 @@ uint64_t lwd_catalog_changes(const lwd_catalog *catalog);
 lwd_catalog_result lwd_catalog_backup(lwd_catalog *catalog, const char *path,
                                       lwd_catalog_error *err);
 
+/* The same for the catalog in a data directory that another process may be serving, or none: takes
+ * no lock, changes nothing. NOT_FOUND where the directory holds no catalog. */
+lwd_catalog_result lwd_catalog_backup_of(const char *dir, const char *path,
+                                         lwd_catalog_error *err);
+
 /* Verifies the file; `thorough` also compares every index with its table. */
 lwd_catalog_result lwd_catalog_verify(lwd_catalog *catalog, bool thorough, lwd_catalog_error *err);
 

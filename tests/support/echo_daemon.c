@@ -235,6 +235,14 @@ void lwd_app_load(lwd_app *app, bool (*stop)(void))
     (void)stop();
 }
 
+bool lwd_app_backup(const char *data_dir, const char *file, char *why, size_t why_size)
+{
+    (void)data_dir;
+    (void)file;
+    (void)snprintf(why, why_size, "this daemon has no catalog");
+    return false;
+}
+
 const lwd_route *lwd_app_routes(size_t *n)
 {
     *n = sizeof routes / sizeof routes[0];
