@@ -29,8 +29,8 @@ static void check_mobility(lw_model *m)
     r->redundancy_kinematic = mobility - outputs;
     if (outputs > mobility) {
         lwi_find(r, LW_ERROR, "outputs-exceed-mobility", "/outputs", expected, got,
-                 "%d outputs are declared, but the mechanism has only %d freedoms.", outputs,
-                 mobility);
+                 "%d outputs are declared, but the mechanism has only %d freedom%s.", outputs,
+                 mobility, mobility == 1 ? "" : "s");
     } else if (outputs < mobility) {
         lwi_find(r, LW_WARNING, "kinematically-redundant", "/outputs", expected, got,
                  "The mechanism is kinematically redundant by %d: a tool pose leaves it free to "
@@ -132,12 +132,12 @@ static void check_ranks(lw_model *m, lwi_samples *s, lw_work *work)
     if (drive_rank < m->mobility) {
         lwi_find(r, LW_WARNING, "drives-do-not-hold", "/drives", expected, got,
                  "With all %zu drives locked the mechanism can still move: they hold only %zu of "
-                 "%zu freedoms.",
-                 m->spec->n_drive, drive_rank, m->mobility);
+                 "%zu freedom%s.",
+                 m->spec->n_drive, drive_rank, m->mobility, m->mobility == 1 ? "" : "s");
     } else if (m->spec->n_drive > m->mobility) {
         lwi_find(r, LW_NOTE, "drives-to-spare", "/drives", NULL, NULL,
-                 "%zu drives for %zu freedoms: redundantly driven by %zu.", m->spec->n_drive,
-                 m->mobility, m->spec->n_drive - m->mobility);
+                 "%zu drives for %zu freedom%s: redundantly driven by %zu.", m->spec->n_drive,
+                 m->mobility, m->mobility == 1 ? "" : "s", m->spec->n_drive - m->mobility);
     }
 }
 
@@ -281,6 +281,13 @@ static double pose_gap(const lw_pose_ask *pose, const lw_frame *tool, double *an
     return sqrt(gap);
 }
 
+/* What a check may be off by: its own figure, else the tolerance needed, else nothing but rounding
+ * (1e-6 m or rad). */
+static double allowed(const lw_figure *own, const lw_figure *needed)
+{
+    return own->asked ? own->value : needed->asked ? needed->value : 1e-6;
+}
+
 static void check_checks(lw_model *m, lw_work *work)
 {
     char where[96];
@@ -298,8 +305,8 @@ static void check_checks(lw_model *m, lw_work *work)
         }
         double angle;
         double gap = pose_gap(&check->pose, &p->solution->tool, &angle);
-        double allow = check->within_position_m.asked ? check->within_position_m.value : 1e-6;
-        double allow_angle = check->within_angle_rad.asked ? check->within_angle_rad.value : 1e-6;
+        double allow = allowed(&check->within_position_m, &m->spec->needs.position_tolerance_m);
+        double allow_angle = allowed(&check->within_angle_rad, &m->spec->needs.angle_tolerance_rad);
         if (!(gap <= allow) || !(angle <= allow_angle)) {
             lwi_find(&m->report, LW_WARNING, "check-missed", where, NULL, NULL,
                      "The model puts the tool %.4g mm and %.4g deg from the pose measured here.",

@@ -296,8 +296,8 @@ static lw_code missing_readings(const lw_model *m, const lw_posture_ask *ask, lw
     }
     if (n < m->mobility) {
         return LW_FAIL(err, LW_E_POSTURE, "/drives",
-                       "%zu readings given, at least %zu are needed to determine the posture", n,
-                       m->mobility);
+                       "%zu reading%s given, at least %zu %s needed to determine the posture", n,
+                       n == 1 ? "" : "s", m->mobility, m->mobility == 1 ? "is" : "are");
     }
     return LW_OK;
 }

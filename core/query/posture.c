@@ -114,7 +114,8 @@ static lw_code by_joints(lw_posture_answer *a, lw_solution *sol, const lw_model 
     }
     if (info.free_left > 0 && kept == n) {
         return LW_FAIL(err, LW_E_POSTURE, "/joints",
-                       "the values leave %zu freedoms open: give more joints", info.free_left);
+                       "the values leave %zu freedom%s open: give more joints", info.free_left,
+                       info.free_left == 1 ? "" : "s");
     }
     a->solution = sol;
     return LW_OK;

@@ -78,6 +78,30 @@ static void fail_findings(const lwd_request *request, lwd_reply *out, const lwd_
     }
 }
 
+/* Writes the place of a core's refusal as the question has it. The core knows postures only; a bare
+ * pose may have been written as "near", and then its members stand there without "pose" between. */
+static void put_place(char *out, size_t size, const lwd_reader *question, const char *where)
+{
+    static const char *const nears[] = {"/near/pose", "/from/near/pose"};
+    lwd_reader from;
+    lwd_reader near;
+    lwd_reader pose;
+    for (size_t i = 0; i < sizeof nears / sizeof nears[0]; i++) {
+        size_t n = strlen(nears[i]);
+        if (strncmp(where, nears[i], n) != 0 || (where[n] != '\0' && where[n] != '/')) {
+            continue;
+        }
+        bool is_near = i == 0 ? lwd_find(question, "near", &near)
+                              : lwd_find(question, "from", &from)
+                                    && lwd_find(&from, "near", &near);
+        if (is_near && !lwd_find(&near, "pose", &pose)) {
+            (void)snprintf(out, size, "%.*s%s", (int)(n - strlen("/pose")), where, where + n);
+            return;
+        }
+    }
+    (void)snprintf(out, size, "%s", where);
+}
+
 /* The core's refusal of a question, its place put behind that of the question. */
 static void fail_core(const lwd_request *request, lwd_reply *out, const lwd_question_parts *parts,
                       const lw_err *err)
@@ -87,7 +111,7 @@ static void fail_core(const lwd_request *request, lwd_reply *out, const lwd_ques
     if (parts != NULL) {
         lwd_reader_pointer(&parts->self, pointer);
         size_t n = strlen(pointer);
-        (void)snprintf(pointer + n, sizeof pointer - n, "%s", err->where);
+        put_place(pointer + n, sizeof pointer - n, &parts->self, err->where);
     }
     if (err->code == LW_E_MEMORY) {
         lwd_fail_memory(out, request);

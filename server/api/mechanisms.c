@@ -78,12 +78,21 @@ void lwd_get_mechanism(void *context, const lwd_request *request, lwd_reply *rep
 {
     lwd_catalog_mechanism row;
     lwd_json json;
+    char tag[64];
     if (!lwd_query_members(reply, request, NULL, NULL, 0)
         || !row_of(context, request, reply, &row)) {
         return;
     }
+    /* The row changes with the state and with each new draft. It is no tag for If-Match: that one
+     * is the tag of /state. */
+    (void)snprintf(tag, sizeof tag, "mechanism-%lld-%lld", (long long)row.tag,
+                   (long long)row.revisions);
+    if (lwd_not_modified(reply, request, tag)) {
+        return;
+    }
     lwd_reply_open(reply, &json, 200);
     put_mechanism(&json, &row);
+    lwd_reply_etag(reply, tag);
     lwd_reply_close(reply, request, &json);
 }
 

@@ -36,6 +36,7 @@ lwd_problem_id lwd_problem_of_finding(const lwd_finding *finding)
         {"missing-member", LWD_PROBLEM_MEMBER_MISSING},
         {"wrong-type", LWD_PROBLEM_TYPE},            {"out-of-range", LWD_PROBLEM_RANGE},
         {"bad-name", LWD_PROBLEM_NAME},              {"unknown-name", LWD_PROBLEM_NO_NAME},
+        {"fixed-body", LWD_PROBLEM_QUESTION},
         {"too-many", LWD_PROBLEM_RANGE},             {"too-few", LWD_PROBLEM_RANGE},
         {"too-long", LWD_PROBLEM_RANGE},             {"no-posture", LWD_PROBLEM_POSTURE},
     };

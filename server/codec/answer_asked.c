@@ -178,6 +178,27 @@ static void put_posture(lwd_json *json, const lwd_answer_head *head,
     }
 }
 
+/* A tool that was written out in the question; a named one stands in "tool" of the answer. */
+static void put_tool(lwd_json *json, const lwd_answer_head *head)
+{
+    const lw_spec_tool *tool = &head->question->tool_written;
+    double quat[4];
+    lw_quat_from_rot(quat, tool->frame.rot);
+    lwd_json_put_object(json, "tool");
+    lwd_json_put_string(json, "name", tool->name);
+    lwd_json_put_string(json, "body", head->edge->spec->body[tool->body]);
+    lwd_json_put_array(json, "at");
+    for (size_t i = 0; i < 3; i++) {
+        lwd_json_number(json,
+                        lwd_tidy(lwd_length_out(head->question->units, tool->frame.pos_m[i])));
+    }
+    lwd_json_end(json);
+    lwd_json_put_object(json, "orientation");
+    put_quaternion(json, quat);
+    lwd_json_end(json);
+    lwd_json_end(json);
+}
+
 static void put_margin_min(lwd_json *json, const lwd_question *q)
 {
     if (q->margin_min_is_number) {
@@ -198,6 +219,9 @@ void lwd_answer_asked(lwd_json *json, const lwd_answer_head *head)
     const lwd_question *q = head->question;
     lwd_json_put_object(json, "asked");
     put_posture(json, head, &q->posture);
+    if (q->tool_is_written) {
+        put_tool(json, head);
+    }
     if (q->kind == LWD_ASK_REACH && q->any_mode) {
         lwd_json_put_string(json, "mode", "any");
     }

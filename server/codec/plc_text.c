@@ -2,6 +2,7 @@
 /* The verdict of reach for a PLC: key=value lines in a fixed order, plain decimals, at most 255
  * bytes in all. Keys without a value are left out; a line that would not fit is left out whole, so
  * that no value is ever cut short. */
+#include <math.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -48,6 +49,26 @@ static int margin_shown(const lw_reach_answer *answer)
     return answer->failed_margin >= 0 ? answer->failed_margin : answer->margin->least;
 }
 
+/* How far a limit is overrun, as a share of its range; of the bound itself where the other side is
+ * open. Limits of different kinds are held against one another so. */
+static double overrun(const lw_limit *limit)
+{
+    const lw_range *range = &limit->range;
+    double width = range->has_low && range->has_high ? range->high - range->low
+                   : range->has_low                  ? fabs(range->low)
+                                                     : fabs(range->high);
+    return width > 0.0 ? limit->over / width : limit->over;
+}
+
+static const lw_limit *worst_limit(const lw_solution *solution)
+{
+    const lw_limit *worst = &solution->limit[0];
+    for (size_t i = 1; i < solution->n_limit && i < LW_MAX_LIMITS_BROKEN; i++) {
+        worst = overrun(&solution->limit[i]) > overrun(worst) ? &solution->limit[i] : worst;
+    }
+    return worst;
+}
+
 void lwd_plc_reach(lwd_buf *buf, const lwd_answer_head *head, const lw_reach_answer *answer)
 {
     const lwd_edge *edge = head->edge;
@@ -73,7 +94,7 @@ void lwd_plc_reach(lwd_buf *buf, const lwd_answer_head *head, const lw_reach_ans
         line_text(buf, room, "margin_of", lw_margin_word((lw_margin_name)shown));
     }
     if (solution != NULL && solution->n_limit > 0) {
-        const lw_limit *limit = &solution->limit[0];
+        const lw_limit *limit = worst_limit(solution);
         line_text(buf, room, "limit", lwd_limit_name(edge, limit));
         line_number(buf, room, "over", lwd_limit_over(edge, head->question->units, limit));
     }

@@ -269,6 +269,10 @@ static void read_tool_written(const lwd_reader *r, const lwd_edge *edge, lwd_que
         if (tool->body == SIZE_MAX) {
             LWD_TELL(&m[1], "unknown-name", "the name of a body", NULL,
                      "The mechanism has no body of this name.");
+        } else if (tool->body == edge->spec->frame) {
+            LWD_TELL(&m[1], "fixed-body", "the name of a moving body", NULL,
+                     "This body is the fixed one: a tool on it never moves. Name the body that "
+                     "carries the tool.");
         }
     }
     if (lwd_read_vec3(&m[2], LENGTH_MOST, at)) {

@@ -308,6 +308,26 @@ static bool begins(const char *text, const char *start)
     return strncmp(text, start, strlen(start)) == 0;
 }
 
+/* units.length and units.angle; read before all others, whose numbers are in them. No drive can
+ * have such a name: it has a point. */
+static void read_units(query *in, lwd_units *units)
+{
+    for (size_t i = 0; i < in->n; i++) {
+        const lwd_pair *at = &in->pair[i];
+        if (strcmp(at->name, "units.length") == 0) {
+            units->metres = strcmp(at->value, "m") == 0;
+            if (!units->metres && strcmp(at->value, "mm") != 0) {
+                tell(in, at, "bad-query", "mm or m", "units.length takes mm or m.");
+            }
+        } else if (strcmp(at->name, "units.angle") == 0) {
+            units->radians = strcmp(at->value, "rad") == 0;
+            if (!units->radians && strcmp(at->value, "deg") != 0) {
+                tell(in, at, "bad-query", "deg or rad", "units.angle takes deg or rad.");
+            }
+        }
+    }
+}
+
 /* The members read with the head. */
 static bool is_head(const char *name)
 {
@@ -316,7 +336,13 @@ static bool is_head(const char *name)
 
 static bool read_common(query *in, const lwd_pair *at, lwd_question *q)
 {
-    if (is_head(at->name)) {
+    if (is_head(at->name) || strcmp(at->name, "units.length") == 0
+        || strcmp(at->name, "units.angle") == 0) {
+        return true;
+    }
+    if (strcmp(at->name, "units") == 0 && lwd_edge_drive(in->edge, "units") == SIZE_MAX) {
+        tell(in, at, "bad-query", "units.length=mm or m, units.angle=deg or rad",
+             "In a query the units are written apart: units.length and units.angle.");
         return true;
     }
     if (strcmp(at->name, "tool") == 0) {
@@ -527,6 +553,7 @@ bool lwd_query_read(const lwd_pair *pairs, size_t n, const lwd_question_head *he
     lwd_question_clear(out, kind, head, edge);
     clear_posture(&out->posture);
     clear_posture(&out->from);
+    read_units(&in, &out->units);
     for (size_t i = 0; i < n; i++) {
         if (kind == LWD_ASK_REACH) {
             read_reach_member(&in, &pairs[i], out);

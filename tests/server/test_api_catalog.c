@@ -140,6 +140,78 @@ static void publishes_withdraws_and_tells_the_history(void **state)
     assert_string_equal(rig_text(r, "events/1/by"), "local");
 }
 
+/* The tag of a mechanism changes with its state and with each new draft, else it stays. */
+static void a_mechanism_has_a_tag(void **state)
+{
+    static const char path[] = "/v1/mechanisms/label-stage";
+    rig *r = *state;
+    char before[80];
+    rig_demo(r, "label-stage");
+    rig_wants(r, 200, rig_get(r, path));
+    (void)snprintf(before, sizeof before, "%s", rig_header(r, "ETag"));
+    r->if_none_match = before;
+    rig_wants(r, 304, rig_get(r, path));
+    assert_int_equal(r->reply.body.len, 0);
+    assert_string_equal(rig_header(r, "ETag"), before);
+    char *text = rig_file("deploy/demo/label-stage.json");
+    cJSON *document = cJSON_Parse(text);
+    free(text);
+    cJSON_DeleteItemFromObject(document, "notes");
+    cJSON_AddStringToObject(document, "notes", "another draft");
+    text = cJSON_PrintUnformatted(document);
+    cJSON_Delete(document);
+    r->if_none_match = NULL;
+    rig_wants(r, 201, rig_send(r, LWD_PUT, path, text));
+    free(text);
+    r->if_none_match = before;
+    rig_wants(r, 200, rig_get(r, path));
+    assert_string_not_equal(rig_header(r, "ETag"), before);
+    (void)snprintf(before, sizeof before, "%s", rig_header(r, "ETag"));
+    r->if_none_match = NULL;
+    rig_wants(r, 200, rig_post(r, "/v1/mechanisms/label-stage/revisions/1/withdraw", NULL));
+    r->if_none_match = before;
+    rig_wants(r, 200, rig_get(r, path));
+    r->if_none_match = NULL;
+}
+
+/* Whether a label-stage whose one check is off by `off` (mm in x) is found to miss it. */
+static bool check_missed(rig *r, double off, const char *within)
+{
+    char *text = rig_file("deploy/demo/label-stage.json");
+    cJSON *document = cJSON_Parse(text);
+    free(text);
+    rig_wants(r, 200, rig_post(r, "/v1/mechanisms/label-stage/forward",
+                               "{\"drives\":{\"m1\":90,\"m2\":180,\"m3\":270,\"m4\":0}}"));
+    char check[300];
+    (void)snprintf(check, sizeof check,
+                   "[{\"drives\":{\"m1\":90,\"m2\":180,\"m3\":270,\"m4\":0},"
+                   "\"pose\":{\"x\":%.17g,\"y\":%.17g,\"rz\":%.17g}%s}]",
+                   rig_number(r, "solutions/0/pose/x") + off, rig_number(r, "solutions/0/pose/y"),
+                   rig_number(r, "solutions/0/pose/rz"), within);
+    cJSON_DeleteItemFromObject(document, "checks");
+    cJSON_AddItemToObject(document, "checks", cJSON_Parse(check));
+    text = cJSON_PrintUnformatted(document);
+    cJSON_Delete(document);
+    int status = rig_send(r, LWD_PUT, "/v1/mechanisms/label-stage", text);
+    assert_true(status == 200 || status == 201);
+    bool missed = strstr(r->reply.body.data, "\"check-missed\"") != NULL;
+    free(text);
+    return missed;
+}
+
+/* label-stage needs 0.08 mm: what a check leaves open is held to that, an empty "within" too. */
+static void a_check_without_figures_is_held_to_the_needs(void **state)
+{
+    rig *r = *state;
+    rig_demo(r, "label-stage");
+    assert_false(check_missed(r, 0.07, ""));
+    assert_false(check_missed(r, 0.07, ",\"within\":{}"));
+    assert_true(check_missed(r, 0.09, ",\"within\":{}"));
+    assert_true(check_missed(r, 0.09, ""));
+    assert_true(check_missed(r, 0.07, ",\"within\":{\"position\":0.05}"));
+    assert_false(check_missed(r, 0.09, ",\"within\":{\"position\":0.2}"));
+}
+
 static void a_published_revision_takes_over_at_once(void **state)
 {
     rig *r = *state;
@@ -329,6 +401,8 @@ int main(void)
         CASE(refuses_a_document_with_a_fault_and_stores_nothing),
         CASE(honours_conditions_on_a_put),
         CASE(publishes_withdraws_and_tells_the_history),
+        CASE(a_mechanism_has_a_tag),
+        CASE(a_check_without_figures_is_held_to_the_needs),
         CASE(a_published_revision_takes_over_at_once),
         CASE(lists_in_pages),
         CASE(tells_what_changed_in_words_and_numbers),

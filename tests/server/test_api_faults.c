@@ -45,6 +45,7 @@ static const fault faults[] = {
     {"inverse", "{" POSE ",\"tool\":{\"body\":\"plate\"}}", 400, 1052, "/tool/at"},
     {"inverse", "{" POSE ",\"tool\":{\"body\":\"plat\",\"at\":[0,0,0]}}", 422, 1070, "/tool/body"},
     {"inverse", "{" POSE ",\"tool\":{\"body\":\"plate\",\"at\":[0,0]}}", 400, 1054, "/tool/at"},
+    {"inverse", "{" POSE ",\"tool\":{\"body\":\"bed\",\"at\":[0,0,0]}}", 422, 1071, "/tool/body"},
     {"inverse", "{" POSE ",\"tool\":3}", 400, 1053, "/tool"},
     /* poses */
     {"inverse", "{}", 400, 1052, "/pose"},
@@ -62,6 +63,9 @@ static const fault faults[] = {
     {"inverse", "{" POSE ",\"mode\":5}", 400, 1053, "/mode"},
     {"inverse", "{" POSE ",\"near\":{\"x\":\"a\"}}", 400, 1053, "/near/x"},
     {"inverse", "{" POSE ",\"near\":{}}", 422, 1072, "/near"},
+    {"inverse", "{" POSE ",\"near\":{\"x\":1}}", 422, 1072, "/near"},
+    {"inverse", "{" POSE ",\"near\":{\"pose\":{\"x\":1}}}", 422, 1072, "/near/pose"},
+    {"reach", "{" POSE ",\"from\":{" DRIVES ",\"near\":{\"y\":3}}}", 422, 1072, "/from/near"},
     /* members of other questions */
     {"inverse", "{" POSE "," DRIVES "}", 400, 1051, "/drives"},
     {"inverse", "{" POSE ",\"all\":true}", 400, 1051, "/all"},

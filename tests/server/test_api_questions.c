@@ -183,6 +183,21 @@ static void a_tool_may_be_written_out(void **state)
                        "\"mode\":\"++++\",\"tool\":{\"body\":\"plate\",\"at\":[10,0,0]}}"));
     assert_string_equal(rig_text(r, "tool"), "written");
     lwt_near(rig_number(r, "solutions/0/drives/m1"), m1, 1e-9);
+    /* It is said back, in the units of the question. */
+    assert_string_equal(rig_text(r, "asked/tool/name"), "written");
+    assert_string_equal(rig_text(r, "asked/tool/body"), "plate");
+    lwt_same(rig_number(r, "asked/tool/at/0"), 10.0);
+    lwt_same(rig_number(r, "asked/tool/orientation/quaternion/w"), 1.0);
+    rig_wants(r, 200,
+              rig_post(r, STAGE "inverse",
+                       "{\"pose\":{\"x\":0.015,\"y\":-0.01,\"rz\":6},\"units\":{\"length\":\"m\"},"
+                       "\"tool\":{\"name\":\"pen\",\"body\":\"plate\",\"at\":[0.01,0,0.002],"
+                       "\"orientation\":{\"zyx\":{\"yaw\":180}}}}"));
+    assert_string_equal(rig_text(r, "asked/tool/name"), "pen");
+    lwt_same(rig_number(r, "asked/tool/at/2"), 0.002);
+    lwt_near(rig_number(r, "asked/tool/orientation/quaternion/z"), 1.0, 1e-15);
+    rig_wants(r, 200, rig_post(r, STAGE "inverse", "{\"pose\":{\"x\":15,\"y\":-10,\"rz\":6}}"));
+    assert_null(rig_at(r, "asked/tool"));
 }
 
 static void a_batch_keeps_its_order_and_one_bad_member_spoils_no_other(void **state)
@@ -285,6 +300,11 @@ static void a_query_string_asks_the_same_as_a_body(void **state)
          "{\"pose\":{\"x\":15,\"y\":-10,\"rz\":6},\"mode\":\"any\"}"},
         {TURNER "reach", "x=20&y=-15&z=420&joint.shaft=360",
          "{\"pose\":{\"x\":20,\"y\":-15,\"z\":420,\"joints\":{\"shaft\":360}}}"},
+        {STAGE "reach", "x=.015&y=-.01&rz=0.1&units.angle=rad&units.length=m",
+         "{\"pose\":{\"x\":0.015,\"y\":-0.01,\"rz\":0.1},"
+         "\"units\":{\"length\":\"m\",\"angle\":\"rad\"}}"},
+        {STAGE "margin", "m1=90&m2=180&m3=270&m4=0&units.length=m",
+         "{\"drives\":{\"m1\":90,\"m2\":180,\"m3\":270,\"m4\":0},\"units\":{\"length\":\"m\"}}"},
         {STAGE "margin", "m1=90&m2=180&m3=270&drive.m4=0",
          "{\"drives\":{\"m1\":90,\"m2\":180,\"m3\":270,\"m4\":0}}"},
     };
@@ -302,6 +322,47 @@ static void a_query_string_asks_the_same_as_a_body(void **state)
     }
     free(one);
     free(two);
+    rig_wants(r, 400, rig_get(r, STAGE "reach?x=15&y=-10&rz=6&units=m"));
+    rig_problem(r, 400, 1055, "/units");
+    rig_wants(r, 400, rig_get(r, STAGE "reach?x=15&y=-10&rz=6&units.length=inch"));
+    rig_problem(r, 400, 1055, "/units.length");
+    rig_wants(r, 400, rig_get(r, STAGE "margin?m1=90&units.angle=grad"));
+    rig_problem(r, 400, 1055, "/units.angle");
+}
+
+/* Of several limits broken the PLC sees the one furthest over, as a share of its range. */
+static void the_plc_sees_the_worst_limit(void **state)
+{
+    static const char query[] = TURNER "reach?x=-47&y=64&z=553&joint.shaft=264";
+    rig *r = *state;
+    rig_wants(r, 200, rig_get(r, query));
+    const cJSON *limit = rig_at(r, "solution/limits_broken");
+    char worst[64] = "";
+    double over = 0.0;
+    double most = 0.0;
+    assert_true(cJSON_GetArraySize(limit) >= 2);
+    for (int i = 0; i < cJSON_GetArraySize(limit); i++) {
+        const cJSON *one = cJSON_GetArrayItem(limit, i);
+        const cJSON *range = cJSON_GetObjectItem(one, "range");
+        double by = cJSON_GetObjectItem(one, "over")->valuedouble;
+        double share = by
+                       / (cJSON_GetArrayItem(range, 1)->valuedouble
+                          - cJSON_GetArrayItem(range, 0)->valuedouble);
+        if (share > most) {
+            most = share;
+            (void)snprintf(worst, sizeof worst, "limit=%s\n",
+                           cJSON_GetObjectItem(one, "name")->valuestring);
+            over = by;
+        }
+    }
+    /* Else the first would do as well, and this check could not fail. */
+    const cJSON *first = cJSON_GetObjectItem(cJSON_GetArrayItem(limit, 0), "name");
+    assert_null(strstr(worst, first->valuestring));
+    r->accept = "text/plain";
+    rig_wants(r, 200, rig_get(r, query));
+    r->accept = NULL;
+    lwt_holds(r->reply.body.data, worst);
+    lwt_near(strtod(strstr(r->reply.body.data, "over=") + 5, NULL), over, 1e-6);
 }
 
 static void a_blank_in_a_mode_is_a_plus(void **state)
@@ -537,6 +598,7 @@ int main(void)
         cmocka_unit_test(a_query_string_asks_the_same_as_a_body),
         cmocka_unit_test(a_blank_in_a_mode_is_a_plus),
         cmocka_unit_test(a_move_is_not_a_yes),
+        cmocka_unit_test(the_plc_sees_the_worst_limit),
         cmocka_unit_test(the_plc_gets_short_lines_in_a_fixed_order),
         cmocka_unit_test(slow_requests_leave_the_event_thread),
         cmocka_unit_test(the_matrices_fit_their_names_and_units),
