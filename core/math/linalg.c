@@ -244,6 +244,33 @@ static void svd_tall(double *a, size_t rows, size_t cols, size_t ld, double *sv,
     }
 }
 
+/* One Jacobi rotation of two rows. True if it turned. */
+static inline bool turn_rows(double *x, double *y, size_t n)
+{
+    double app = 0.0;
+    double aqq = 0.0;
+    double apq = 0.0;
+    for (size_t i = 0; i < n; i++) {
+        app += x[i] * x[i];
+        aqq += y[i] * y[i];
+        apq += x[i] * y[i];
+    }
+    if (!(fabs(apq) > 1e-15 * sqrt(app * aqq)) || !(fabs(apq) > 1e-290)) {
+        return false;
+    }
+    double zeta = (aqq - app) / (2.0 * apq);
+    double t = (zeta >= 0.0 ? 1.0 : -1.0) / (fabs(zeta) + sqrt(1.0 + zeta * zeta));
+    double c = 1.0 / sqrt(1.0 + t * t);
+    double s = c * t;
+    for (size_t i = 0; i < n; i++) {
+        double xi = x[i];
+        double yi = y[i];
+        x[i] = c * xi - s * yi;
+        y[i] = s * xi + c * yi;
+    }
+    return true;
+}
+
 void lwi_svd(double *a, size_t rows, size_t cols, size_t ld, double *sv, double *v)
 {
     if (rows >= cols && v == NULL && cols <= SVD_FACTOR_MAX) {
@@ -261,33 +288,19 @@ void lwi_svd(double *a, size_t rows, size_t cols, size_t ld, double *sv, double 
         return;
     }
     /* Wide: rotate rows instead, which is the tall case of the transpose done in place. */
+    /* Pairs of a round have no row in common, so that the processor may turn them at once (round
+     * robin, Brent & Luk 1985). */
+    size_t n = rows + rows % 2;
     for (int sweep = 0; sweep < 30; sweep++) {
         bool turned = false;
-        for (size_t p = 0; p + 1 < rows; p++) {
-            for (size_t q = p + 1; q < rows; q++) {
-                double app = 0.0;
-                double aqq = 0.0;
-                double apq = 0.0;
-                double *x = a + p * ld;
-                double *y = a + q * ld;
-                for (size_t i = 0; i < cols; i++) {
-                    app += x[i] * x[i];
-                    aqq += y[i] * y[i];
-                    apq += x[i] * y[i];
-                }
-                if (!(fabs(apq) > 1e-15 * sqrt(app * aqq)) || !(fabs(apq) > 1e-290)) {
-                    continue;
-                }
-                turned = true;
-                double zeta = (aqq - app) / (2.0 * apq);
-                double t = (zeta >= 0.0 ? 1.0 : -1.0) / (fabs(zeta) + sqrt(1.0 + zeta * zeta));
-                double c = 1.0 / sqrt(1.0 + t * t);
-                double s = c * t;
-                for (size_t i = 0; i < cols; i++) {
-                    double xi = x[i];
-                    double yi = y[i];
-                    x[i] = c * xi - s * yi;
-                    y[i] = s * xi + c * yi;
+        for (size_t round = 0; round + 1 < n; round++) {
+            for (size_t i = 0; i < n / 2; i++) {
+                size_t p = i == 0 ? n - 1 : round + i;
+                size_t q = round + n - 1 - i;
+                p -= i > 0 && p >= n - 1 ? n - 1 : 0;
+                q -= q >= n - 1 ? n - 1 : 0;
+                if (p < rows && q < rows) {
+                    turned |= turn_rows(a + (p < q ? p : q) * ld, a + (p < q ? q : p) * ld, cols);
                 }
             }
         }
