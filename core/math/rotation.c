@@ -176,6 +176,27 @@ void lw_zyx_from_rot(double zyx_rad[3], const double r[9])
     }
 }
 
+void lwi_zyx_axis(double axis[3], const double zyx_rad[3], size_t which)
+{
+    double cy = cos(zyx_rad[0]);
+    double sy = sin(zyx_rad[0]);
+    double cp = cos(zyx_rad[1]);
+    cp = fabs(cp) < 1e-9 ? (cp < 0.0 ? -1e-9 : 1e-9) : cp;
+    if (which == 0) {
+        axis[0] = cy * sin(zyx_rad[1]) / cp;
+        axis[1] = sy * sin(zyx_rad[1]) / cp;
+        axis[2] = 1.0;
+    } else if (which == 1) {
+        axis[0] = -sy;
+        axis[1] = cy;
+        axis[2] = 0.0;
+    } else {
+        axis[0] = cy / cp;
+        axis[1] = sy / cp;
+        axis[2] = 0.0;
+    }
+}
+
 void lw_rot_from_zyx(double rot[9], const double zyx_rad[3])
 {
     double cy = cos(zyx_rad[0]);

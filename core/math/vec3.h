@@ -150,6 +150,9 @@ void lwi_frame_turn(lw_frame *to, const lw_frame *from, const double u[3], const
 void lwi_rot_log(double out[3], const double r[9]);
 /* Angle of a rotation about unit axis u, (-pi, pi]; exact when the rotation is about u. */
 double lwi_rot_angle_about(const double r[9], const double u[3]);
+/* The turn that changes yaw (which = 0), pitch (1) or roll (2) alone: its product with an angular
+ * velocity is the rate of that angle. Large, not infinite, where the pitch is a right angle. */
+void lwi_zyx_axis(double axis[3], const double zyx_rad[3], size_t which);
 /* Quaternion product out = a b (w x y z); out may not alias. */
 void lwi_quat_mul(double out[4], const double a[4], const double b[4]);
 /* Cayley map of a small rotation vector: unit quaternion (1, d/2) normalised. */

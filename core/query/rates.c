@@ -23,23 +23,9 @@ static void through_k(double *out, const double *row, const lw_model *m, size_t 
 
 void lwi_output_axis(double rate[3], const double rot[9], lw_output_kind kind)
 {
-    double a[3];
-    lw_zyx_from_rot(a, rot);
-    double cp = cos(a[1]);
-    cp = fabs(cp) < 1e-9 ? (cp < 0.0 ? -1e-9 : 1e-9) : cp;
-    if (kind == LW_OUT_RZ) {
-        rate[0] = cos(a[0]) * sin(a[1]) / cp;
-        rate[1] = sin(a[0]) * sin(a[1]) / cp;
-        rate[2] = 1.0;
-    } else if (kind == LW_OUT_RY) {
-        rate[0] = -sin(a[0]);
-        rate[1] = cos(a[0]);
-        rate[2] = 0.0;
-    } else {
-        rate[0] = cos(a[0]) / cp;
-        rate[1] = sin(a[0]) / cp;
-        rate[2] = 0.0;
-    }
+    double zyx[3];
+    lw_zyx_from_rot(zyx, rot);
+    lwi_zyx_axis(rate, zyx, (size_t)LW_OUT_RZ - (size_t)kind);
 }
 
 static void output_rates(const lw_model *m, const lw_spec_tool *tool, lwi_rates *r, lw_work *work)

@@ -7,36 +7,6 @@
 #include "../math/tol.h"
 #include "../math/vec3.h"
 
-/* Yaw, pitch, roll of a rotation and the world rotation vectors that change each alone:
- * omega = yaw' z + pitch' y' + roll' x''. rate[i] . omega = rate of angle i. */
-static double zyx_value(double rate[3], const double rot[9], size_t which)
-{
-    double a[3];
-    lw_zyx_from_rot(a, rot);
-    double cy = cos(a[0]);
-    double sy = sin(a[0]);
-    double cp = cos(a[1]);
-    double tp = tan(a[1]);
-    if (fabs(cp) < 1e-9) {
-        cp = cp < 0.0 ? -1e-9 : 1e-9;
-        tp = sin(a[1]) / cp;
-    }
-    if (which == 0) {
-        rate[0] = cy * tp;
-        rate[1] = sy * tp;
-        rate[2] = 1.0;
-    } else if (which == 1) {
-        rate[0] = -sy;
-        rate[1] = cy;
-        rate[2] = 0.0;
-    } else {
-        rate[0] = cy / cp;
-        rate[1] = sy / cp;
-        rate[2] = 0.0;
-    }
-    return a[which];
-}
-
 static double wrap_pi(double x)
 {
     return x - 6.283185307179586476925 * round(x / 6.283185307179586476925);
@@ -67,7 +37,9 @@ static double goal_body(double f[3], double m[3], double p[3], const lwi_goal *g
     }
     case LWI_GOAL_ZYX:
         lwi_rot_mul(tool, x->rot, goal->rot0);
-        return wrap_pi(goal->value - zyx_value(m, tool, goal->axis));
+        lw_zyx_from_rot(v, tool);
+        lwi_zyx_axis(m, v, goal->axis);
+        return wrap_pi(goal->value - v[goal->axis]);
     default: {
         /* Direction: rotate z onto dir; components of the rotation across dir. */
         double e[2][3];
