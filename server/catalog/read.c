@@ -92,10 +92,40 @@ static lwd_catalog_result check_page(size_t cap, lwd_catalog_error *err)
     return LWD_CATALOG_OK;
 }
 
+/* Where the rows of a page go: at most cap items of a size, each by `take`, which says whether the
+ * row is sound. */
+typedef struct page_rows {
+    bool (*take)(void *item, sqlite3_stmt *s);
+    void *items;
+    size_t size, cap;
+} page_rows;
+
+/* Runs a statement that was told to give one row more than the page holds, and resets it. */
+static lwd_catalog_result read_page(lwd_catalog_reader *r, sqlite3_stmt *s, const page_rows *to,
+                                    size_t *n, bool *more, const char *doing,
+                                    lwd_catalog_error *err)
+{
+    lwd_catalog_result result = LWD_CATALOG_OK;
+    int rc = sqlite3_step(s);
+    for (; rc == SQLITE_ROW && !*more && result == LWD_CATALOG_OK; rc = sqlite3_step(s)) {
+        if (*n == to->cap)
+            *more = true;
+        else if (to->take((char *)to->items + *n * to->size, s))
+            ++*n;
+        else
+            result = bad_row(r, err);
+    }
+    if (result == LWD_CATALOG_OK && rc != SQLITE_ROW && rc != SQLITE_DONE)
+        result = lwd_catalog_fail_db(err, r->db, rc, doing);
+    lwd_catalog_reset(s);
+    return result;
+}
+
 /* ---- mechanisms ---- */
 
-static bool mechanism_row(lwd_catalog_mechanism *m, sqlite3_stmt *s)
+static bool mechanism_row(void *item, sqlite3_stmt *s)
 {
+    lwd_catalog_mechanism *m = item;
     *m = (lwd_catalog_mechanism){
         .created_ms = sqlite3_column_int64(s, 1),
         .tag = sqlite3_column_int64(s, 2),
@@ -126,18 +156,8 @@ lwd_catalog_result lwd_catalog_list_mechanisms(lwd_catalog *c, const char *after
     sqlite3_stmt *s = r->stmt[LWD_CATALOG_R_MECHANISMS];
     bind_name(s, 1, after ? after : "");
     (void)sqlite3_bind_int64(s, 2, (int64_t)cap + 1);
-    int rc = sqlite3_step(s);
-    for (; rc == SQLITE_ROW && !*more && result == LWD_CATALOG_OK; rc = sqlite3_step(s)) {
-        if (*n == cap)
-            *more = true;
-        else if (mechanism_row(&items[*n], s))
-            ++*n;
-        else
-            result = bad_row(r, err);
-    }
-    if (result == LWD_CATALOG_OK && rc != SQLITE_ROW && rc != SQLITE_DONE)
-        result = lwd_catalog_fail_db(err, r->db, rc, "list the mechanisms");
-    lwd_catalog_reset(s);
+    const page_rows rows = {mechanism_row, items, sizeof *items, cap};
+    result = read_page(r, s, &rows, n, more, "list the mechanisms", err);
     lwd_catalog_reader_give(c, r);
     return result == LWD_CATALOG_OK ? lwd_catalog_succeed(err) : result;
 }
@@ -214,8 +234,9 @@ static lwd_catalog_result explain(lwd_catalog_reader *r, const char *name, int64
     return lwd_catalog_fail(err, otherwise, "%s", lwd_catalog_result_text(otherwise));
 }
 
-static bool revision_row(lwd_catalog_revision_info *info, sqlite3_stmt *s)
+static bool revision_row(void *item, sqlite3_stmt *s)
 {
+    lwd_catalog_revision_info *info = item;
     *info = (lwd_catalog_revision_info){
         .number = sqlite3_column_int64(s, 0),
         .state = (lwd_catalog_state)sqlite3_column_int(s, 2),
@@ -244,18 +265,8 @@ lwd_catalog_result lwd_catalog_list_revisions(lwd_catalog *c, const char *name, 
     bind_name(s, 1, name);
     (void)sqlite3_bind_int64(s, 2, after);
     (void)sqlite3_bind_int64(s, 3, (int64_t)cap + 1);
-    int rc = sqlite3_step(s);
-    for (; rc == SQLITE_ROW && !*more && result == LWD_CATALOG_OK; rc = sqlite3_step(s)) {
-        if (*n == cap)
-            *more = true;
-        else if (revision_row(&items[*n], s))
-            ++*n;
-        else
-            result = bad_row(r, err);
-    }
-    if (result == LWD_CATALOG_OK && rc != SQLITE_ROW && rc != SQLITE_DONE)
-        result = lwd_catalog_fail_db(err, r->db, rc, "list the revisions");
-    lwd_catalog_reset(s);
+    const page_rows rows = {revision_row, items, sizeof *items, cap};
+    result = read_page(r, s, &rows, n, more, "list the revisions", err);
     lwd_catalog_mechanism m = {.revisions = 0};
     if (result == LWD_CATALOG_OK && *n == 0)
         result = get_mechanism(r, name, &m, err);
@@ -362,8 +373,9 @@ void lwd_catalog_revision_clear(lwd_catalog_revision *revision)
 
 /* ---- events ---- */
 
-static bool event_row(lwd_catalog_event *e, sqlite3_stmt *s)
+static bool event_row(void *item, sqlite3_stmt *s)
 {
+    lwd_catalog_event *e = item;
     char action[16];
     *e = (lwd_catalog_event){
         .serial = sqlite3_column_int64(s, 0),
@@ -397,18 +409,8 @@ lwd_catalog_result lwd_catalog_list_events(lwd_catalog *c, const char *name, int
     (void)sqlite3_bind_int64(s, 2, after);
     (void)sqlite3_bind_int64(s, 3, number);
     (void)sqlite3_bind_int64(s, 4, (int64_t)cap + 1);
-    int rc = sqlite3_step(s);
-    for (; rc == SQLITE_ROW && !*more && result == LWD_CATALOG_OK; rc = sqlite3_step(s)) {
-        if (*n == cap)
-            *more = true;
-        else if (event_row(&items[*n], s))
-            ++*n;
-        else
-            result = bad_row(r, err);
-    }
-    if (result == LWD_CATALOG_OK && rc != SQLITE_ROW && rc != SQLITE_DONE)
-        result = lwd_catalog_fail_db(err, r->db, rc, "list the events");
-    lwd_catalog_reset(s);
+    const page_rows rows = {event_row, items, sizeof *items, cap};
+    result = read_page(r, s, &rows, n, more, "list the events", err);
     lwd_catalog_mechanism m = {.revisions = 0};
     if (result == LWD_CATALOG_OK && *n == 0) {
         result = get_mechanism(r, name, &m, err);
