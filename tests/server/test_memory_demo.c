@@ -4,13 +4,11 @@
  * and leaves nothing behind (the leak checker watches); with memory there again the same call
  * succeeds. */
 #include "demo_model.h"
+#include "lwt_making.h"
 
 typedef struct loading {
     const char *text;
     size_t len;
-    const lw_spec *spec;
-    const lw_model *model;
-    lw_report *report;
     lwd_findings *findings;
     size_t good;
 } loading;
@@ -29,41 +27,6 @@ static void decode(void *context, size_t n)
     } else {
         assert_true(it->findings->no_memory);
         assert_true(lwt_alloc_failed());
-    }
-}
-
-static void build(void *context, size_t n)
-{
-    loading *it = context;
-    lw_err err = {.code = LW_OK};
-    lw_model *model = (lw_model *)context; /* anything but NULL */
-    (void)n;
-    lw_code code = lw_model_new(&model, it->spec, 7, it->report, &err);
-    if (code == LW_OK) {
-        it->good++;
-        lw_model_free(model);
-        return;
-    }
-    if (code != LW_E_MEMORY) {
-        lwt_fail("allocation %zu: %s, %s", n, lw_code_text(code), err.msg);
-    }
-    assert_int_equal(err.code, LW_E_MEMORY);
-    assert_null(model);
-}
-
-static void scratch(void *context, size_t n)
-{
-    loading *it = context;
-    lw_err err = {.code = LW_OK};
-    lw_work *work = (lw_work *)context;
-    (void)n;
-    lw_code code = lw_work_new(&work, it->model, &err);
-    if (code == LW_OK) {
-        it->good++;
-        lw_work_free(work);
-    } else {
-        assert_int_equal(code, LW_E_MEMORY);
-        assert_null(work);
     }
 }
 
@@ -87,9 +50,9 @@ static void building_without_memory_says_so(void **state)
     (void)state;
     for (size_t i = 0; i < LWT_DEMOS; i++) {
         lwd_document *document = lwt_demo_document(lwt_demo_name[i]);
-        loading it = {.spec = &document->spec, .report = calloc(1, sizeof *it.report)};
+        lwt_making it = {.spec = &document->spec, .report = calloc(1, sizeof *it.report)};
         assert_non_null(it.report);
-        assert_true(lwt_alloc_sweep(build, &it, 2000) > 5);
+        assert_true(lwt_alloc_sweep(lwt_make_model, &it, 2000) > 5);
         assert_true(it.good >= 1);
         free(it.report);
         lwd_document_free(document);
@@ -106,8 +69,8 @@ static void scratch_without_memory_says_so(void **state)
         lw_err err = {.code = LW_OK};
         assert_non_null(report);
         assert_int_equal(lw_model_new(&model, &document->spec, 7, report, &err), LW_OK);
-        loading it = {.model = model};
-        assert_true(lwt_alloc_sweep(scratch, &it, 500) > 10);
+        lwt_making it = {.model = model};
+        assert_true(lwt_alloc_sweep(lwt_make_work, &it, 500) > 10);
         assert_int_equal(it.good, 1);
         lw_model_free(model);
         free(report);
