@@ -118,6 +118,36 @@ static bool hold_of_rates(lwi_prove *p)
     return judge(p, a, spec->n_drive, m, false);
 }
 
+/* With more drives than freedoms these could hold a freedom gained at a constraint singularity, and
+ * the rates of the tool would not be all there are: the closure rows keep their rank. */
+static bool constraints_hold(lwi_prove *p, size_t drives)
+{
+    const lwi_system *whole = p->model->whole;
+    size_t n = whole->n_var;
+    size_t rank = p->model->rank;
+    double *qr = p->square;
+    if (drives == p->model->mobility || rank == 0) {
+        return true; /* a stack of full rank has no room for one */
+    }
+    for (size_t i = 0; i < whole->n_row; i++) {
+        p->perm[i] = i;
+        for (size_t j = 0; j < n; j++) {
+            qr[j * whole->n_row + i] = lwi_pm_value(p->big[2][i * n + j], 0.0);
+        }
+    }
+    if (whole->n_row > rank) {
+        (void)lwi_qrp(qr, n, whole->n_row, whole->n_row, p->tau, p->perm);
+    }
+    lwi_pm *a = p->big[1];
+    for (size_t i = 0; i < rank; i++) {
+        for (size_t j = 0; j < n; j++) {
+            a[j * rank + i] = p->big[2][p->perm[i] * n + j];
+        }
+    }
+    return lwi_rank_prepare(p->rank, a, n, rank, rank) &&
+           lwi_rank_at_least(p->rank, LWI_RANK_POSTURE * largest(a, n * rank));
+}
+
 /* Without closure rows and rods the drives see the joints through constants: judged once. */
 void lwi_hold_constant(lwi_prove *p)
 {
@@ -174,7 +204,8 @@ bool lwi_hold_model(lwi_prove *p)
     /* Along the freedoms the closure rows vanish: times anything they leave the hold as it is, and
      * the larger the factor the nearer the least singular value of the stack comes to it. */
     size_t rows = stack(p, asked ? 16.0 : 1.0);
-    bool held = judge(p, p->big[2], rows, whole->n_var, asked);
+    bool held = constraints_hold(p, p->model->spec->n_drive) &&
+                judge(p, p->big[2], rows, whole->n_var, asked);
     if (asked) {
         p->low[LW_MARGIN_HOLD] = p->hold;
     }

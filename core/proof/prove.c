@@ -203,6 +203,8 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, const lwi_prove *other
     size_t n = sys->n_var + 1;
     size_t most = sys->n_row > 48 ? sys->n_row : 48;
     most = sys->n_var > most ? sys->n_var : most;
+    most = m->whole->n_row > most ? m->whole->n_row : most;
+    most = m->whole->n_var > most ? m->whole->n_var : most;
     size_t side = m->whole->n_var > m->whole->n_row + m->spec->n_drive
                       ? m->whole->n_var
                       : m->whole->n_row + m->spec->n_drive;
