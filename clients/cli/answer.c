@@ -4,6 +4,7 @@
 
 #include <string.h>
 
+#include "answer_parts.h"
 #include "table.h"
 
 static const struct verdict {
@@ -166,6 +167,11 @@ static void show_limits(lwc_text *out, const cJSON *limits, size_t no)
         lwc_text_putc(out, '\n');
         lwc_text_clear(&line);
     }
+}
+
+void lwc_show_limits(lwc_text *out, const cJSON *limits)
+{
+    show_limits(out, limits, 0);
 }
 
 static void solution_row(cJSON *rows, const cJSON *solution, size_t no, bool named, bool pose)
@@ -458,7 +464,10 @@ static void show_head(lwc_text *out, const cJSON *answer)
         lwc_value_block(out, "ref", lwc_json_get(answer, "ref"), 0);
     }
     if (lwc_json_get(answer, "asked") != NULL) {
-        lwc_value_block(out, "asked", lwc_json_get(answer, "asked"), 0);
+        cJSON *asked = lwc_json_copy(lwc_json_get(answer, "asked"));
+        lwc_json_drop(asked, "through"); /* the moves have a table of their own */
+        lwc_value_block(out, "asked", asked, 0);
+        cJSON_Delete(asked);
     }
 }
 
@@ -473,9 +482,13 @@ static void show_verdict(lwc_text *out, const cJSON *answer, bool colour)
     outcome = outcome != NULL ? outcome : verdict(code)->outcome;
     lwc_text_safe(out, outcome, strlen(outcome));
     lwc_text_puts(out, colour ? "\x1b[0m" : "");
-    /* Only reach has thresholds; the other questions state how things are. */
+    /* Only some questions have thresholds; the others state how things are. */
+    bool proved = cJSON_IsArray(lwc_json_get(answer, "moves"));
     bool thresholds = code != 1 || lwc_json_get(answer, "checked") != NULL;
-    lwc_text_printf(out, ": %s\n", thresholds ? verdict(code)->meaning : "answered");
+    lwc_text_printf(out, ": %s\n",
+                    proved && code == 1 ? "every point of every move is proved clear"
+                    : thresholds        ? verdict(code)->meaning
+                                        : "answered");
     if (verdict(code)->next != NULL) {
         lwc_text_printf(out, "next          %s\n", verdict(code)->next);
     }
@@ -487,7 +500,7 @@ static bool is_shown_already(const char *name)
         "mechanism", "revision", "state",   "digest",    "tool",    "units",    "ref",
         "asked",     "served_at", "code",   "outcome",   "found",   "complete", "basis",
         "solutions", "margins",  "least",   "limits_broken", "solution", "posture",
-        "weakest_hold", "weakest_motion", "leave_by"};
+        "weakest_hold", "weakest_motion", "leave_by", "moves", "start", "along", "about"};
     for (size_t i = 0; i < sizeof SHOWN / sizeof SHOWN[0]; i++) {
         if (strcmp(name, SHOWN[i]) == 0) {
             return true;
@@ -539,6 +552,13 @@ static void show_one(lwc_text *out, const char *kind, const cJSON *answer, bool 
     }
     show_single(out, "solution", lwc_json_get(answer, "solution"));
     show_single(out, "posture", lwc_json_get(answer, "posture"));
+    show_single(out, "start", lwc_json_get(answer, "start"));
+    if (cJSON_IsArray(lwc_json_get(answer, "moves"))) {
+        lwc_show_path(out, answer);
+    }
+    if (cJSON_IsObject(lwc_json_get(answer, "along"))) {
+        lwc_show_travel(out, answer);
+    }
     if (cJSON_IsObject(lwc_json_get(answer, "margins"))) {
         show_margins(out, lwc_json_get(answer, "margins"), lwc_json_get(answer, "least"));
     }

@@ -15,6 +15,8 @@ typedef enum lwc_command {
     LWC_PUBLISH,
     LWC_WITHDRAW,
     LWC_ASK,
+    LWC_PATH,
+    LWC_TRAVEL,
     LWC_DIFFERENCE,
     LWC_HEALTH,
     LWC_ABOUT,
@@ -38,7 +40,7 @@ typedef struct lwc_args {
     /* publish, withdraw */
     const char *accept;
     const char *reason;
-    /* ask */
+    /* ask, path, travel */
     const char *mode;
     const char *tool;
     const char *revision; /* replay too */
@@ -52,10 +54,13 @@ typedef struct lwc_args {
     const char *point;
     const char *in;
     const char *budget;
+    const char *timeout_ms;
+    const char *reach; /* travel */
     const char *json_body;
     const char *record;
     bool all;
     bool distance;
+    bool certificate; /* path */
     bool ok_any;
     /* replay */
     const char *mechanism;

@@ -24,6 +24,8 @@ int lwc_cmd_difference(lwc_session *session);
 int lwc_cmd_health(lwc_session *session);
 int lwc_cmd_about(lwc_session *session);
 int lwc_cmd_ask(lwc_session *session);
+int lwc_cmd_path(lwc_session *session);
+int lwc_cmd_travel(lwc_session *session);
 int lwc_cmd_replay(lwc_session *session);
 
 /* ---- shared by the commands (talk.c) ---- */
@@ -53,6 +55,13 @@ bool lwc_word_count(const lwc_session *session, size_t least, size_t most, const
 /* False after a complaint. Sets 0 where `text` is NULL. */
 bool lwc_read_revision(const char *text, long *out);
 enum { LWC_REVISION_MAX = 1000000000 };
+
+/* ---- shared by ask and path (cmd_ask.c) ---- */
+
+/* Asks, shows the answer, records question and answer; the exit status. `body` is what is recorded,
+ * NULL: what the answer says was asked. */
+int lwc_ask_and_show(lwc_session *session, const char *kind, const char *path,
+                     const lwc_request *request, const cJSON *body);
 
 /* ---- help (help.c) ---- */
 int lwc_help(const char *command);

@@ -71,7 +71,7 @@ static bool is_left_out(const lwc_compare_rules *rules, const char *name)
 {
     /* What changes with time or revision without the machine's answer being another one. */
     static const char *const VOLATILE =
-        "served_at,digest,revision,state,request_id,instance,tag,iterations";
+        "served_at,digest,revision,state,request_id,instance,tag,iterations,boxes,cells";
     if (in_list(rules->check, name) || in_sources(rules, "check", name)) {
         return false;
     }
@@ -90,9 +90,9 @@ static lwc_unit_kind kind_of(const char *name, lwc_unit_kind outer)
          "mobility",
          LWC_COUNT},
         {"drives,joints,disagreement,allowed,readings", LWC_READING},
-        {"quaternion,direction,margins,least,margin", LWC_RATIO},
-        {"position,length,characteristic_length,distance,pose,point", LWC_LENGTH},
-        {"zyx,rotation_vector,angle,rz,rx,ry,yaw,pitch,roll", LWC_ANGLE},
+        {"quaternion,direction,margins,least,margin,at,open,proof", LWC_RATIO},
+        {"position,length,characteristic_length,distance,pose,point,along", LWC_LENGTH},
+        {"zyx,rotation_vector,angle,rz,rx,ry,yaw,pitch,roll,about,turn", LWC_ANGLE},
     };
     bool in_joints = outer == LWC_READING; /* a joint may bear any name */
     for (size_t i = 0; i < sizeof TABLE / sizeof TABLE[0] && !in_joints; i++) {

@@ -38,8 +38,8 @@ _leeway_files() {
 _leeway() {
   local cur=${COMP_WORDS[COMP_CWORD]}
   local previous=${COMP_WORDS[COMP_CWORD - 1]}
-  local commands="load list show report history publish withdraw ask difference health about
-    replay completion help"
+  local commands="load list show report history publish withdraw ask path travel difference health
+    about replay completion help"
   local everywhere="--server --token-file --timeout --json --help --version"
   local command="" kind="" i count=0 skip=0
   COMPREPLY=()
@@ -51,7 +51,7 @@ _leeway() {
       continue
     fi
     case ${COMP_WORDS[i]} in
-      --json | --help | --version | --all | --distance | --ok-any | --update | -h) ;;
+      --json | --help | --version | --all | --distance | --certificate | --ok-any | --update | -h) ;;
       --*) skip=1 ;;
       : | =) skip=1 ;;
       *)
@@ -87,7 +87,7 @@ _leeway() {
       return
       ;;
     --server | --timeout | --accept | --reason | --mode | --near | --from | --tool | --revision | \
-      --margin-min | --point | --budget | --ref | --expect | --check | --ignore | --tolerance)
+      --margin-min | --point | --budget | --timeout-ms | --reach | --ref | --expect | --check | --ignore | --tolerance)
       return
       ;;
   esac
@@ -106,8 +106,12 @@ _leeway() {
       publish) _leeway_words "--accept --reason $everywhere" ;;
       withdraw) _leeway_words "--reason $everywhere" ;;
       ask) _leeway_words "--mode --near --from --tool --revision --margin-min --units --orientation
-        --all --point --in --distance --budget --ref --expect --json-body --record --ok-any
-        $everywhere" ;;
+        --all --point --in --distance --budget --timeout-ms --ref --expect --json-body --record
+        --ok-any $everywhere" ;;
+      path) _leeway_words "--from --near --tool --revision --margin-min --units --orientation
+        --budget --timeout-ms --certificate --ref --expect --record --ok-any $everywhere" ;;
+      travel) _leeway_words "--mode --near --tool --revision --margin-min --units --orientation
+        --reach --budget --timeout-ms --ref --expect --record --ok-any $everywhere" ;;
       replay) _leeway_words "--revision --mechanism --check --ignore --tolerance --update
         $everywhere" ;;
       *) _leeway_words "$everywhere" ;;
@@ -123,7 +127,7 @@ _leeway() {
       ;;
     ask)
       if ((count == 0)); then
-        _leeway_words "inverse forward jacobian margin reach"
+        _leeway_words "inverse forward jacobian margin reach free-travel"
       elif ((count == 1)); then
         _leeway_mechanisms
       else
@@ -132,6 +136,24 @@ _leeway() {
           reach) _leeway_words "x= y= z= rz= yaw= pitch= roll= qw= qx= qy= qz= joint. from." ;;
           *) _leeway_words "x= y= z= rz= yaw= pitch= roll= qw= qx= qy= qz= joint. near." ;;
         esac
+        compopt -o nospace 2>/dev/null
+      fi
+      ;;
+    path)
+      if ((count == 0)); then
+        _leeway_mechanisms
+      elif ((count == 1)); then
+        _leeway_files
+      else
+        _leeway_words "from."
+        compopt -o nospace 2>/dev/null
+      fi
+      ;;
+    travel)
+      if ((count == 0)); then
+        _leeway_mechanisms
+      else
+        _leeway_words "x= y= z= rz= yaw= pitch= roll= qw= qx= qy= qz= joint. near."
         compopt -o nospace 2>/dev/null
       fi
       ;;

@@ -187,7 +187,8 @@ static struct curl_slist *headers(const lwc_http *http, const lwc_request *reque
     struct curl_slist *list = curl_slist_append(NULL, accept.data);
     lwc_text_clear(&accept);
     if (request->body != NULL) {
-        list = curl_slist_append(list, "Content-Type: application/json");
+        list = curl_slist_append(list, request->table ? "Content-Type: text/csv"
+                                                      : "Content-Type: application/json");
         list = curl_slist_append(list, "Expect:");
     }
     if (http->bearer != NULL) {

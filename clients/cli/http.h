@@ -30,6 +30,7 @@ typedef struct lwc_request {
     const char *body;   /* or NULL */
     size_t body_len;
     const char *accept; /* or NULL for JSON */
+    bool table;         /* the body is CSV, not JSON */
     bool once;          /* take a 503 for an answer, do not ask again */
 } lwc_request;
 

@@ -43,6 +43,7 @@ static int run(const lwc_args *args)
         [LWC_SHOW] = lwc_cmd_show,         [LWC_REPORT] = lwc_cmd_report,
         [LWC_HISTORY] = lwc_cmd_history,   [LWC_PUBLISH] = lwc_cmd_publish,
         [LWC_WITHDRAW] = lwc_cmd_withdraw, [LWC_ASK] = lwc_cmd_ask,
+        [LWC_PATH] = lwc_cmd_path,         [LWC_TRAVEL] = lwc_cmd_travel,
         [LWC_DIFFERENCE] = lwc_cmd_difference, [LWC_HEALTH] = lwc_cmd_health,
         [LWC_ABOUT] = lwc_cmd_about,       [LWC_REPLAY] = lwc_cmd_replay,
     };

@@ -7,7 +7,7 @@
 
 static const char *const KINDS[LWC_KIND_COUNT] = {
     [LWC_INVERSE] = "inverse", [LWC_FORWARD] = "forward", [LWC_JACOBIAN] = "jacobian",
-    [LWC_MARGIN] = "margin",   [LWC_REACH] = "reach"};
+    [LWC_MARGIN] = "margin",   [LWC_REACH] = "reach",     [LWC_FREE_TRAVEL] = "free-travel"};
 
 const char *lwc_kind_name(lwc_kind kind)
 {
@@ -23,8 +23,8 @@ bool lwc_kind_find(lwc_kind *out, const char *word)
         }
     }
     const char *near = lwc_nearest(word, KINDS, LWC_KIND_COUNT);
-    lwc_complain("there is no question \"%s\"%s%s%s; there are inverse, forward, jacobian, margin "
-                 "and reach",
+    lwc_complain("there is no question \"%s\"%s%s%s; there are inverse, forward, jacobian, "
+                 "margin, reach and free-travel",
                  word, near != NULL ? "; did you mean \"" : "", near != NULL ? near : "",
                  near != NULL ? "\"?" : "");
     return false;
@@ -260,7 +260,7 @@ static bool put_from_and_near(cJSON *body, lwc_kind kind, place *from, place *ne
         return put_near(body, near);
     }
     if (lwc_json_get(body, "from") == NULL) {
-        lwc_complain("reach takes near only for where a move starts; give from.NAME=.. as well, or "
+        lwc_complain("near is taken only for where a move starts; give from.NAME=.. as well, or "
                      "ask inverse for the solution nearby");
         return false;
     }
@@ -314,15 +314,9 @@ static bool put_main(cJSON *body, lwc_kind kind, place *main_place, const char *
     return put_posture(body, main_place, lwc_kind_name(kind));
 }
 
-/* "1.2", or "load=1,travel=0.05". */
-static bool put_margin_min(cJSON *body, const char *text)
+/* "load=1,travel=0.05" into an object. */
+static bool put_numbers(cJSON *object, const char *text, const char *option, const char *example)
 {
-    double value = 0.0;
-    if (lwc_read_number(text, &value)) {
-        lwc_json_put_number(body, "margin_min", value);
-        return true;
-    }
-    cJSON *object = lwc_json_room(body, "margin_min");
     const char *p = text;
     while (*p != '\0') {
         char part[LWC_WORD_MAX];
@@ -334,6 +328,7 @@ static bool put_margin_min(cJSON *body, const char *text)
         part[len] = '\0';
         char name[LWC_WORD_MAX];
         const char *number = NULL;
+        double value = 0.0;
         if (!split(part, name, &number) || !lwc_read_number(number, &value) ||
             !put_once(&object, name, value, part)) {
             break;
@@ -344,8 +339,20 @@ static bool put_margin_min(cJSON *body, const char *text)
             return true;
         }
     }
-    lwc_complain("--margin-min \"%s\": expected a number, or load=1.2,travel=0.05", text);
+    lwc_complain("%s \"%s\": expected %s", option, text, example);
     return false;
+}
+
+/* "1.2", or "load=1,travel=0.05". */
+static bool put_margin_min(cJSON *body, const char *text)
+{
+    double value = 0.0;
+    if (lwc_read_number(text, &value)) {
+        lwc_json_put_number(body, "margin_min", value);
+        return true;
+    }
+    return put_numbers(lwc_json_room(body, "margin_min"), text, "--margin-min",
+                       "a number, or load=1.2,travel=0.05");
 }
 
 static bool put_units(cJSON *body, const char *text)
@@ -386,6 +393,17 @@ static bool put_count(cJSON *object, const char *name, const char *text)
     return true;
 }
 
+static bool put_timeout(cJSON *object, const char *text)
+{
+    long value = 0;
+    if (!lwc_read_count(text, 600000L, &value)) {
+        lwc_complain("--timeout-ms \"%s\": expected milliseconds, 1 to 600000", text);
+        return false;
+    }
+    lwc_json_put_number(object, "timeout_ms", (double)value);
+    return true;
+}
+
 /* Complains of an option that belongs to another question. */
 static bool only_for(bool given, const char *option, bool allowed, lwc_kind kind, const char *kinds)
 {
@@ -402,11 +420,16 @@ static bool check_kind(lwc_kind kind, const lwc_args *args)
            only_for(args->point != NULL, "point", kind == LWC_JACOBIAN, kind, "jacobian") &&
            only_for(args->in != NULL, "in", kind == LWC_JACOBIAN, kind, "jacobian") &&
            only_for(args->distance, "distance", kind == LWC_MARGIN, kind, "margin") &&
-           only_for(args->margin_min != NULL, "margin-min", kind == LWC_REACH, kind, "reach") &&
+           only_for(args->margin_min != NULL, "margin-min",
+                    kind == LWC_REACH || kind == LWC_FREE_TRAVEL, kind, "reach and free-travel") &&
            only_for(args->from != NULL, "from", kind == LWC_REACH, kind, "reach") &&
            only_for(args->budget != NULL, "budget",
-                    kind == LWC_REACH || (kind == LWC_MARGIN && args->distance), kind,
-                    "reach, and for margin with --distance");
+                    kind == LWC_REACH || kind == LWC_FREE_TRAVEL ||
+                        (kind == LWC_MARGIN && args->distance),
+                    kind, "reach, free-travel, and for margin with --distance") &&
+           only_for(args->timeout_ms != NULL, "timeout-ms",
+                    kind == LWC_REACH || kind == LWC_FREE_TRAVEL || kind == LWC_MARGIN, kind,
+                    "reach, free-travel and margin");
 }
 
 static bool put_point(cJSON *body, const char *list, lwc_text *store)
@@ -427,7 +450,14 @@ static bool put_point(cJSON *body, const char *list, lwc_text *store)
     return ok;
 }
 
-static bool put_options(cJSON *body, lwc_kind kind, const lwc_args *args, lwc_text *store)
+/* "position=40,angle=30". */
+static bool put_reach(cJSON *body, const char *text)
+{
+    cJSON *reach = lwc_json_room(body, "reach");
+    return put_numbers(reach, text, "--reach", "position=40,angle=30");
+}
+
+static bool put_options(cJSON *body, const lwc_args *args, lwc_text *store)
 {
     const struct {
         const char *name;
@@ -445,13 +475,14 @@ static bool put_options(cJSON *body, lwc_kind kind, const lwc_args *args, lwc_te
     if (args->all) {
         lwc_json_put(body, "all", cJSON_CreateTrue());
     }
-    if (args->distance) {
-        (void)lwc_json_room(body, "distance");
+    if (args->certificate) {
+        lwc_json_put(body, "certificate", cJSON_CreateTrue());
     }
-    cJSON *budget_room = kind == LWC_MARGIN && args->distance ? lwc_json_room(body, "distance")
-                                                              : body;
+    cJSON *budget_room = args->distance ? lwc_json_room(body, "distance") : body;
     return (args->revision == NULL || put_count(body, "revision", args->revision)) &&
            (args->budget == NULL || put_count(budget_room, "budget", args->budget)) &&
+           (args->timeout_ms == NULL || put_timeout(body, args->timeout_ms)) &&
+           (args->reach == NULL || put_reach(body, args->reach)) &&
            (args->units == NULL || put_units(body, args->units)) &&
            (args->margin_min == NULL || put_margin_min(body, args->margin_min)) &&
            (args->point == NULL || put_point(body, args->point, store));
@@ -493,7 +524,7 @@ cJSON *lwc_question_build(lwc_kind kind, const char *const *words, size_t n_word
               only_for(has_any(&from), "from", kind == LWC_REACH, kind, "reach") &&
               put_main(body, kind, &main_place, args->mode) &&
               put_from_and_near(body, kind, &from, &near) &&
-              put_options(body, kind, args, &point_text);
+              put_options(body, args, &point_text);
     place_clear(&main_place);
     place_clear(&near);
     place_clear(&from);
@@ -505,4 +536,31 @@ cJSON *lwc_question_build(lwc_kind kind, const char *const *words, size_t n_word
         return NULL;
     }
     return body;
+}
+
+bool lwc_path_options(cJSON *body, const char *const *words, size_t n_words, const lwc_args *args)
+{
+    place main_place = {0};
+    place near = {0};
+    place from = {0};
+    lwc_text near_text = {0};
+    lwc_text from_text = {0};
+    lwc_text point_text = {0};
+    bool ok = sort_words(words, n_words, &main_place, &near, &from) &&
+              (args->near == NULL || place_put_list(&near, args->near, &near_text)) &&
+              (args->from == NULL || place_put_list(&from, args->from, &from_text));
+    if (ok && has_any(&main_place)) {
+        lwc_complain("a path takes its moves from the file; words beside it say where it starts, "
+                     "as from.m1=10");
+        ok = false;
+    }
+    ok = ok && put_from_and_near(body, LWC_REACH, &from, &near) &&
+         put_options(body, args, &point_text);
+    place_clear(&main_place);
+    place_clear(&near);
+    place_clear(&from);
+    lwc_text_clear(&near_text);
+    lwc_text_clear(&from_text);
+    lwc_text_clear(&point_text);
+    return ok;
 }

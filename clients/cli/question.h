@@ -13,6 +13,7 @@ typedef enum lwc_kind {
     LWC_JACOBIAN,
     LWC_MARGIN,
     LWC_REACH,
+    LWC_FREE_TRAVEL,
     LWC_KIND_COUNT
 } lwc_kind;
 
@@ -23,5 +24,9 @@ bool lwc_kind_find(lwc_kind *out, const char *word);
 /* The body for these words (assignments) and options, or NULL after a complaint. */
 cJSON *lwc_question_build(lwc_kind kind, const char *const *words, size_t n_words,
                           const lwc_args *args);
+
+/* Puts into the body of a path where it starts (from.NAME=.. words, --from, --near) and what the
+ * options say. False after a complaint. */
+bool lwc_path_options(cJSON *body, const char *const *words, size_t n_words, const lwc_args *args);
 
 #endif

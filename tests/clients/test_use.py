@@ -10,8 +10,8 @@ import unittest
 from support import CLI, Case, Reply
 
 ROOM = os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "..", "clients", "cli")
-COMMANDS = ["load", "list", "show", "report", "history", "publish", "withdraw", "ask", "difference",
-            "health", "about", "replay", "completion", "help"]
+COMMANDS = ["load", "list", "show", "report", "history", "publish", "withdraw", "ask", "path",
+            "travel", "difference", "health", "about", "replay", "completion", "help"]
 
 
 class Use(Case):
