@@ -108,6 +108,7 @@ typedef struct lwd_route {
                            * does any request whose body exceeds 2 kB (a batch) */
     size_t body_max;      /* largest body in bytes; 0 = takes no body */
     const char *name;     /* for metrics and log: "inverse" */
+    bool csv;             /* takes a table (text/csv) as well as JSON */
 } lwd_route;
 
 /* Builds an RFC 9457 problem reply; used by http for its own errors and by api for the rest.

@@ -217,6 +217,9 @@ static int start(daemon_state *d, char *why, size_t why_size)
 static bool stop(daemon_state *d)
 {
     lwd_ready_set(false);
+    if (d->app != NULL && d->http != NULL) {
+        lwd_app_hurry(d->app, d->config.http.drain_ms / 2);
+    }
     if (d->http != NULL && !lwd_http_stop(d->http)) {
         lwd_log(LWD_LOG_ERROR, "stop", "a question is still being worked on; leaving without it");
         return false;

@@ -13,6 +13,7 @@
 #include "app.h"
 #include "problem.h"
 #include "store.h"
+#include "watch.h"
 
 enum {
     LWD_LANE_WORKS = 32,    /* scratch of so many models is kept in a lane */
@@ -36,6 +37,7 @@ typedef struct lwd_lane {
     lwd_question question;
     lwd_question_body body;
     lwd_question_parts member;
+    lwd_path *path;  /* NULL until the first path is asked for */
     lwd_findings findings;
     lwd_reply scrap; /* problems of batch members are made here */
 } lwd_lane;
@@ -45,6 +47,7 @@ struct lwd_app {
     lwd_store *store;
     unsigned n_lanes;
     unsigned long prepare_paths;
+    lwd_watch *watch;
     lwd_lane *lane;  /* [n_lanes] */
     lwd_buf about;   /* the answer of GET /about, made at the start */
 };
@@ -148,6 +151,9 @@ void lwd_post_margin(void *context, const lwd_request *request, lwd_reply *reply
 void lwd_post_reach(void *context, const lwd_request *request, lwd_reply *reply);
 void lwd_get_margin(void *context, const lwd_request *request, lwd_reply *reply);
 void lwd_get_reach(void *context, const lwd_request *request, lwd_reply *reply);
+void lwd_post_free_travel(void *context, const lwd_request *request, lwd_reply *reply);
+/* ask_path.c */
+void lwd_post_path(void *context, const lwd_request *request, lwd_reply *reply);
 /* service.c */
 void lwd_get_healthz(void *context, const lwd_request *request, lwd_reply *reply);
 void lwd_get_readyz(void *context, const lwd_request *request, lwd_reply *reply);

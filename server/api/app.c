@@ -17,45 +17,52 @@ enum {
 };
 
 /* Quick routes answer on the event thread; a mechanism that must be loaded first, or a batch longer
- * than LWD_BATCH_QUICK, leaves it by LWD_DEFER. Listings read a page of the catalog (some tens of
- * microseconds), documents up to 4 MB. */
+ * than LWD_BATCH_QUICK, leaves it by LWD_DEFER. Proofs of moves run in workers always. Listings
+ * read a page of the catalog (some tens of microseconds), documents up to 4 MB. */
 static const lwd_route routes[] = {
-    {LWD_GET, "/v1/mechanisms", lwd_get_mechanisms, LWD_ROLE_QUERY, true, 0, "mechanisms"},
-    {LWD_PUT, "/v1/mechanisms/{}", lwd_put_mechanism, LWD_ROLE_AUTHOR, true, DOCUMENT_MAX, "put"},
-    {LWD_GET, "/v1/mechanisms/{}", lwd_get_mechanism, LWD_ROLE_QUERY, false, 0, "mechanism"},
-    {LWD_GET, "/v1/mechanisms/{}/state", lwd_get_state, LWD_ROLE_QUERY, false, 0, "state"},
+    {LWD_GET, "/v1/mechanisms", lwd_get_mechanisms, LWD_ROLE_QUERY, true, 0, "mechanisms", false},
+    {LWD_PUT, "/v1/mechanisms/{}", lwd_put_mechanism, LWD_ROLE_AUTHOR, true, DOCUMENT_MAX, "put",
+     false},
+    {LWD_GET, "/v1/mechanisms/{}", lwd_get_mechanism, LWD_ROLE_QUERY, false, 0, "mechanism", false},
+    {LWD_GET, "/v1/mechanisms/{}/state", lwd_get_state, LWD_ROLE_QUERY, false, 0, "state", false},
     {LWD_GET, "/v1/mechanisms/{}/revisions", lwd_get_revisions, LWD_ROLE_QUERY, true, 0,
-     "revisions"},
+     "revisions", false},
     {LWD_GET, "/v1/mechanisms/{}/revisions/{}", lwd_get_revision, LWD_ROLE_QUERY, true, 0,
-     "revision"},
+     "revision", false},
     {LWD_GET, "/v1/mechanisms/{}/revisions/{}/report", lwd_get_report, LWD_ROLE_QUERY, true, 0,
-     "report"},
+     "report", false},
     {LWD_POST, "/v1/mechanisms/{}/revisions/{}/publish", lwd_post_publish, LWD_ROLE_ADMIN, true,
-     CHANGE_MAX, "publish"},
+     CHANGE_MAX, "publish", false},
     {LWD_POST, "/v1/mechanisms/{}/revisions/{}/withdraw", lwd_post_withdraw, LWD_ROLE_ADMIN, true,
-     CHANGE_MAX, "withdraw"},
-    {LWD_GET, "/v1/mechanisms/{}/history", lwd_get_history, LWD_ROLE_QUERY, true, 0, "history"},
-    {LWD_GET, "/v1/mechanisms/{}/modes", lwd_get_modes, LWD_ROLE_QUERY, true, 0, "modes"},
+     CHANGE_MAX, "withdraw", false},
+    {LWD_GET, "/v1/mechanisms/{}/history", lwd_get_history, LWD_ROLE_QUERY, true, 0, "history",
+     false},
+    {LWD_GET, "/v1/mechanisms/{}/modes", lwd_get_modes, LWD_ROLE_QUERY, true, 0, "modes", false},
     {LWD_GET, "/v1/mechanisms/{}/difference", lwd_get_difference, LWD_ROLE_QUERY, true, 0,
-     "difference"},
+     "difference", false},
     {LWD_POST, "/v1/mechanisms/{}/inverse", lwd_post_inverse, LWD_ROLE_QUERY, false, QUESTION_MAX,
-     "inverse"},
+     "inverse", false},
     {LWD_POST, "/v1/mechanisms/{}/forward", lwd_post_forward, LWD_ROLE_QUERY, false, QUESTION_MAX,
-     "forward"},
+     "forward", false},
     {LWD_POST, "/v1/mechanisms/{}/jacobian", lwd_post_jacobian, LWD_ROLE_QUERY, false,
-     QUESTION_MAX, "jacobian"},
+     QUESTION_MAX, "jacobian", false},
     {LWD_POST, "/v1/mechanisms/{}/margin", lwd_post_margin, LWD_ROLE_QUERY, false, QUESTION_MAX,
-     "margin"},
+     "margin", false},
     {LWD_POST, "/v1/mechanisms/{}/reach", lwd_post_reach, LWD_ROLE_QUERY, false, QUESTION_MAX,
-     "reach"},
-    {LWD_GET, "/v1/mechanisms/{}/margin", lwd_get_margin, LWD_ROLE_QUERY, false, 0, "margin"},
-    {LWD_GET, "/v1/mechanisms/{}/reach", lwd_get_reach, LWD_ROLE_QUERY, false, 0, "reach"},
-    {LWD_GET, "/healthz", lwd_get_healthz, LWD_ROLE_NONE, false, 0, "healthz"},
-    {LWD_GET, "/readyz", lwd_get_readyz, LWD_ROLE_NONE, false, 0, "readyz"},
-    {LWD_GET, "/metrics", lwd_get_metrics, LWD_ROLE_QUERY, false, 0, "metrics"},
-    {LWD_GET, "/about", lwd_get_about, LWD_ROLE_NONE, false, 0, "about"},
-    {LWD_GET, "/openapi.json", lwd_get_openapi, LWD_ROLE_NONE, false, 0, "openapi"},
-    {LWD_GET, "/problems/{}", lwd_get_problem, LWD_ROLE_NONE, false, 0, "problem"},
+     "reach", false},
+    {LWD_POST, "/v1/mechanisms/{}/path", lwd_post_path, LWD_ROLE_QUERY, true, QUESTION_MAX,
+     "path", true},
+    {LWD_POST, "/v1/mechanisms/{}/free-travel", lwd_post_free_travel, LWD_ROLE_QUERY, true,
+     QUESTION_MAX, "free-travel", false},
+    {LWD_GET, "/v1/mechanisms/{}/margin", lwd_get_margin, LWD_ROLE_QUERY, false, 0, "margin",
+     false},
+    {LWD_GET, "/v1/mechanisms/{}/reach", lwd_get_reach, LWD_ROLE_QUERY, false, 0, "reach", false},
+    {LWD_GET, "/healthz", lwd_get_healthz, LWD_ROLE_NONE, false, 0, "healthz", false},
+    {LWD_GET, "/readyz", lwd_get_readyz, LWD_ROLE_NONE, false, 0, "readyz", false},
+    {LWD_GET, "/metrics", lwd_get_metrics, LWD_ROLE_QUERY, false, 0, "metrics", false},
+    {LWD_GET, "/about", lwd_get_about, LWD_ROLE_NONE, false, 0, "about", false},
+    {LWD_GET, "/openapi.json", lwd_get_openapi, LWD_ROLE_NONE, false, 0, "openapi", false},
+    {LWD_GET, "/problems/{}", lwd_get_problem, LWD_ROLE_NONE, false, 0, "problem", false},
 };
 
 const lwd_route *lwd_app_routes(size_t *n)
@@ -70,6 +77,11 @@ void lwd_app_load(lwd_app *app, bool (*stop)(void))
     lwd_log(LWD_LOG_INFO, "models_loaded", "%zu published mechanisms are ready", n);
 }
 
+void lwd_app_hurry(lwd_app *app, unsigned ms)
+{
+    lwd_watch_hurry(app->watch, (int64_t)ms);
+}
+
 void lwd_app_stop(lwd_app *app)
 {
     if (app == NULL) {
@@ -79,6 +91,7 @@ void lwd_app_stop(lwd_app *app)
     for (unsigned i = 0; i < app->n_lanes && app->lane != NULL; i++) {
         lwd_lane_clear(&app->lane[i]);
     }
+    lwd_watch_free(app->watch);
     lwd_store_free(app->store);
     lwd_buf_clear(&app->about);
     free(app->lane);
@@ -137,8 +150,9 @@ lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_siz
     for (unsigned i = 0; app->lane != NULL && i < options->lanes; i++) {
         lwd_buf_init(&app->lane[i].scrap.body, 0);
     }
-    if (app->store == NULL || app->lane == NULL || !lwd_about_write(&app->about)
-        || !open_catalog(app, options->data_dir, why, why_size)) {
+    app->watch = lwd_watch_new(options->lanes);
+    if (app->store == NULL || app->lane == NULL || app->watch == NULL
+        || !lwd_about_write(&app->about) || !open_catalog(app, options->data_dir, why, why_size)) {
         lwd_app_stop(app);
         return NULL;
     }

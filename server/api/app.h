@@ -29,6 +29,9 @@ bool lwd_app_backup(const char *data_dir, const char *file, char *why, size_t wh
 /* The routes; static, valid for ever. Handlers are called with the lwd_app as their context. */
 const lwd_route *lwd_app_routes(size_t *n);
 
+/* The service is about to stop: questions about moves get at most so long from now, and say so. */
+void lwd_app_hurry(lwd_app *app, unsigned ms);
+
 /* Waits for writes under way and frees everything. No handler may run any more. */
 void lwd_app_stop(lwd_app *app);
 

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* A lane's scratch for models: the core's work objects, one a model, the least recently used given
  * up when there are too many. Each keeps its model alive. Called by the lane's thread only. */
+#include "../codec/path_in.h"
 #include "api.h"
 
 static void slot_clear(lwd_lane_work *slot)
@@ -16,6 +17,8 @@ void lwd_lane_clear(lwd_lane *lane)
         slot_clear(&lane->work[i]);
     }
     lwd_buf_clear(&lane->scrap.body);
+    lwd_path_room_free(lane->path);
+    lane->path = NULL;
 }
 
 lw_work *lwd_lane_work_of(lwd_lane *lane, lwd_held *held)

@@ -37,6 +37,7 @@ lwd_problem_id lwd_problem_of_finding(const lwd_finding *finding)
         {"wrong-type", LWD_PROBLEM_TYPE},            {"out-of-range", LWD_PROBLEM_RANGE},
         {"bad-name", LWD_PROBLEM_NAME},              {"unknown-name", LWD_PROBLEM_NO_NAME},
         {"fixed-body", LWD_PROBLEM_QUESTION},
+        {"malformed-csv", LWD_PROBLEM_CSV},
         {"too-many", LWD_PROBLEM_RANGE},             {"too-few", LWD_PROBLEM_RANGE},
         {"too-long", LWD_PROBLEM_RANGE},             {"no-posture", LWD_PROBLEM_POSTURE},
     };
@@ -58,6 +59,12 @@ bool lwd_prefers_plain(const char *accept)
     int plain = lwd_accept_quality(accept, "text/plain");
     return plain > lwd_accept_quality(accept, "application/json") &&
            plain > lwd_accept_quality(accept, "application/problem+json");
+}
+
+bool lwd_prefers_csv(const char *accept)
+{
+    int table = accept != NULL ? lwd_accept_quality(accept, "text/csv") : 0;
+    return table > 0 && table > lwd_accept_quality(accept, "application/json");
 }
 
 /* ---- writing --------------------------------------------------------------------------------- */

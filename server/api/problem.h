@@ -24,5 +24,7 @@ void lwd_problem_reply_refused(lwd_reply *reply, const lwd_request *request, lwd
 
 /* True if an Accept value likes text/plain better than JSON. */
 bool lwd_prefers_plain(const char *accept);
+/* Whether the client wants a table rather than JSON. */
+bool lwd_prefers_csv(const char *accept);
 
 #endif

@@ -40,6 +40,7 @@
     X(LWD_PROBLEM_NAME_DIFFERS, 1077, 422, "name-differs",                                         \
       "The document's name is not that of the URL")                                                \
     X(LWD_PROBLEM_ACCEPT, 1078, 406, "answer-form", "No acceptable form of answer")                \
+    X(LWD_PROBLEM_CSV, 1079, 400, "malformed-csv", "The table can not be read")                    \
     X(LWD_PROBLEM_INTERNAL, 1090, 500, "internal", "The service has a fault")                      \
     X(LWD_PROBLEM_MEMORY, 1091, 503, "not-enough-memory", "There is not enough memory")            \
     X(LWD_PROBLEM_OVERLOADED, 1092, 503, "overloaded", "The service has too much to do")           \

@@ -19,9 +19,10 @@ static const help texts[] = {
     {"expectation", "Only Expect: 100-continue is understood."},
     {"not-found", "See /openapi.json for the paths there are."},
     {"method", "The header Allow lists the methods this path takes."},
-    {"not-acceptable", "Send Accept: application/json, or text/plain where the short form exists."},
+    {"not-acceptable", "Send Accept: application/json, or text/plain or text/csv where these "
+                       "exist."},
     {"too-large", "Split the request; the limit stands in the detail."},
-    {"media-type", "Send the body as application/json in UTF-8."},
+    {"media-type", "Send the body as application/json in UTF-8; a path may come as text/csv."},
     {"no-token", "Send Authorization: Bearer TOKEN; the operator hands tokens out."},
     {"bad-token", "The token is unknown or was withdrawn; ask the operator for a new one."},
     {"role", "The token may not do this: query asks, author stores drafts, admin publishes."},
@@ -63,7 +64,9 @@ static const help texts[] = {
     {"unusable-revision", "The revision was stored by another edition of the program; put the "
                           "document again to see what is wrong with it now."},
     {"name-differs", "The document's name and the name in the URL must be the same."},
-    {"answer-form", "Send Accept: application/json, or text/plain where the short form exists."},
+    {"answer-form", "Send Accept: application/json, or text/plain or text/csv where these exist."},
+    {"malformed-csv", "Commas between the fields, points in numbers, a header row, as many fields "
+                      "in each row as in the header; row and column stand in the pointer."},
     {"internal", "A fault of the service; report it with the request id in \"instance\"."},
     {"not-enough-memory", "Memory ran out before this was tried; ask again soon."},
     {"overloaded", "Wait as long as Retry-After says, then ask again. Nothing was tried."},

@@ -4,6 +4,7 @@
 #include <string.h>
 
 #include "answer_out.h"
+#include "path_in.h"
 
 static void put_direction(lwd_json *json, const double v[3])
 {
@@ -75,13 +76,13 @@ static void put_pose(lwd_json *json, const lwd_answer_head *head, const char *ke
     lwd_json_end(json);
 }
 
-static void put_drives(lwd_json *json, const lwd_edge *edge, const lw_posture_ask *posture)
+static void put_drives(lwd_json *json, const lwd_edge *edge, const bool *has, const double *drive)
 {
     lwd_json_put_object(json, "drives");
     for (size_t i = 0; i < edge->spec->n_drive; i++) {
-        if (posture->has_drive[i]) {
+        if (has[i]) {
             lwd_json_put_number(json, edge->spec->drive[i].name,
-                                lwd_tidy(lwd_reading_out(edge, i, posture->drive[i])));
+                                lwd_tidy(lwd_reading_out(edge, i, drive[i])));
         }
     }
     lwd_json_end(json);
@@ -150,7 +151,7 @@ static void put_posture_members(lwd_json *json, const lwd_answer_head *head,
     case LW_BY_NOTHING:
         break;
     case LW_BY_DRIVES:
-        put_drives(json, head->edge, posture);
+        put_drives(json, head->edge, posture->has_drive, posture->drive);
         break;
     case LW_BY_POSE:
         put_pose(json, head, "pose", &posture->pose);
@@ -214,6 +215,41 @@ static void put_margin_min(lwd_json *json, const lwd_question *q)
     lwd_json_end(json);
 }
 
+static void put_moves(lwd_json *json, const lwd_answer_head *head, const lwd_path *path)
+{
+    lwd_json_put_array(json, "through");
+    for (size_t i = 0; i < path->n; i++) {
+        const lw_move *move = &path->move[i];
+        lwd_json_object(json);
+        if (path->line[i][0] != '\0') {
+            lwd_json_put_string(json, "line", path->line[i]);
+        }
+        lwd_json_put_string(json, "move", lwd_move_word(move->kind));
+        if (move->kind == LW_MOVE_CIRCLE) {
+            put_pose(json, head, "via", &move->via);
+        }
+        if (move->has_drives) {
+            put_drives(json, head->edge, move->has_drive, move->drive);
+        } else {
+            put_pose(json, head, "pose", &move->pose);
+        }
+        lwd_json_end(json);
+    }
+    lwd_json_end(json);
+}
+
+static void put_travel(lwd_json *json, const lwd_question *q)
+{
+    lwd_json_put_object(json, "reach");
+    if (q->travel_m > 0.0) {
+        lwd_json_put_number(json, "position", lwd_tidy(lwd_length_out(q->units, q->travel_m)));
+    }
+    if (q->travel_rad > 0.0) {
+        lwd_json_put_number(json, "angle", lwd_tidy(lwd_angle_out(q->units, q->travel_rad)));
+    }
+    lwd_json_end(json);
+}
+
 void lwd_answer_asked(lwd_json *json, const lwd_answer_head *head)
 {
     const lwd_question *q = head->question;
@@ -229,6 +265,12 @@ void lwd_answer_asked(lwd_json *json, const lwd_answer_head *head)
         lwd_json_put_object(json, "from");
         put_posture(json, head, &q->from);
         lwd_json_end(json);
+    }
+    if (q->kind == LWD_ASK_PATH) {
+        put_moves(json, head, q->path);
+    }
+    if (q->travel_m > 0.0 || q->travel_rad > 0.0) {
+        put_travel(json, q);
     }
     if (q->has_margin_min) {
         put_margin_min(json, q);
@@ -246,11 +288,20 @@ void lwd_answer_asked(lwd_json *json, const lwd_answer_head *head)
     if (q->in_tool) {
         lwd_json_put_string(json, "in", "tool");
     }
-    if (q->budget != 0) {
+    if (q->has_distance) {
+        lwd_json_put_object(json, "distance");
+        if (q->budget != 0) {
+            lwd_json_put_int(json, "budget", q->budget);
+        }
+        lwd_json_end(json);
+    } else if (q->budget != 0) {
         lwd_json_put_int(json, "budget", q->budget);
     }
     if (q->timeout_ms != 0) {
         lwd_json_put_int(json, "timeout_ms", q->timeout_ms);
+    }
+    if (q->certificate) {
+        lwd_json_put_bool(json, "certificate", true);
     }
     lwd_json_end(json);
 }

@@ -60,6 +60,16 @@ static void put_disagreement(lwd_json *json, const lwd_edge *edge, const lw_forw
     lwd_json_put_string(json, "suspect", named ? edge->spec->drive[answer->suspect].name : NULL);
 }
 
+void lwd_answer_from_readings(lwd_json *json, const lwd_edge *edge, const lw_forward_answer *from)
+{
+    if (from != NULL && from->n_disagreement > 0) {
+        lwd_json_put_object(json, "from_readings");
+        lwd_json_put_int(json, "code", (int64_t)from->outcome);
+        put_disagreement(json, edge, from);
+        lwd_json_end(json);
+    }
+}
+
 void lwd_answer_forward(lwd_json *json, const lwd_answer_head *head,
                         const lw_forward_answer *answer)
 {
@@ -239,6 +249,9 @@ void lwd_answer_reach(lwd_json *json, const lwd_answer_head *head, const lw_reac
 {
     lwd_answer_begin(json, head, answer->outcome, answer->reason);
     lwd_json_put_string(json, "checked", answer->move_checked ? "move" : "posture");
+    if (answer->move_checked) {
+        lwd_json_put_number(json, "at", answer->move_at);
+    }
     if (answer->asked_mode.count > 0) {
         char text[LW_MODE_TEXT_SIZE];
         lw_mode_text(text, &answer->asked_mode);
@@ -253,12 +266,7 @@ void lwd_answer_reach(lwd_json *json, const lwd_answer_head *head, const lw_reac
     if (answer->n_other > 0 || answer->outcome == LW_OUTCOME_OTHER_MODE) {
         put_other_modes(json, head, answer);
     }
-    if (answer->from != NULL && answer->from->n_disagreement > 0) {
-        lwd_json_put_object(json, "from_readings");
-        lwd_json_put_int(json, "code", (int64_t)answer->from->outcome);
-        put_disagreement(json, head->edge, answer->from);
-        lwd_json_end(json);
-    }
+    lwd_answer_from_readings(json, head->edge, answer->from);
     lwd_json_key(json, "solution");
     if (answer->solution != NULL) {
         lwd_answer_solution(json, head, answer->solution);

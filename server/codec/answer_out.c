@@ -9,7 +9,7 @@
 const char *lwd_asked_word(lwd_asked kind)
 {
     static const char *const word[LWD_ASK_COUNT] = {"inverse", "forward", "jacobian", "margin",
-                                                    "reach"};
+                                                    "reach", "path", "free-travel"};
     return (unsigned)kind < LWD_ASK_COUNT ? word[kind] : "?";
 }
 

@@ -5,7 +5,7 @@
 #ifndef LWD_ANSWER_OUT_H
 #define LWD_ANSWER_OUT_H
 
-#include <leeway/query.h>
+#include <leeway/path.h>
 
 #include "edge.h"
 #include "json_out.h"
@@ -28,6 +28,18 @@ void lwd_answer_jacobian(lwd_json *json, const lwd_answer_head *head,
 void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head,
                        const lw_margin_answer *answer);
 void lwd_answer_reach(lwd_json *json, const lwd_answer_head *head, const lw_reach_answer *answer);
+void lwd_answer_path(lwd_json *json, const lwd_answer_head *head, const lw_path_answer *answer);
+/* The same as a table (CSV), one row a move. */
+void lwd_table_path(lwd_buf *buf, const lwd_answer_head *head, const lw_path_answer *answer);
+void lwd_answer_travel(lwd_json *json, const lwd_answer_head *head,
+                       const lw_travel_answer *answer);
+
+/* The answer to margin in two steps, as the distance is asked between them: all members but the
+ * last, perhaps "distance", then lwd_answer_end. */
+void lwd_answer_margin_begin(lwd_json *json, const lwd_answer_head *head,
+                             const lw_margin_answer *answer);
+void lwd_answer_distance(lwd_json *json, const lwd_answer_head *head,
+                         const lw_distance_answer *answer);
 
 /* The verdict of reach as key=value lines for a PLC, at most LWD_PLC_MAX bytes in all. */
 enum { LWD_PLC_MAX = 255 };
@@ -55,6 +67,8 @@ void lwd_answer_room(lwd_json *json, const lwd_answer_head *head, const lw_margi
 void lwd_answer_singular(lwd_json *json, const lwd_answer_head *head,
                          const lw_margin_answer *answer);
 void lwd_answer_braked(lwd_json *json, const lw_singular_answer *singular, size_t drive);
+/* "from_readings", where a start has drives to spare. */
+void lwd_answer_from_readings(lwd_json *json, const lwd_edge *edge, const lw_forward_answer *from);
 /* "asked": the question as understood. */
 void lwd_answer_asked(lwd_json *json, const lwd_answer_head *head);
 /* Name of a limit's owner: "wrist.second", "strut-3", "m2". */

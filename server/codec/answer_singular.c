@@ -279,7 +279,8 @@ static const char *reason_of(words *w, const lwd_edge *edge, const lw_margin_ans
     return w->text;
 }
 
-void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head, const lw_margin_answer *answer)
+void lwd_answer_margin_begin(lwd_json *json, const lwd_answer_head *head,
+                             const lw_margin_answer *answer)
 {
     words w = {.len = 0};
     lwd_answer_begin(json, head, answer->outcome, reason_of(&w, head->edge, answer));
@@ -288,6 +289,11 @@ void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head, const lw_mar
     } else {
         lwd_json_put_null(json, "posture");
     }
+}
+
+void lwd_answer_margin(lwd_json *json, const lwd_answer_head *head, const lw_margin_answer *answer)
+{
+    lwd_answer_margin_begin(json, head, answer);
     lwd_answer_end(json);
 }
 

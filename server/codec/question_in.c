@@ -1,10 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Questions as JSON bodies. Every member is either understood or refused; what later editions will
- * serve is refused with the code "not-served-yet". */
+/* Questions as JSON bodies. Every member is either understood or refused. */
 #include "question_in.h"
 
 #include <string.h>
 
+#include "path_in.h"
 #include "posture_in.h"
 
 enum {
@@ -29,33 +29,40 @@ static const lwd_member forward_table[] = {COMMON_TABLE, {"all", false}};
 enum { M_POINT = M_OWN, M_IN };
 static const lwd_member jacobian_table[] = {COMMON_TABLE, {"point", false}, {"in", false}};
 
-enum { M_DISTANCE = M_OWN };
-static const lwd_member margin_table[] = {COMMON_TABLE, {"distance", false}};
-
-enum { M_FROM = M_OWN, M_MARGIN_MIN, M_BUDGET, M_TIMEOUT, M_THROUGH, M_CERTIFICATE };
-static const lwd_member reach_table[] = {COMMON_TABLE,         {"from", false},
-                                         {"margin_min", false}, {"budget", false},
-                                         {"timeout_ms", false}, {"through", false},
-                                         {"certificate", false}};
+/* How far one looks and how long one works stand at the same places in all that take them. */
+enum { M_TIMEOUT = M_OWN, M_BUDGET, M_MARGIN_MIN, M_FROM, M_THROUGH, M_CERTIFICATE };
+enum { M_DISTANCE = M_BUDGET, M_REACH = M_FROM };
+static const lwd_member margin_table[] = {COMMON_TABLE, {"timeout_ms", false}, {"distance", false}};
+#define EFFORT_TABLE COMMON_TABLE, {"timeout_ms", false}, {"budget", false}, {"margin_min", false}
+static const lwd_member reach_table[] = {EFFORT_TABLE, {"from", false}};
+static const lwd_member path_table[] = {
+    EFFORT_TABLE, {"from", true}, {"through", true}, {"certificate", false}};
+static const lwd_member travel_table[] = {EFFORT_TABLE, {"reach", false}};
 
 typedef struct kind_table {
     const lwd_member *member;
     size_t n;
     bool posture[LWD_POSTURE_MEMBERS]; /* which members of a posture the question takes */
     const char *takes;                 /* the same in words */
+    bool alone;                        /* takes no batch */
 } kind_table;
 
 #define TABLE(t) (t), sizeof(t) / sizeof((t)[0])
 static const kind_table kinds[LWD_ASK_COUNT] = {
     [LWD_ASK_INVERSE] = {TABLE(inverse_table), {false, true, true, false, false, true},
-                         "a pose, a mode, near"},
+                         "a pose, a mode, near", false},
     [LWD_ASK_FORWARD] = {TABLE(forward_table), {true, false, false, false, false, true},
-                         "drives, near, all"},
+                         "drives, near, all", false},
     [LWD_ASK_JACOBIAN] = {TABLE(jacobian_table), {true, true, true, true, true, true},
-                          "a posture, point, in"},
-    [LWD_ASK_MARGIN] = {TABLE(margin_table), {true, true, true, true, true, true}, "a posture"},
+                          "a posture, point, in", false},
+    [LWD_ASK_MARGIN] = {TABLE(margin_table), {true, true, true, true, true, true},
+                        "a posture, distance", false},
     [LWD_ASK_REACH] = {TABLE(reach_table), {false, true, true, false, false, false},
-                       "a pose, from, mode, margin_min"},
+                       "a pose, from, mode, margin_min", false},
+    [LWD_ASK_PATH] = {TABLE(path_table), {false, false, false, false, false, false},
+                      "from, through, margin_min, certificate", true},
+    [LWD_ASK_TRAVEL] = {TABLE(travel_table), {true, true, true, true, true, true},
+                        "a posture, reach, margin_min", true},
 };
 _Static_assert((int)M_CERTIFICATE < (int)LWD_QUESTION_MEMBERS, "room for every member");
 
@@ -94,6 +101,11 @@ bool lwd_question_body_read(const lwd_reader *root, lwd_asked kind, lwd_question
     const lwd_reader *member = body->single.member;
     if (!lwd_is_given(&member[M_BATCH])) {
         return true;
+    }
+    if (kinds[kind].alone) {
+        LWD_TELL(&member[M_BATCH], "unknown-member", kinds[kind].takes, NULL,
+                 "The question %s takes no batch; ask one after the other.", lwd_asked_word(kind));
+        return false;
     }
     body->is_batch = true;
     body->batch = member[M_BATCH];
@@ -223,6 +235,10 @@ void lwd_question_clear(lwd_question *q, lwd_asked kind, const lwd_question_head
     memset(&q->margin_min, 0, sizeof q->margin_min);
     q->budget = 0;
     q->timeout_ms = 0;
+    q->certificate = false;
+    q->travel_m = 0.0;
+    q->travel_rad = 0.0;
+    q->has_distance = false;
 }
 
 static bool mode_of(const void *user, const char *text, lw_mode *out)
@@ -325,11 +341,28 @@ static lwd_form form_of_pose(const lwd_reader *pose)
     return LWD_FORM_DEFAULT;
 }
 
+/* That of the first move which has one. */
+static lwd_form form_of_moves(const lwd_reader *through)
+{
+    lwd_form form = LWD_FORM_DEFAULT;
+    lwd_reader move;
+    lwd_reader pose;
+    for (bool more = lwd_first(through, &move); more && form == LWD_FORM_DEFAULT;
+         more = lwd_next(&move)) {
+        if (lwd_find(&move, "pose", &pose)) {
+            form = form_of_pose(&pose);
+        }
+    }
+    return form;
+}
+
 static void read_form(const lwd_question_parts *parts, lwd_question *q)
 {
     size_t i = 0;
     if (lwd_read_word(&parts->member[M_ORIENTATION], form_word, FORM_WORDS, &i)) {
         q->form = (lwd_form)(LWD_FORM_QUATERNION + i);
+    } else if (parts->kind == LWD_ASK_PATH) {
+        q->form = form_of_moves(&parts->member[M_THROUGH]);
     } else {
         q->form = form_of_pose(&parts->member[LWD_POSTURE_POSE]);
     }
@@ -370,11 +403,50 @@ static void read_margin_min(const lwd_reader *r, lwd_question *q)
     }
 }
 
-static void not_served(const lwd_reader *r, const char *what)
+static void read_whole(const lwd_reader *r, long most, int64_t *out)
 {
-    if (lwd_is_given(r)) {
-        LWD_TELL(r, "not-served-yet", "the question without this member", NULL, "%s", what);
+    long n = 0;
+    if (lwd_read_int(r, 1, most, &n)) {
+        *out = n;
     }
+}
+
+/* Members that stand at the same places in reach, path and free-travel. */
+static void read_effort(const lwd_reader *m, lwd_question *q)
+{
+    read_margin_min(&m[M_MARGIN_MIN], q);
+    read_whole(&m[M_BUDGET], LW_PATH_BUDGET_MOST, &q->budget);
+    read_whole(&m[M_TIMEOUT], LWD_TIMEOUT_MOST, &q->timeout_ms);
+}
+
+/* {"position": .., "angle": ..}: how far free-travel looks. */
+static void read_travel(const lwd_reader *r, lwd_question *q)
+{
+    static const lwd_member table[] = {{"position", false}, {"angle", false}};
+    const double turn_most = 6.283185307179586;
+    double value = 0.0;
+    lwd_reader m[2];
+    if (!lwd_is_given(r) || !lwd_read_members(r, table, 2, m)) {
+        return;
+    }
+    if (lwd_read_positive(&m[0], lwd_length_out(q->units, 1e3), &value)) {
+        q->travel_m = lwd_length_in(q->units, value);
+    }
+    if (lwd_read_positive(&m[1], lwd_angle_out(q->units, turn_most), &value)) {
+        q->travel_rad = lwd_angle_in(q->units, value);
+    }
+}
+
+static void read_distance(const lwd_reader *m, lwd_question *q)
+{
+    static const lwd_member table[] = {{"budget", false}};
+    lwd_reader budget;
+    q->has_distance = lwd_is_given(&m[M_DISTANCE])
+                      && lwd_read_members(&m[M_DISTANCE], table, 1, &budget);
+    if (q->has_distance) {
+        read_whole(&budget, LWD_DISTANCE_BUDGET_MOST, &q->budget);
+    }
+    read_whole(&m[M_TIMEOUT], LWD_TIMEOUT_MOST, &q->timeout_ms);
 }
 
 static void read_own(const lwd_question_parts *parts, const lwd_posture_scope *scope,
@@ -384,7 +456,6 @@ static void read_own(const lwd_question_parts *parts, const lwd_posture_scope *s
     const lwd_reader *m = parts->member;
     double point[3];
     size_t i = 0;
-    long n = 0;
     switch (parts->kind) {
     case LWD_ASK_INVERSE:
     case LWD_ASK_COUNT:
@@ -402,20 +473,23 @@ static void read_own(const lwd_question_parts *parts, const lwd_posture_scope *s
         q->in_tool = lwd_read_word(&m[M_IN], in_word, 2, &i) && i == 1;
         break;
     case LWD_ASK_MARGIN:
-        not_served(&m[M_DISTANCE], "The distance to the nearest singularity is not served yet.");
+        read_distance(m, q);
         break;
     case LWD_ASK_REACH:
         q->has_from = lwd_is_given(&m[M_FROM])
                       && lwd_posture_in(&m[M_FROM], scope, &q->from, &q->from_near);
-        read_margin_min(&m[M_MARGIN_MIN], q);
-        if (lwd_read_int(&m[M_BUDGET], 1, 1000000000, &n)) {
-            q->budget = n;
-        }
-        if (lwd_read_int(&m[M_TIMEOUT], 1, 600000, &n)) {
-            q->timeout_ms = n;
-        }
-        not_served(&m[M_THROUGH], "Moves through several poses are not served yet.");
-        not_served(&m[M_CERTIFICATE], "Certificates of a proof are not served yet.");
+        read_effort(m, q);
+        break;
+    case LWD_ASK_PATH:
+        q->has_from = lwd_is_given(&m[M_FROM])
+                      && lwd_posture_in(&m[M_FROM], scope, &q->from, &q->from_near);
+        read_effort(m, q);
+        (void)lwd_read_bool(&m[M_CERTIFICATE], &q->certificate);
+        lwd_path_in(&m[M_THROUGH], scope, q->path);
+        break;
+    case LWD_ASK_TRAVEL:
+        read_effort(m, q);
+        read_travel(&m[M_REACH], q);
         break;
     }
 }
@@ -440,7 +514,7 @@ static void read_posture(const lwd_question_parts *parts, const lwd_posture_scop
     lwd_reader part[LWD_POSTURE_MEMBERS];
     const char *text = NULL;
     refuse_others(parts);
-    if (!clean(&parts->self)) {
+    if (!clean(&parts->self) || parts->kind == LWD_ASK_PATH) {
         return;
     }
     memcpy(part, m, sizeof part);
@@ -451,8 +525,9 @@ static void read_posture(const lwd_question_parts *parts, const lwd_posture_scop
         part[LWD_POSTURE_MODE].node = NULL;
     }
     size_t needed = parts->kind == LWD_ASK_FORWARD ? LWD_POSTURE_DRIVES : LWD_POSTURE_POSE;
-    if (parts->kind != LWD_ASK_JACOBIAN && parts->kind != LWD_ASK_MARGIN
-        && !lwd_is_given(&part[needed])) {
+    bool whole = parts->kind == LWD_ASK_JACOBIAN || parts->kind == LWD_ASK_MARGIN
+                 || parts->kind == LWD_ASK_TRAVEL;
+    if (!whole && !lwd_is_given(&part[needed])) {
         const char *name = kinds[parts->kind].member[needed].name;
         LWD_TELL(&part[needed], "missing-member", name, "nothing",
                  "The question %s needs the member \"%s\".", lwd_asked_word(parts->kind), name);

@@ -43,7 +43,8 @@ bool lwd_question_head_read(const lwd_question_parts *parts, lwd_question_head *
 bool lwd_question_read(const lwd_question_parts *parts, const lwd_question_head *head,
                        const lwd_edge *edge, lwd_question *out);
 
-/* The same for the query string of GET .../margin and GET .../reach. Pointers are "/<name>". */
+/* The same for the query string of GET .../margin and GET .../reach, and of a path whose moves come
+ * as a table. Pointers are "/<name>". */
 bool lwd_query_head_read(const lwd_pair *query, size_t n, lwd_asked kind, lwd_findings *findings,
                          lwd_question_head *head);
 bool lwd_query_read(const lwd_pair *query, size_t n, const lwd_question_head *head,

@@ -1,21 +1,18 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Questions as query strings: GET .../reach and GET .../margin, for PLCs and dashboards. Every
- * member is understood or refused; none may stand twice. A '+' arrives as a blank (forms are
- * decoded so), hence a blank in a mode, before a number or before its exponent is read as '+'. */
-#include <float.h>
-#include <math.h>
+/* Questions as query strings: GET .../reach and GET .../margin, for PLCs and dashboards, and what
+ * stands beside a path sent as a table. Every member is understood or refused; none may stand
+ * twice. A '+' arrives as a blank (forms are decoded so), hence a blank in a mode, before a number
+ * or before its exponent is read as '+'. */
 #include <stdarg.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
 #include "document.h"
+#include "flat.h"
 #include "pointer.h"
 #include "question_in.h"
 
-enum { VALUE_MAX = 40 };
-static const double length_most = 1e6; /* in the units of the question */
-static const double angle_most = 1e6;
 static const double reading_most = 1e12;
 
 typedef struct query {
@@ -24,13 +21,8 @@ typedef struct query {
     lwd_asked kind;
     const lwd_edge *edge; /* NULL while the head is read */
     lwd_findings *findings;
-    bool form_given[4]; /* quaternion, zyx, rotation vector, rz */
-    double quat[4];
-    bool has_quat[4];
-    double vector[3];
-    bool has_vector[3];
-    double zyx[3];
-    bool has_zyx[3];
+    lwd_flat pose;
+    lwd_flat from;
 } query;
 
 static void tell(query *in, const lwd_pair *at, const char *code, const char *expected,
@@ -57,75 +49,12 @@ static void tell(query *in, const lwd_pair *at, const char *code, const char *ex
     }
 }
 
-/* ---- numbers ------------------------------------------------------------------------------- */
-
-static size_t digits(const char *p)
-{
-    size_t n = 0;
-    while (p[n] >= '0' && p[n] <= '9') {
-        n++;
-    }
-    return n;
-}
-
-static const char *sign(const char *p, char **out)
-{
-    if (*p == '-' || *p == '+' || *p == ' ') {
-        *(*out)++ = *p == '-' ? '-' : '+';
-        return p + 1;
-    }
-    return p;
-}
-
-/* [sign] digits [. digits] [e [sign] digits]; a leading or trailing point is read as PLCs write it.
- * The daemon never leaves the "C" locale, so strtod reads a point. */
-static bool number_of(const char *text, double *out)
-{
-    char copy[VALUE_MAX + 1];
-    char *to = copy;
-    if (strlen(text) > VALUE_MAX) {
-        return false;
-    }
-    const char *p = sign(text, &to);
-    size_t whole = digits(p);
-    memcpy(to, p, whole);
-    to += whole;
-    p += whole;
-    size_t rest = 0;
-    if (*p == '.') {
-        *to++ = *p++;
-        rest = digits(p);
-        memcpy(to, p, rest);
-        to += rest;
-        p += rest;
-    }
-    if (whole + rest == 0) {
-        return false;
-    }
-    if (*p == 'e' || *p == 'E') {
-        *to++ = 'e';
-        p = sign(p + 1, &to);
-        size_t n = digits(p);
-        if (n == 0) {
-            return false;
-        }
-        memcpy(to, p, n);
-        to += n;
-        p += n;
-    }
-    *to = '\0';
-    double value = strtod(copy, NULL);
-    if (*p != '\0' || !(fabs(value) <= DBL_MAX)) {
-        return false;
-    }
-    *out = value;
-    return true;
-}
+/* ---- members ------------------------------------------------------------------------------- */
 
 static bool read_number(query *in, const lwd_pair *at, double low, double high, double *out)
 {
     double value = 0.0;
-    if (!number_of(at->value, &value)) {
+    if (!lwd_flat_number(at->value, &value)) {
         tell(in, at, "bad-query", "a decimal number", "%.40s takes a decimal number such as 12.5.",
              at->name);
         return false;
@@ -139,8 +68,6 @@ static bool read_number(query *in, const lwd_pair *at, double low, double high, 
     return true;
 }
 
-/* ---- members ------------------------------------------------------------------------------- */
-
 static size_t word_index(const char *name, const char *const *word, size_t n)
 {
     for (size_t i = 0; i < n; i++) {
@@ -151,70 +78,33 @@ static size_t word_index(const char *name, const char *const *word, size_t n)
     return SIZE_MAX;
 }
 
-static bool read_pose_member(query *in, const lwd_pair *at, lwd_question *q)
+/* One number of a pose; false if `name` is none of its members. */
+static bool read_pose_member(query *in, const lwd_pair *at, const char *name, lwd_units units,
+                             lwd_flat *flat)
 {
-    static const char *const word[] = {"x",  "y",   "z",     "qw",   "qx",  "qy",  "qz",
-                                       "yaw", "pitch", "roll", "rvx", "rvy", "rvz", "rz"};
-    lw_pose_ask *pose = &q->posture.pose;
-    size_t i = word_index(at->name, word, sizeof word / sizeof word[0]);
+    size_t i = lwd_flat_member(name);
     double value = 0.0;
     if (i == SIZE_MAX) {
         return false;
     }
-    double most = i < 3 ? length_most : angle_most;
-    if (!read_number(in, at, -most, most, &value)) {
-        return true;
-    }
-    if (i < 3) {
-        pose->has_position[i] = true;
-        pose->position_m[i] = lwd_length_in(q->units, value);
-    } else if (i < 7) {
-        in->form_given[0] = true;
-        in->has_quat[i - 3] = true;
-        in->quat[i - 3] = value;
-    } else if (i < 10) {
-        in->form_given[1] = true;
-        in->has_zyx[i - 7] = true;
-        in->zyx[i - 7] = lwd_angle_in(q->units, value);
-    } else if (i < 13) {
-        in->form_given[2] = true;
-        in->has_vector[i - 10] = true;
-        in->vector[i - 10] = lwd_angle_in(q->units, value);
-    } else {
-        in->form_given[3] = true;
-        in->has_zyx[0] = true;
-        in->zyx[0] = lwd_angle_in(q->units, value);
+    if (read_number(in, at, -LWD_FLAT_MOST, LWD_FLAT_MOST, &value)) {
+        lwd_flat_put(flat, units, i, value);
     }
     return true;
 }
 
-static void read_joint(query *in, const lwd_pair *at, const char *name, lwd_question *q)
+static void read_joint(query *in, const lwd_pair *at, const char *name, lwd_units units,
+                       lwd_flat *flat)
 {
-    const lwd_edge *edge = in->edge;
-    lw_pose_ask *pose = &q->posture.pose;
-    size_t coord = lwd_edge_coord(edge, name);
+    size_t coord = lwd_edge_coord(in->edge, name);
     double value = 0.0;
     if (coord == SIZE_MAX) {
         tell(in, at, "unknown-member", "joint. and the name of a joint",
              "The mechanism has no joint \"%.40s\".", name);
-        return;
-    }
-    if (pose->n_joint >= LW_MAX_OUTPUTS) {
+    } else if (read_number(in, at, -LWD_FLAT_MOST, LWD_FLAT_MOST, &value)
+               && !lwd_flat_put_joint(flat, in->edge, units, coord, value)) {
         tell(in, at, "too-many", "at most 16 joints", "A pose takes at most 16 joints.");
-        return;
     }
-    if (!read_number(in, at, -angle_most, angle_most, &value)) {
-        return;
-    }
-    size_t rod_first = edge->n_coord - edge->spec->n_rod;
-    double si = edge->coord_turning[coord] ? lwd_angle_in(q->units, value)
-                                           : lwd_length_in(q->units, value);
-    if (coord >= rod_first) {
-        si -= edge->rod_length_m[coord - rod_first];
-    }
-    pose->joint_coord[pose->n_joint] = coord;
-    pose->joint_value[pose->n_joint] = si;
-    pose->n_joint++;
 }
 
 static void read_drive(query *in, const lwd_pair *at, const char *name, lw_posture_ask *posture)
@@ -242,18 +132,19 @@ static void read_drive(query *in, const lwd_pair *at, const char *name, lw_postu
 
 static void read_mode(query *in, const lwd_pair *at, lwd_question *q)
 {
+    lw_posture_ask *posture = in->kind == LWD_ASK_PATH ? &q->from : &q->posture;
     if (in->kind == LWD_ASK_REACH && strcmp(at->value, "any") == 0) {
         q->any_mode = true;
         return;
     }
-    if (!lwd_edge_mode_parse(in->edge, at->value, &q->posture.mode)) {
+    if (!lwd_edge_mode_parse(in->edge, at->value, &posture->mode)) {
         char text[LW_MODE_TEXT_SIZE];
         lw_mode_text(text, &in->edge->report->home_mode);
         tell(in, at, "bad-mode", "signs, one a limb, or the name of a mode",
              "This is no mode of the mechanism; the default one is \"%s\".", text);
         return;
     }
-    q->posture.has_mode = true;
+    posture->has_mode = true;
 }
 
 static void read_tool(query *in, const lwd_pair *at, lwd_question *q)
@@ -356,28 +247,85 @@ static bool read_common(query *in, const lwd_pair *at, lwd_question *q)
     return false;
 }
 
+static void read_whole(query *in, const lwd_pair *at, long most, int64_t *out)
+{
+    size_t n = strspn(at->value, "0123456789");
+    long value = n > 0 && n < 10 && at->value[n] == '\0' ? strtol(at->value, NULL, 10) : 0;
+    if (value < 1 || value > most) {
+        tell(in, at, "out-of-range", "a whole number from 1, within its bound",
+             "%.40s takes a whole number from 1 to %ld.", at->name, most);
+        return;
+    }
+    *out = value;
+}
+
+/* How long may be worked on it, and what is wanted of it. */
+static bool read_effort(query *in, const lwd_pair *at, lwd_question *q)
+{
+    if (strcmp(at->name, "margin_min") == 0 || begins(at->name, "margin_min.")) {
+        read_margin_min(in, at, q);
+    } else if (strcmp(at->name, "budget") == 0) {
+        read_whole(in, at, LW_PATH_BUDGET_MOST, &q->budget);
+    } else if (strcmp(at->name, "timeout_ms") == 0) {
+        read_whole(in, at, LWD_TIMEOUT_MOST, &q->timeout_ms);
+    } else {
+        return false;
+    }
+    return true;
+}
+
 static void read_reach_member(query *in, const lwd_pair *at, lwd_question *q)
 {
     const char *name = at->name;
-    if (read_common(in, at, q) || read_pose_member(in, at, q)) {
+    if (read_common(in, at, q) || read_effort(in, at, q)) {
+        return;
+    }
+    bool direction = name[0] == 'd' && name[1] != '\0' && name[2] == '\0';
+    if (!direction && read_pose_member(in, at, name, q->units, &in->pose)) {
         return;
     }
     if (begins(name, "joint.")) {
-        read_joint(in, at, name + 6, q);
+        read_joint(in, at, name + 6, q->units, &in->pose);
     } else if (begins(name, "from.")) {
         q->has_from = true;
         read_drive(in, at, name + 5, &q->from);
     } else if (strcmp(name, "mode") == 0) {
         read_mode(in, at, q);
-    } else if (strcmp(name, "margin_min") == 0 || begins(name, "margin_min.")) {
-        read_margin_min(in, at, q);
-    } else if (strcmp(name, "distance") == 0 || begins(name, "through")) {
-        tell(in, at, "not-served-yet", "the question without this member",
-             "%.40s is not served yet.", name);
     } else {
         tell(in, at, "unknown-member",
              "x y z, qw qx qy qz, yaw pitch roll, rvx rvy rvz, rz, joint., from., mode ...",
              "The question reach has no member \"%.40s\".", name);
+    }
+}
+
+/* What stands beside a table of moves: where it starts, and how it is judged. */
+static void read_path_member(query *in, const lwd_pair *at, lwd_question *q)
+{
+    const char *name = at->name;
+    const char *start = begins(name, "from.") ? name + 5 : NULL;
+    if (read_common(in, at, q) || read_effort(in, at, q)) {
+        return;
+    }
+    if (start != NULL && begins(start, "joint.")) {
+        read_joint(in, at, start + 6, q->units, &in->from);
+    } else if (start != NULL && lwd_edge_drive(in->edge, start) == SIZE_MAX
+               && read_pose_member(in, at, start, q->units, &in->from)) {
+        return;
+    } else if (start != NULL) {
+        read_drive(in, at, begins(start, "drive.") ? start + 6 : start, &q->from);
+    } else if (strcmp(name, "mode") == 0) {
+        read_mode(in, at, q);
+    } else if (strcmp(name, "certificate") == 0) {
+        static const char *const word[] = {"false", "true"};
+        size_t i = word_index(at->value, word, 2);
+        q->certificate = i == 1;
+        if (i == SIZE_MAX) {
+            tell(in, at, "bad-query", "true or false", "certificate takes true or false.");
+        }
+    } else {
+        tell(in, at, "unknown-member",
+             "from.m1 and the like, mode, margin_min, units.length, tool, budget, timeout_ms ...",
+             "The question path has no member \"%.40s\" beside its table.", name);
     }
 }
 
@@ -403,82 +351,36 @@ static void tell_pose(query *in, const char *name, const char *expected, const c
     tell(in, &at, "bad-query", expected, "%s", text);
 }
 
-static void set_quaternion(query *in, lw_pose_ask *pose)
+static void close_pose(query *in, lwd_flat *flat, lw_pose_ask *out, lwd_form *form)
 {
-    double norm = 0.0;
-    for (size_t i = 0; i < 4; i++) {
-        if (!in->has_quat[i]) {
-            tell_pose(in, "qw", "qw, qx, qy and qz", "A quaternion needs qw, qx, qy and qz.");
-            return;
-        }
-        norm += in->quat[i] * in->quat[i];
+    const lwd_flat_fault *fault = lwd_flat_close(flat, form);
+    if (fault != NULL) {
+        tell_pose(in, fault->member, fault->expected, fault->text);
     }
-    norm = sqrt(norm);
-    if (!(fabs(norm - 1.0) <= 1e-3)) {
-        tell_pose(in, "qw", "unit length within 0.001",
-                  "The quaternion is not of unit length; send at least five decimals.");
-        return;
-    }
-    pose->orient = LW_ORIENT_QUATERNION;
-    for (size_t i = 0; i < 4; i++) {
-        pose->quat[i] = in->quat[i] / norm;
-    }
+    *out = flat->pose;
 }
 
-static void set_rotation_vector(query *in, lw_pose_ask *pose)
+/* The start of a path: readings or a pose, not both, and one of them. */
+static void close_from(query *in, lwd_question *q)
 {
-    double angle = 0.0;
-    for (size_t i = 0; i < 3; i++) {
-        if (!in->has_vector[i]) {
-            tell_pose(in, "rvx", "rvx, rvy and rvz", "A rotation vector needs rvx, rvy and rvz.");
-            return;
-        }
-        angle += in->vector[i] * in->vector[i];
-    }
-    angle = sqrt(angle);
-    double per = angle > 0.0 ? sin(0.5 * angle) / angle : 0.5;
-    pose->orient = LW_ORIENT_QUATERNION;
-    pose->quat[0] = cos(0.5 * angle);
-    for (size_t i = 0; i < 3; i++) {
-        pose->quat[i + 1] = per * in->vector[i];
-    }
-}
-
-static void set_orientation(query *in, lwd_question *q)
-{
-    static const lwd_form form[4] = {LWD_FORM_QUATERNION, LWD_FORM_ZYX, LWD_FORM_ROTATION_VECTOR,
-                                     LWD_FORM_RZ};
-    static const char *const name[4] = {"qw", "yaw", "rvx", "rz"};
-    lw_pose_ask *pose = &q->posture.pose;
-    size_t given = SIZE_MAX;
-    for (size_t i = 0; i < 4; i++) {
-        if (!in->form_given[i]) {
-            continue;
-        }
-        if (given != SIZE_MAX) {
-            tell_pose(in, name[i], "one form of the orientation",
-                      "The orientation is given in two forms; send one of them.");
-            return;
-        }
-        given = i;
-    }
-    if (given == SIZE_MAX) {
+    lwd_form none = LWD_FORM_QUATERNION; /* the start sets no form for the answer */
+    bool readings = q->from.kind == LW_BY_DRIVES;
+    bool pose = lwd_flat_given(&in->from);
+    if (in->findings->n_error > 0) {
         return;
     }
-    if (q->form == LWD_FORM_DEFAULT) {
-        q->form = form[given];
+    if (readings == pose) {
+        tell_pose(in, "from", "from.m1=.. and so on, or from.x=.. and so on",
+                  pose ? "The start is given by readings and by a pose; leave one of them out."
+                       : "A path needs its start: from.NAME=.. for each drive, or a pose.");
+    } else if (readings && q->from.has_mode) {
+        tell_pose(in, "mode", "mode beside a start given by its pose",
+                  "A mode picks among the postures of a pose; it has no use beside readings.");
+    } else if (pose) {
+        q->from.kind = LW_BY_POSE;
+        close_pose(in, &in->from, &q->from.pose, &none);
     }
-    if (given == 0) {
-        set_quaternion(in, pose);
-    } else if (given == 2) {
-        set_rotation_vector(in, pose);
-    } else {
-        pose->orient = LW_ORIENT_ZYX;
-        for (size_t i = 0; i < 3; i++) {
-            pose->has_zyx[i] = in->has_zyx[i];
-            pose->zyx_rad[i] = in->zyx[i];
-        }
-    }
+    q->has_from = true;
 }
 
 /* ---- the two steps ------------------------------------------------------------------------- */
@@ -507,7 +409,7 @@ static void read_head_member(query *in, const lwd_pair *at, lwd_question_head *h
         head->has_ref = true;
         lwd_text_copy(head->ref, sizeof head->ref, at->value);
     } else if (strcmp(at->name, "revision") == 0) {
-        size_t n = digits(at->value);
+        size_t n = strspn(at->value, "0123456789");
         if (n == 0 || n > 9 || at->value[n] != '\0' || at->value[0] == '0') {
             tell(in, at, "bad-query", "the number of a revision, from 1",
                  "revision takes a whole number from 1.");
@@ -545,6 +447,18 @@ static void clear_posture(lw_posture_ask *posture)
     posture->near = NULL;
 }
 
+/* A threshold for all and one by name together say two things at once. */
+static void refuse_two_thresholds(query *in, const lwd_question *q)
+{
+    for (size_t i = 0; i < LW_MARGIN_COUNT && q->margin_min_is_number; i++) {
+        if (q->margin_min.asked[i]) {
+            tell_pose(in, "margin_min", "a number, or margin_min.load= and the like",
+                      "margin_min stands beside margin_min.* members; send one of them.");
+            return;
+        }
+    }
+}
+
 bool lwd_query_read(const lwd_pair *pairs, size_t n, const lwd_question_head *head,
                     const lwd_edge *edge, lwd_asked kind, lwd_findings *findings,
                     lwd_question *out)
@@ -553,10 +467,14 @@ bool lwd_query_read(const lwd_pair *pairs, size_t n, const lwd_question_head *he
     lwd_question_clear(out, kind, head, edge);
     clear_posture(&out->posture);
     clear_posture(&out->from);
+    lwd_flat_open(&in.pose);
+    lwd_flat_open(&in.from);
     read_units(&in, &out->units);
     for (size_t i = 0; i < n; i++) {
         if (kind == LWD_ASK_REACH) {
             read_reach_member(&in, &pairs[i], out);
+        } else if (kind == LWD_ASK_PATH) {
+            read_path_member(&in, &pairs[i], out);
         } else {
             read_margin_member(&in, &pairs[i], out);
         }
@@ -568,16 +486,10 @@ bool lwd_query_read(const lwd_pair *pairs, size_t n, const lwd_question_head *he
     }
     if (kind == LWD_ASK_REACH) {
         out->posture.kind = LW_BY_POSE;
-        set_orientation(&in, out);
-        if (out->margin_min_is_number) {
-            for (size_t i = 0; i < LW_MARGIN_COUNT; i++) {
-                if (out->margin_min.asked[i]) {
-                    tell_pose(&in, "margin_min", "a number, or margin_min.load= and the like",
-                              "margin_min stands beside margin_min.* members; send one of them.");
-                    break;
-                }
-            }
-        }
+        close_pose(&in, &in.pose, &out->posture.pose, &out->form);
+    } else if (kind == LWD_ASK_PATH) {
+        close_from(&in, out);
     }
+    refuse_two_thresholds(&in, out);
     return findings->n_error == 0;
 }

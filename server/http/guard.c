@@ -329,11 +329,12 @@ bool lwd_guard_body(lwd_refusal *refusal, const lwd_head *head, const lwd_route 
     }
     if ((head->body_len > 0 || head->chunked) &&
         (head->content_type == NULL ||
-         !lwd_content_type_is(head->content_type, "application/json"))) {
-        (void)lwd_refuse(refusal, LWD_P_MEDIA, LWD_REFUSED_MEDIA,
-                         "Send the body as application/json, in UTF-8.");
-        (void)snprintf(refusal->expected, sizeof refusal->expected,
-                       "Content-Type: application/json");
+         !(lwd_content_type_is(head->content_type, "application/json") ||
+           (route->csv && lwd_content_type_is(head->content_type, "text/csv"))))) {
+        (void)lwd_refuse(refusal, LWD_P_MEDIA, LWD_REFUSED_MEDIA, "Send the body as %s, in UTF-8.",
+                         route->csv ? "application/json or text/csv" : "application/json");
+        (void)snprintf(refusal->expected, sizeof refusal->expected, "Content-Type: %s",
+                       route->csv ? "application/json, text/csv" : "application/json");
         if (head->content_type != NULL) {
             quote(refusal->got, sizeof refusal->got, head->content_type);
         }

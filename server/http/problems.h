@@ -14,7 +14,7 @@
     X(LWD_P_METHOD, 1007, 405, "method", "The path does not take this method")                     \
     X(LWD_P_ACCEPT, 1008, 406, "not-acceptable", "No acceptable form of answer")                   \
     X(LWD_P_SIZE, 1009, 413, "too-large", "The body is too large")                                 \
-    X(LWD_P_MEDIA, 1010, 415, "media-type", "The body must be JSON")                               \
+    X(LWD_P_MEDIA, 1010, 415, "media-type", "The body is of a type not taken")                     \
     X(LWD_P_NO_TOKEN, 1011, 401, "no-token", "A token is needed")                                  \
     X(LWD_P_BAD_TOKEN, 1012, 401, "bad-token", "The token is not valid")                           \
     X(LWD_P_ROLE, 1013, 403, "role", "The token's role does not allow this")                       \

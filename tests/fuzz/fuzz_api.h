@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* What fuzz_question.c and fuzz_query_string.c share: the daemon's inside with one small closed
- * machine (a five-bar with a spare drive and a turning gripper), and what every reply must be. */
+/* What fuzz_question.c, fuzz_query_string.c and fuzz_csv.c share: the daemon's inside with one
+ * small closed machine (a five-bar with a spare drive and a turning gripper), and what every reply
+ * must be. */
 #ifndef LWT_FUZZ_API_H
 #define LWT_FUZZ_API_H
 
@@ -84,6 +85,25 @@ static inline void fuzz_check(const lwd_reply *reply, bool plain)
     lwd_scan_limits limits = LWD_SCAN_DOCUMENT;
     lwd_scan_fault fault;
     must(lwd_json_scan(reply->body.data, reply->body.len, &limits, &fault), "not JSON", reply);
+}
+
+/* "a=1&b=2" cut into pairs in place; their number. */
+static inline size_t fuzz_pairs(char *text, lwd_pair *pair)
+{
+    size_t n = 0;
+    for (char *at = text; at != NULL && *at != '\0' && n < LWD_QUERY_MAX;) {
+        char *next = strchr(at, '&');
+        if (next != NULL) {
+            *next++ = '\0';
+        }
+        char *value = strchr(at, '=');
+        if (value != NULL) {
+            *value++ = '\0';
+        }
+        pair[n++] = (lwd_pair){.name = at, .value = value != NULL ? value : ""};
+        at = next;
+    }
+    return n;
 }
 
 #endif

@@ -5,25 +5,6 @@
 
 int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size);
 
-/* Cuts the text into pairs in place. */
-static size_t cut(char *text, lwd_pair *pair)
-{
-    size_t n = 0;
-    for (char *at = text; at != NULL && *at != '\0' && n < LWD_QUERY_MAX;) {
-        char *next = strchr(at, '&');
-        if (next != NULL) {
-            *next++ = '\0';
-        }
-        char *value = strchr(at, '=');
-        if (value != NULL) {
-            *value++ = '\0';
-        }
-        pair[n++] = (lwd_pair){.name = at, .value = value != NULL ? value : ""};
-        at = next;
-    }
-    return n;
-}
-
 int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
 {
     static lwd_reply reply;
@@ -44,7 +25,7 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
                            .body = "", .accept = plain ? "text/plain" : NULL, .token_name = "f",
                            .request_id = "f"};
     request.query = pair;
-    request.n_query = cut(text, pair);
+    request.n_query = fuzz_pairs(text, pair);
     if (reach) {
         lwd_get_reach(app, &request, &reply);
         fuzz_check(&reply, plain);

@@ -165,7 +165,7 @@ export class Description {
       return answer.text === '' ? [] : ['an answer to HEAD has a body'];
     }
     let value = answer.text;
-    if (type !== 'text/plain') {
+    if (type !== 'text/plain' && type !== 'text/csv') {
       try {
         value = JSON.parse(answer.text);
       } catch (error) {

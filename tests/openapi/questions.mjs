@@ -74,7 +74,7 @@ export const asked = [
   ['label-stage', 'reach', { pose, margin_min: 99 }, 2],
   ['label-stage', 'reach', { pose, margin_min: { accuracy: 1, load: 1, speed: 1, spare: 1,
     travel: 0.01, hold: 0.01 } }, 1],
-  ['label-stage', 'reach', { pose, from: { ...home, near: { pose } } }, 5],
+  ['label-stage', 'reach', { pose, from: home, budget: 4096, timeout_ms: 60000 }, 1],
   ['label-stage', 'reach', { pose, from: { drives: { m1: 90, m2: 180, m3: 270, m4: 8 } } }, 8],
   ['label-stage', 'reach', { pose: { x: 900, y: 0, rz: 0 } }, 4],
   ['tilt-table', 'reach', { pose: { x: 0, y: 0, z: 300, zyx } }, 3],
@@ -84,6 +84,58 @@ export const asked = [
     zyx: { yaw: 15, pitch: 0, roll: 180 } }, mode: '-2' }, null],
   ['lid-turner', 'reach', { pose: { x: 20, y: -15, z: 420, joints: { shaft: 360 } },
     mode: 'all-standing' }, null],
+
+  ['label-stage', 'path', { from: home, through: [{ line: 'N10', move: 'line', pose },
+    { line: 'N 20 ~!', move: 'circle', pose: { x: -15, y: -10, rz: 0 }, via: { x: 0, y: 10 } },
+    { move: 'joints', ...home }, { move: 'joints', pose }] }, null],
+  ['label-stage', 'path', { from: { pose, mode: '++++' }, through: [{ move: 'line',
+    pose: { x: 0, y: 0, rz: 0 } }], certificate: true, margin_min: { load: 0.5, hold: 0.01 },
+    budget: 4096, timeout_ms: 60000, revision: 1, ref: 'p1', tool: 'camera', orientation: 'zyx' },
+    null],
+  ['label-stage', 'path', { from: home, through: [{ move: 'line',
+    pose: { x: 0.005, y: 0, rz: 0.1 } }],
+    units: { length: 'm', angle: 'rad' }, tool: { body: 'plate', at: [0.01, 0, 0] } }, null],
+  ['label-stage', 'path', { from: home, through: [{ move: 'line',
+    pose: { x: 900, y: 0, rz: 0 } }, { move: 'line', pose }] }, null],
+  ['label-stage', 'path', { from: { drives: { ...home.drives, m4: 8 } },
+    through: [{ move: 'line', pose }] }, 8],
+  ['label-stage', 'path', { from: { pose: { x: 900, y: 0, rz: 0 } },
+    through: [{ move: 'line', pose }] }, null],
+  ['tilt-table', 'path', { from: { drives: struts }, through: [{ move: 'line',
+    pose: { x: 20, y: -15, z: 530, zyx } }] }, null],
+  ['case-packer', 'path', { from: { drives: { j1: 0, j2: 10, j3: 20, j4: 0, j5: 60, j6: 0 } },
+    through: [{ move: 'joints', drives: { j1: 10, j2: 10, j3: 20, j4: 0, j5: 60,
+      j6: 0 } }] }, null],
+  ['lid-turner', 'path', { from: { pose: { x: 0, y: 0, z: 420, joints: { shaft: 0 } } },
+    through: [{ move: 'line', pose: { x: 20, y: -15, z: 420, joints: { shaft: 360 } } }] }, null],
+  ['belt-hopper', 'path', { from: { pose: { x: 35, y: -25, z: 400 } }, through: [{ move: 'circle',
+    via: { x: 0, y: 0, z: 400 }, pose: { x: -35, y: -25, z: 400 } }] }, null],
+
+  ['label-stage', 'free-travel', { ...home, reach: { position: 40, angle: 30 } }, null],
+  ['label-stage', 'free-travel', { pose, mode: '++++', reach: {}, margin_min: 0.5, budget: 64,
+    timeout_ms: 60000, ref: 'f', tool: 'camera', units: { length: 'm' } }, null],
+  ['tilt-table', 'free-travel', { drives: struts, reach: { position: 5, angle: 2 } }, null],
+  ['label-stage', 'free-travel', { pose: { x: 900, y: 0, rz: 0 } }, 4],
+  ['label-stage', 'margin', { ...home, distance: {} }, 1],
+  ['label-stage', 'margin', { ...home, distance: { budget: 64 }, timeout_ms: 60000 }, 1],
+];
+
+// Paths as tables: [mechanism, query, table, expected code (null: any)].
+const start = 'from.m1=90&from.m2=180&from.m3=270&from.m4=0';
+export const tables = [
+  ['label-stage', `${start}&ref=t1&margin_min=0.5&budget=4096&timeout_ms=60000&certificate=true`,
+    'line,move,x,y,rz,via.x,via.y\r\nN10,line,15,-10,6,,\r\n'
+    + '"N,20",circle,-15,-10,0,0,10\r\n', null],
+  ['label-stage', `${start}&units.length=m&units.angle=rad&tool=camera&revision=1&orientation=zyx`
+    + '&margin_min.load=0.5&margin_min.accuracy=0.5&margin_min.speed=0.5&margin_min.spare=0.5'
+    + '&margin_min.travel=0.01'
+    + '&margin_min.hold=0.01', '\ufeffmove,x,y,yaw\nline,0.005,0,0.05\n\njoints,0,0,0\n', null],
+  ['label-stage', 'from.x=0&from.y=0&from.rz=0&mode=%2B+%2B%2B', 'move,m1,drive.m2,m3,m4\n'
+    + 'joints,90,181,270,0\n', null],
+  ['lid-turner', 'from.x=0&from.y=0&from.z=420&from.joint.shaft=0',
+    'move,x,y,z,joint.shaft\nline,5,0,420,90\n', null],
+  ['tilt-table', 'from.a1=520&from.a2=520&from.a3=520&from.a4=520&from.a5=520&from.a6=520',
+    'move, x, y, z, qw, qx, qy, qz\nline, 5, 0, 525, 1, 0, 0, 0\n', null],
 ];
 
 // Batches of every kind: a good member, a bad one, what holds for all, a ref of its own.
@@ -98,7 +150,8 @@ export const batches = [
 export const queries = [
   ['label-stage', 'reach', 'x=15&y=-10&rz=6&mode=+%2B++&margin_min=0.5&ref=N10'],
   ['label-stage', 'reach', 'x=15&y=-10&rz=6&mode=any&tool=camera&revision=1&orientation=zyx'],
-  ['label-stage', 'reach', 'x=15&y=-10&rz=6&from.m1=90&from.m2=180&from.m3=270&from.m4=0'],
+  ['label-stage', 'reach', 'x=15&y=-10&rz=6&from.m1=90&from.m2=180&from.m3=270&from.m4=0'
+    + '&budget=4096&timeout_ms=60000'],
   ['label-stage', 'reach', 'x=15&y=-10&yaw=6&margin_min.accuracy=1&margin_min.load=1'
     + '&margin_min.speed=1&margin_min.spare=1&margin_min.travel=0.01&margin_min.hold=0.01'],
   ['tilt-table', 'reach', 'x=20&y=-15&z=530&yaw=4&pitch=-6&roll=8'],

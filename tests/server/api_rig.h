@@ -21,6 +21,7 @@ typedef struct rig {
     lwd_reply reply;
     cJSON *json;       /* of the last reply, NULL if it was none */
     const char *accept;
+    const char *content_type;
     const char *if_match;
     const char *if_none_match;
     bool may_defer;
@@ -103,6 +104,7 @@ static inline int rig_send(rig *r, lwd_method method, const char *target, const 
                            .body = body != NULL ? body : "",
                            .body_len = body != NULL ? strlen(body) : 0,
                            .accept = r->accept,
+                           .content_type = r->content_type,
                            .if_match = r->if_match,
                            .if_none_match = r->if_none_match,
                            .role = LWD_ROLE_ADMIN,

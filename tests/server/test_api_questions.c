@@ -375,15 +375,24 @@ static void a_blank_in_a_mode_is_a_plus(void **state)
 }
 
 /* Until moves are proved, a move is undecided and never a yes. */
-static void a_move_is_not_a_yes(void **state)
+static void a_straight_move_is_proved(void **state)
 {
     rig *r = *state;
     rig_wants(r, 200, rig_post(r, STAGE "reach",
                                "{\"pose\":{\"x\":1,\"y\":1,\"rz\":1},\"from\":{\"drives\":{"
                                "\"m1\":90,\"m2\":180,\"m3\":270,\"m4\":0}},\"margin_min\":0}"));
-    assert_int_not_equal((int)rig_number(r, "code"), 1);
+    lwt_same(rig_number(r, "code"), 1.0);
+    assert_string_equal(rig_text(r, "checked"), "move");
+    lwt_same(rig_number(r, "at"), 1.0);
+    /* The PLC's form: the same move, the same verdict. */
+    rig_wants(r, 200, rig_get(r, STAGE "reach?x=1&y=1&rz=1&from.m1=90&from.m2=180&from.m3=270"
+                                       "&from.m4=0&margin_min=0&budget=64&timeout_ms=60000"));
+    assert_string_equal(rig_text(r, "checked"), "move");
+    lwt_same(rig_number(r, "code"), 1.0);
+    /* Without the start the posture alone is judged. */
+    rig_wants(r, 200, rig_get(r, STAGE "reach?x=1&y=1&rz=1"));
     assert_string_equal(rig_text(r, "checked"), "posture");
-    assert_non_null(rig_at(r, "reason"));
+    assert_null(rig_at(r, "at"));
 }
 
 static void the_plc_gets_short_lines_in_a_fixed_order(void **state)
@@ -597,7 +606,7 @@ int main(void)
         cmocka_unit_test(expects_a_digest),
         cmocka_unit_test(a_query_string_asks_the_same_as_a_body),
         cmocka_unit_test(a_blank_in_a_mode_is_a_plus),
-        cmocka_unit_test(a_move_is_not_a_yes),
+        cmocka_unit_test(a_straight_move_is_proved),
         cmocka_unit_test(the_plc_sees_the_worst_limit),
         cmocka_unit_test(the_plc_gets_short_lines_in_a_fixed_order),
         cmocka_unit_test(slow_requests_leave_the_event_thread),

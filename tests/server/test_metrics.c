@@ -17,9 +17,9 @@ static void handler(void *context, const lwd_request *request, lwd_reply *reply)
 }
 
 static const lwd_route routes[] = {
-    {LWD_GET, "/a", handler, LWD_ROLE_NONE, false, 0, "a"},
-    {LWD_GET, "/b", handler, LWD_ROLE_NONE, false, 0, "b"},
-    {LWD_POST, "/a", handler, LWD_ROLE_NONE, false, 0, "a"},
+    {LWD_GET, "/a", handler, LWD_ROLE_NONE, false, 0, "a", false},
+    {LWD_GET, "/b", handler, LWD_ROLE_NONE, false, 0, "b", false},
+    {LWD_POST, "/a", handler, LWD_ROLE_NONE, false, 0, "a", false},
 };
 
 static int setup(void **state)

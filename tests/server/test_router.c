@@ -14,7 +14,7 @@ static void handler(void *context, const lwd_request *request, lwd_reply *reply)
     (void)reply;
 }
 
-#define R(method, pattern) {method, pattern, handler, LWD_ROLE_NONE, false, 0, pattern}
+#define R(method, pattern) {method, pattern, handler, LWD_ROLE_NONE, false, 0, pattern, false}
 
 static const lwd_route table[] = {
     R(LWD_GET, "/v1/{}/{}"),         R(LWD_GET, "/v1/mechanisms"),

@@ -199,22 +199,23 @@ static void out_of_memory(void *context, const lwd_request *request, lwd_reply *
 enum { KB = 1024, MB = 1024 * 1024 };
 
 static const lwd_route routes[] = {
-    {LWD_GET, "/about", about, LWD_ROLE_NONE, false, 0, "about"},
-    {LWD_GET, "/readyz", ready, LWD_ROLE_NONE, false, 0, "readyz"},
-    {LWD_GET, "/metrics", metrics, LWD_ROLE_NONE, false, 0, "metrics"},
-    {LWD_GET, "/big", big, LWD_ROLE_QUERY, false, 0, "big"},
-    {LWD_GET, "/still/{}", still, LWD_ROLE_QUERY, false, 0, "still"},
-    {LWD_POST, "/echo", echo, LWD_ROLE_QUERY, false, 64 * KB, "echo"},
-    {LWD_POST, "/slow", slow_echo, LWD_ROLE_QUERY, true, 64 * KB, "slow"},
-    {LWD_GET, "/slow", slow_echo, LWD_ROLE_QUERY, true, 0, "slow"},
-    {LWD_GET, "/faulty", faulty, LWD_ROLE_QUERY, false, 0, "faulty"},
-    {LWD_GET, "/memory", out_of_memory, LWD_ROLE_QUERY, false, 0, "memory"},
-    {LWD_GET, "/v1/things", describe, LWD_ROLE_QUERY, false, 0, "list"},
-    {LWD_GET, "/v1/things/{}", describe, LWD_ROLE_QUERY, false, 0, "thing"},
-    {LWD_PUT, "/v1/things/{}", describe, LWD_ROLE_AUTHOR, false, 4 * MB, "put"},
-    {LWD_POST, "/v1/things/{}/ask", describe, LWD_ROLE_QUERY, false, 64 * KB, "ask"},
-    {LWD_GET, "/v1/things/{}/ask", describe, LWD_ROLE_QUERY, false, 0, "ask"},
-    {LWD_POST, "/v1/things/{}/parts/{}/publish", describe, LWD_ROLE_ADMIN, false, KB, "publish"},
+    {LWD_GET, "/about", about, LWD_ROLE_NONE, false, 0, "about", false},
+    {LWD_GET, "/readyz", ready, LWD_ROLE_NONE, false, 0, "readyz", false},
+    {LWD_GET, "/metrics", metrics, LWD_ROLE_NONE, false, 0, "metrics", false},
+    {LWD_GET, "/big", big, LWD_ROLE_QUERY, false, 0, "big", false},
+    {LWD_GET, "/still/{}", still, LWD_ROLE_QUERY, false, 0, "still", false},
+    {LWD_POST, "/echo", echo, LWD_ROLE_QUERY, false, 64 * KB, "echo", false},
+    {LWD_POST, "/slow", slow_echo, LWD_ROLE_QUERY, true, 64 * KB, "slow", false},
+    {LWD_GET, "/slow", slow_echo, LWD_ROLE_QUERY, true, 0, "slow", false},
+    {LWD_GET, "/faulty", faulty, LWD_ROLE_QUERY, false, 0, "faulty", false},
+    {LWD_GET, "/memory", out_of_memory, LWD_ROLE_QUERY, false, 0, "memory", false},
+    {LWD_GET, "/v1/things", describe, LWD_ROLE_QUERY, false, 0, "list", false},
+    {LWD_GET, "/v1/things/{}", describe, LWD_ROLE_QUERY, false, 0, "thing", false},
+    {LWD_PUT, "/v1/things/{}", describe, LWD_ROLE_AUTHOR, false, 4 * MB, "put", false},
+    {LWD_POST, "/v1/things/{}/ask", describe, LWD_ROLE_QUERY, false, 64 * KB, "ask", false},
+    {LWD_GET, "/v1/things/{}/ask", describe, LWD_ROLE_QUERY, false, 0, "ask", false},
+    {LWD_POST, "/v1/things/{}/parts/{}/publish", describe, LWD_ROLE_ADMIN, false, KB, "publish",
+     false},
 };
 
 lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_size)
@@ -247,6 +248,12 @@ const lwd_route *lwd_app_routes(size_t *n)
 {
     *n = sizeof routes / sizeof routes[0];
     return routes;
+}
+
+void lwd_app_hurry(lwd_app *app, unsigned ms)
+{
+    (void)app;
+    (void)ms;
 }
 
 void lwd_app_stop(lwd_app *app)
