@@ -140,62 +140,12 @@ static lwt_machine *six_legs(bool universal_foot)
 
 static lwt_machine *three_rps(void)
 {
-    lwt_machine *m = lwt_machine_new("three-rps");
-    size_t plate = lwt_add_body(m);
-    size_t slide[3];
-    for (size_t i = 0; i < 3; i++) {
-        double angle = 120.0 * LWT_DEG * (double)i;
-        double foot[3];
-        double top[3];
-        double along[3];
-        on_circle(foot, 1.0, angle, 0.0);
-        on_circle(top, 0.6, angle, 0.8);
-        between(along, foot, top);
-        const double tangent[3] = {-sin(angle), cos(angle), 0};
-        size_t lower = lwt_add_body(m);
-        size_t upper = lwt_add_body(m);
-        (void)lwt_add_revolute(m, 0, lower, foot, tangent);
-        slide[i] = lwt_add_prismatic(m, lower, upper, along);
-        (void)lwt_add_spherical(m, upper, plate, top);
-    }
-    for (size_t i = 0; i < 3; i++) {
-        (void)lwt_drive_joint(m, slide[i]);
-    }
+    size_t hinge[3];
+    size_t plate;
+    lwt_machine *m = lwt_kit_three_rps(0.0, &plate, hinge);
     lw_frame tool = lwt_frame_zyx((const double[3]){0, 0, 0.8}, 0, 0, 0);
     (void)lwt_add_tool(m, plate, &tool);
     lwt_add_outputs(m, "z rx ry");
-    return m;
-}
-
-/* Outer axes of both universals along the base tangent, inner axes parallel: pure translation. */
-static lwt_machine *three_upu(void)
-{
-    lwt_machine *m = lwt_machine_new("three-upu");
-    size_t plate = lwt_add_body(m);
-    size_t slide[3];
-    for (size_t i = 0; i < 3; i++) {
-        double angle = 120.0 * LWT_DEG * (double)i;
-        double foot[3];
-        double top[3];
-        double along[3];
-        double inner[3];
-        on_circle(foot, 1.0, angle, 0.0);
-        on_circle(top, 0.4, angle, 0.8);
-        between(along, foot, top);
-        const double tangent[3] = {-sin(angle), cos(angle), 0};
-        lwt_cross(inner, along, tangent);
-        size_t lower = lwt_add_body(m);
-        size_t upper = lwt_add_body(m);
-        (void)lwt_add_universal(m, 0, lower, foot, tangent, inner);
-        slide[i] = lwt_add_prismatic(m, lower, upper, along);
-        (void)lwt_add_universal(m, upper, plate, top, inner, tangent);
-    }
-    for (size_t i = 0; i < 3; i++) {
-        (void)lwt_drive_joint(m, slide[i]);
-    }
-    lw_frame tool = lwt_frame_zyx((const double[3]){0, 0, 0.8}, 0, 0, 0);
-    (void)lwt_add_tool(m, plate, &tool);
-    lwt_add_outputs(m, "x y z");
     return m;
 }
 
@@ -333,7 +283,7 @@ static lwt_machine *machine_called(const char *name)
     case 2:
         return three_rps();
     case 3:
-        return three_upu();
+        return lwt_kit_three_upu();
     case 4:
     case 5:
         return planar_arms(which - 1);

@@ -245,3 +245,53 @@ lwt_machine *lwt_kit_arm(const char *name, const lwt_table *table, const double 
     unit_length(m);
     return m;
 }
+
+lwt_machine *lwt_kit_three_upu(void)
+{
+    lwt_machine *m = lwt_machine_new("three-upu");
+    size_t plate = lwt_add_body(m);
+    size_t slide[3];
+    for (size_t i = 0; i < 3; i++) {
+        double c = cos(120.0 * LWT_DEG * (double)i);
+        double s = sin(120.0 * LWT_DEG * (double)i);
+        const double foot[3] = {c, s, 0};
+        const double top[3] = {0.4 * c, 0.4 * s, 0.8};
+        const double along[3] = {-0.6 * c, -0.6 * s, 0.8};
+        const double tangent[3] = {-s, c, 0};
+        double inner[3];
+        lwt_cross(inner, along, tangent);
+        size_t lower = lwt_add_body(m);
+        size_t upper = lwt_add_body(m);
+        (void)lwt_add_universal(m, 0, lower, foot, tangent, inner);
+        slide[i] = lwt_add_prismatic(m, lower, upper, along);
+        (void)lwt_add_universal(m, upper, plate, top, inner, tangent);
+    }
+    for (size_t i = 0; i < 3; i++) {
+        (void)lwt_drive_joint(m, slide[i]);
+    }
+    lw_frame tool = lwt_frame_zyx((const double[3]){0, 0, 0.8}, 0, 0, 0);
+    (void)lwt_add_tool(m, plate, &tool);
+    lwt_add_outputs(m, "x y z");
+    return m;
+}
+
+lwt_machine *lwt_kit_three_rps(double turn_rad, size_t *plate, size_t *hinge)
+{
+    lwt_machine *m = lwt_machine_new("three-rps");
+    size_t slide[3];
+    *plate = lwt_add_body(m);
+    for (size_t i = 0; i < 3; i++) {
+        double c = cos(120.0 * LWT_DEG * (double)i + turn_rad);
+        double s = sin(120.0 * LWT_DEG * (double)i + turn_rad);
+        size_t lower = lwt_add_body(m);
+        size_t upper = lwt_add_body(m);
+        hinge[i] = lwt_add_revolute(m, 0, lower, (const double[3]){c, s, 0},
+                                    (const double[3]){-s, c, 0});
+        slide[i] = lwt_add_prismatic(m, lower, upper, (const double[3]){-0.4 * c, -0.4 * s, 0.8});
+        (void)lwt_add_spherical(m, upper, *plate, (const double[3]){0.6 * c, 0.6 * s, 0.8});
+    }
+    for (size_t i = 0; i < 3; i++) {
+        (void)lwt_drive_joint(m, slide[i]);
+    }
+    return m;
+}

@@ -46,6 +46,13 @@ lwt_machine *lwt_kit_delta(const char *name, double base_m, double hand_m, doubl
 double lwt_delta_crank(double base_m, double hand_m, double crank_m, double rod_m,
                        double angle_rad, const double point[3], int branch);
 
+/* Three legs of universal, driven slide, universal. Outer axes along the base tangent, inner axes
+ * parallel: pure translation. Outputs x y z. */
+lwt_machine *lwt_kit_three_upu(void);
+/* Three legs of revolute, driven slide, ball, the first at turn_rad; hinge[3] gets the revolutes.
+ * Without tool and outputs, which the caller adds to *plate. */
+lwt_machine *lwt_kit_three_rps(double turn_rad, size_t *plate, size_t *hinge);
+
 /* Serial arm from a table, every joint driven. */
 typedef struct lwt_table {
     size_t n;

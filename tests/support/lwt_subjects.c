@@ -214,56 +214,13 @@ static lwt_machine *make_ball_loop(void)
     return m;
 }
 
-static lwt_machine *make_three_upu(void)
-{
-    lwt_machine *m = lwt_machine_new("three-upu");
-    size_t plate = lwt_add_body(m);
-    size_t slide[3];
-    for (size_t i = 0; i < 3; i++) {
-        double c = cos(120.0 * LWT_DEG * (double)i);
-        double s = sin(120.0 * LWT_DEG * (double)i);
-        const double foot[3] = {c, s, 0};
-        const double top[3] = {0.4 * c, 0.4 * s, 0.8};
-        const double along[3] = {-0.6 * c, -0.6 * s, 0.8};
-        const double tangent[3] = {-s, c, 0};
-        double inner[3];
-        lwt_cross(inner, along, tangent);
-        size_t lower = lwt_add_body(m);
-        size_t upper = lwt_add_body(m);
-        (void)lwt_add_universal(m, 0, lower, foot, tangent, inner);
-        slide[i] = lwt_add_prismatic(m, lower, upper, along);
-        (void)lwt_add_universal(m, upper, plate, top, inner, tangent);
-    }
-    for (size_t i = 0; i < 3; i++) {
-        (void)lwt_drive_joint(m, slide[i]);
-    }
-    lw_frame tool = lwt_frame_zyx((const double[3]){0, 0, 0.8}, 0, 0, 0);
-    (void)lwt_add_tool(m, plate, &tool);
-    lwt_add_outputs(m, "x y z");
-    return m;
-}
-
 /* Revolute, slide, ball on three legs: height and two tilts, with their small sideways motions. The
  * outputs are the feet's turns, so that no axis of space is named. */
 static lwt_machine *make_three_rps(void)
 {
-    lwt_machine *m = lwt_machine_new("three-rps");
-    size_t plate = lwt_add_body(m);
-    size_t slide[3];
     size_t hinge[3];
-    for (size_t i = 0; i < 3; i++) {
-        double c = cos(120.0 * LWT_DEG * (double)i + 0.1);
-        double s = sin(120.0 * LWT_DEG * (double)i + 0.1);
-        size_t lower = lwt_add_body(m);
-        size_t upper = lwt_add_body(m);
-        hinge[i] = lwt_add_revolute(m, 0, lower, (const double[3]){c, s, 0},
-                                    (const double[3]){-s, c, 0});
-        slide[i] = lwt_add_prismatic(m, lower, upper, (const double[3]){-0.4 * c, -0.4 * s, 0.8});
-        (void)lwt_add_spherical(m, upper, plate, (const double[3]){0.6 * c, 0.6 * s, 0.8});
-    }
-    for (size_t i = 0; i < 3; i++) {
-        (void)lwt_drive_joint(m, slide[i]);
-    }
+    size_t plate;
+    lwt_machine *m = lwt_kit_three_rps(0.1, &plate, hinge);
     (void)lwt_add_tool(m, plate, NULL);
     for (size_t i = 0; i < 3; i++) {
         lwt_add_output_coord(m, lwt_coord(m, hinge[i], 0));
@@ -446,7 +403,7 @@ const lwt_subject lwt_subjects[LWT_SUBJECTS] = {
     {"open-chain", make_open_chain, 0.8, false, 1000},
     {"cylinder-loop", make_cylinder_loop, 0.1, false, 500},
     {"ball-loop", make_ball_loop, 0.2, false, 500},
-    {"three-upu", make_three_upu, 0.12, false, 500},
+    {"three-upu", lwt_kit_three_upu, 0.12, false, 500},
     {"three-rps", make_three_rps, 0.12, false, 500},
     {"gears", make_gears, 0.6, false, 500},
     {"spindle", make_spindle, 0.05, true, 1000},
