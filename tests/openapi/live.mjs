@@ -13,7 +13,7 @@ import { Description } from './description.mjs';
 import { compare, exampleAnswers } from './examples.mjs';
 import { format } from './format.mjs';
 import { root } from './modules.mjs';
-import { asked, batches, queries, verdicts } from './questions.mjs';
+import { asked, batches, queries, tables, verdicts } from './questions.mjs';
 import { not_here, refusals } from './refusals.mjs';
 import { checkBlindness, checkProblems, checkRoutes } from './tables.mjs';
 
@@ -60,7 +60,7 @@ async function ask(title, method, target, request = {}, on = daemon) {
 async function good(title, method, target, request = {}, status = 200) {
   const at = description.find(method, target);
   description.query(at, target).forEach((what) => fault(title, target, what));
-  if (request.body !== undefined) {
+  if (request.body !== undefined && !request.headers?.['Content-Type']) {
     const error = description.request(at, request.body);
     if (error) {
       fault(title, 'the description refuses the request:', error);
@@ -91,7 +91,7 @@ async function examples() {
       await load(longer(demoFlap()), { publish: false });
     }
     const answer = await good(`example ${e.title}`, e.method, e.target, request, e.status);
-    const is = e.type === 'text/plain' ? answer.text : answer.json;
+    const is = e.type.includes('json') ? answer.json : answer.text;
     if (renew) {
       e.example.value = is;
     } else {
@@ -131,6 +131,20 @@ async function questions() {
     const status = answer.json?.answers?.map((a) => a.status ?? 200).join(' ');
     if (status !== '200 422 200') {
       fault(`batch of ${kind}`, 'answers and one refusal between them expected, got', status);
+    }
+  }
+  for (const [name, query, body, code] of tables) {
+    const target = `/v1/mechanisms/${name}/path?${query}`;
+    const headers = { 'Content-Type': 'text/csv; charset=utf-8' };
+    const answer = await good(`${name} path as a table`, 'POST', target, { body, headers });
+    const table = await good(`${name} path as a table, answered so`, 'POST', target,
+      { body, headers: { ...headers, Accept: 'text/csv' } });
+    if (code !== null && answer.json?.code !== code) {
+      fault(`${name} path as a table`, body, `code ${code} expected, got`, answer.text);
+    }
+    if (table.headers['x-code'] !== String(answer.json?.code)
+      || table.text.split('\r\n').length !== answer.json.moves.length + 2) {
+      fault(`${name} path as a table`, 'is answered otherwise than in JSON:', table.text);
     }
   }
   for (const [name, kind, query] of queries) {
@@ -187,6 +201,9 @@ async function catalog() {
   }
   await good('an expected revision', 'GET',
     `/v1/mechanisms/label-stage/reach?x=1&y=1&rz=0&expect=${digest.slice(0, 8)}`);
+  await good('an expected digest beside a table', 'POST', '/v1/mechanisms/label-stage/path?'
+    + `from.m1=90&from.m2=180&from.m3=270&from.m4=0&expect=${digest.slice(0, 8)}`,
+    { body: 'move,x,y,rz\nline,1,1,0\n', headers: { 'Content-Type': 'text/csv' } });
   await good('an expected digest', 'GET',
     `/v1/mechanisms/label-stage/margin?m1=90&m2=180&m3=270&m4=0&expect=${digest}`);
   await good('an expected digest in a body', 'POST', '/v1/mechanisms/label-stage/inverse',
