@@ -162,11 +162,21 @@ static void check_motion(lwt_machine *m, place *from, const lw_weak *weak)
     }
 }
 
-/* A drive that sticks leaves one freedom less; what the others then hold, by definition: rows of
- * the others over the motions square to its own row. Rates at hand: d drive / d output. */
+/* A drive that sticks leaves one freedom less, which the others hold: by interlacing no worse than
+ * all hold their least. With two drives for two freedoms, the motion that drive 1 leaves is square
+ * to its row a1, so h1 = s1 s2 / |a1|, and |a1|^2 + |a2|^2 = s1^2 + s2^2. */
 static void check_braked(lwt_machine *m, const lw_margin_answer *a)
 {
     const lw_singular_answer *s = a->singular;
+    if (m->spec->n_drive == 2) {
+        double sum = 0.0;
+        double want = 0.0;
+        for (size_t d = 0; d < 2; d++) {
+            sum += 1.0 / (s->hold_braked[d] * s->hold_braked[d]);
+            want += 1.0 / (a->drives.singular[d] * a->drives.singular[d]);
+        }
+        lwt_near_rel(sum, want, 1e-9);
+    }
     for (size_t d = 0; d < m->spec->n_drive; d++) {
         assert_int_equal(s->freedoms_braked[d] + 1, (size_t)m->report->mobility);
         if (s->freedoms_braked[d] > 0) {
