@@ -99,6 +99,57 @@ static verdict look(run *r, double t)
     return judge_margins(r);
 }
 
+/* Which side of a forward singularity: the sign of the drives' determinant by outputs, which does not
+ * depend on the basis of the freedoms. 0: not known, or not square. */
+static int side_at(run *r, double t)
+{
+    const lw_model *m = r->p->model;
+    double log2_abs;
+    double a[LW_MAX_OUTPUTS * LW_MAX_OUTPUTS];
+    size_t piv[LW_MAX_OUTPUTS];
+    size_t n = m->mobility;
+    if (m->spec->n_drive != n || m->spec->n_output != n ||
+        !lwi_follow_to(r->p, r->low, t, &r->sol->config)) {
+        return 0;
+    }
+    lwi_solution_finish(r->sol, m, r->ask->tool);
+    lwi_margin_at(&r->work->margin, m, r->ask->tool, r->sol, false, r->work);
+    if ((r->work->margin.classes & LW_CLASS_CONSTRAINT) != 0) {
+        return 0;
+    }
+    memcpy(a, r->work->ak, n * n * sizeof *a);
+    int sign = lwi_lu(a, n, n, piv, &log2_abs);
+    memcpy(a, r->work->tk, n * n * sizeof *a);
+    return sign * lwi_lu(a, n, n, piv, &log2_abs);
+}
+
+/* From the place where hold counts as lost, which is a little before, to where the determinant
+ * changes its sign, if it does so soon. */
+static void cross(run *r, double *at)
+{
+    int before = side_at(r, r->low);
+    double step = LOCATED;
+    double good = *at;
+    double bad = *at;
+    for (int i = 0; i < 24 && before != 0 && bad < 1.0; i++) {
+        good = bad;
+        bad = fmin(bad + step, 1.0);
+        step *= 2.0;
+        int now = side_at(r, bad);
+        if (now == 0) {
+            return;
+        }
+        if (now != before) {
+            while (bad - good > 0.25 * LOCATED) {
+                double mid = 0.5 * (good + bad);
+                *(side_at(r, mid) == before ? &good : &bad) = mid;
+            }
+            *at = bad;
+            return;
+        }
+    }
+}
+
 /* The first place in (r->low, bad] where something is wrong, to LOCATED; its verdict. */
 static verdict locate(run *r, double *at, double bad)
 {
@@ -117,6 +168,10 @@ static verdict locate(run *r, double *at, double bad)
     }
     found = look(r, bad);
     *at = bad;
+    if (found == HOLD) {
+        cross(r, at);
+        (void)look(r, *at);
+    }
     return found;
 }
 

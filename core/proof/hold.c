@@ -16,6 +16,7 @@ static bool place_whole(lwi_prove *p)
 {
     const lwi_system *whole = p->model->whole;
     bool known[LWI_MAX_NODES] = {false};
+    bool turned[LWI_MAX_NODES]; /* its orientation is known: slides keep it */
     lwi_pm_eval *ev = p->whole_eval;
     for (size_t i = 0; i < p->model->spec->n_body; i++) {
         size_t n = whole->body_node[i];
@@ -24,14 +25,24 @@ static bool place_whole(lwi_prove *p)
             known[n] = true;
         }
     }
+    memcpy(turned, known, sizeof turned);
+    for (size_t round = 0; round < 2 * whole->n_element; round++) { /* down the tree, then up */
+        bool down = round < whole->n_element;
+        size_t k = down ? round : 2 * whole->n_element - 1 - round;
+        size_t from = down ? whole->element[k].parent : whole->element[k].child;
+        size_t to = down ? whole->element[k].child : whole->element[k].parent;
+        if (whole->element[k].kind == LWI_SLIDE && turned[from] && !turned[to]) {
+            memcpy(ev->node[to].rot, ev->node[from].rot, sizeof ev->node[to].rot);
+            turned[to] = true;
+        }
+    }
     for (size_t k = 0; k < whole->n_element; k++) {
         const lwi_element *el = &whole->element[k];
-        size_t from = known[el->parent] ? el->parent : el->child;
-        if (!known[from] || (el->kind >= LWI_BALL && !known[el->parent])) {
+        bool at_parent = el->kind == LWI_SLIDE ? turned[el->parent] : known[el->parent];
+        size_t from = el->kind == LWI_FREE || !at_parent ? el->child : el->parent;
+        bool enough = el->kind == LWI_SLIDE ? turned[from] : known[from];
+        if (!enough || (el->kind == LWI_BALL && !at_parent)) {
             return false;
-        }
-        if (el->kind == LWI_FREE) {
-            from = el->child;
         }
         if (el->kind != LWI_SLIDE) {
             lwi_pm_place(ev->p[k], &ev->node[from], el->at);
@@ -41,6 +52,12 @@ static bool place_whole(lwi_prove *p)
             for (int i = 0; i < 3 && el->sign != 1.0; i++) {
                 ev->w[k][i] = lwi_pm_scale(ev->w[k][i], el->sign);
             }
+        }
+    }
+    for (size_t i = 0; i < whole->n_row; i++) {
+        const lwi_row *row = &whole->row[i];
+        if (row->kind != LWI_ROW_LINEAR && !(known[row->a] && known[row->b])) {
+            return false;
         }
     }
     return true;

@@ -252,12 +252,12 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, const lwi_prove *other
     }
     p->rank = p->borrows ? other->rank : calloc(1, sizeof *p->rank);
     p->solver = p->borrows ? other->solver : calloc(1, sizeof *p->solver);
-    if (p->whole_needed) {
+    if (!p->joints) {
         p->whole_eval = calloc(1, sizeof *p->whole_eval);
         p->whole_point = calloc(1, sizeof *p->whole_point);
     }
     if (!p->jac || !p->in || !p->solved || !p->big[0] || !p->big[1] || !p->big[2] || !p->rank ||
-        !p->solver || (p->whole_needed && (!p->whole_eval || !p->whole_point))) {
+        !p->solver || (!p->joints && (!p->whole_eval || !p->whole_point))) {
         return LW_FAIL(err, LW_E_MEMORY, "", "out of memory");
     }
     lwi_hold_constant(p);
