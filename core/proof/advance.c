@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The driver of the proof; see advance.h. Whatever is looked at between proofs is judged as reach
- * judges a posture, in doubles: a limit broken by more than the slack, hold lost, a margin below its
- * threshold. */
+ * judges a posture, in doubles: a limit broken by more than the slack, hold lost, a margin below
+ * its threshold. */
 #include "advance.h"
 
 #include "../math/tol.h"
@@ -99,8 +99,8 @@ static verdict look(run *r, double t)
     return judge_margins(r);
 }
 
-/* Which side of a forward singularity: the sign of the drives' determinant by outputs, which does not
- * depend on the basis of the freedoms. 0: not known, or not square. */
+/* Which side of a forward singularity: the sign of the drives' determinant by outputs, which does
+ * not depend on the basis of the freedoms. 0: not known, or not square. */
 static int side_at(run *r, double t)
 {
     const lw_model *m = r->p->model;
@@ -267,8 +267,8 @@ static void take_piece(run *r, double high)
     a->n_piece++;
 }
 
-/* Readings that can not be followed further: where hold is all but lost, the posture that the drives
- * do not hold is at hand, since its distance goes with the square of what hold is left. */
+/* Readings that can not be followed further: where hold is all but lost, the posture that the
+ * drives do not hold is at hand, since its distance goes with the square of what hold is left. */
 static void stuck_readings(run *r, double high)
 {
     const lw_rank_info *drives = &r->work->margin.drives;

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Do the drives hold the tool on a whole interval? Where the inverse system solves every row and the
- * tool moves in six directions, that is the rank of the drive rates by output rates. Else the
+/* Do the drives hold the tool on a whole interval? Where the inverse system solves every row and
+ * the tool moves in six directions, that is the rank of the drive rates by output rates. Else the
  * closure rows of the whole mechanism are stacked on its drives: full column rank says that with
  * all drives locked nothing moves, freedoms gained at a constraint singularity included. */
 #include "../math/tol.h"

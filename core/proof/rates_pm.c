@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* First-order facts on an interval, by a basis of parameters as many as the freedoms. Moves of the
  * tool: the outputs are the parameters x, and with F the solved rows, G the drives, q the unknowns
- * the drives go by G_x - G_q F_q^-1 F_x. Moves by readings: the leading readings are the parameters,
- * and everything follows from d unknown / d reading = M^-1 (0 1). */
+ * the drives go by G_x - G_q F_q^-1 F_x. Moves by readings: the leading readings are the
+ * parameters, and everything follows from d unknown / d reading = M^-1 (0 1). */
 #include "../math/vec3.h"
 #include "prove.h"
 
@@ -92,7 +92,7 @@ static bool block_rates(lwi_prove *p, const lwi_prove_block *block)
     return true;
 }
 
-/* d unknown / d leading reading: the last columns of M^-1; readings of lengths stand scaled in M. */
+/* d unknown / d leading reading: the last columns of M^-1; lengths stand scaled in M. */
 static bool lead_rates(lwi_prove *p)
 {
     const lwi_prove_block *block = &p->block[0];

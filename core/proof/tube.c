@@ -104,8 +104,8 @@ typedef struct bend {
     double size;   /* Frobenius bound of the point's, or the axes', second derivative */
 } bend;
 
-static bool bend_links(bend *out, const lwi_prove *p, const lwi_pm at[3], size_t link, size_t n_link,
-                       bool axes)
+static bool bend_links(bend *out, const lwi_prove *p, const lwi_pm at[3], size_t link,
+                       size_t n_link, bool axes)
 {
     const lwi_system *sys = p->sys;
     double turn[LWI_BLOCK_VARS];

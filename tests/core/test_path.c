@@ -51,7 +51,7 @@ static asked line(lwt_machine *m, const lw_frame *from, const lw_frame *to,
     return run(m, &move, lwt_by_pose(m, from, NULL, NULL, NULL), min, 0);
 }
 
-/* ---- six struts ------------------------------------------------------------------------------- */
+/* ---- six struts ------------------------------------------------------------------------------ */
 
 static const double BASE[18] = {0.30, 0.07,  0.0,  -0.10, 0.30,  0.01, -0.21, 0.24,  0.0,
                                 -0.22, -0.23, 0.01, -0.09, -0.31, 0.0,  0.31,  -0.08, 0.01};
@@ -65,9 +65,9 @@ static lwt_machine *struts(void)
     return lwt_kit_struts("struts", 6, BASE, PLATE, &ref);
 }
 
-/* The tool on a straight line without a turn: strut i grows as |p0 - b + t d| does, so that it meets
- * a length at a root of a quadratic. A strut's upper limit is set above or below what the move needs
- * by 1, 0.1 and 0.01 mm. */
+/* The tool on a straight line without a turn: strut i grows as |p0 - b + t d| does, so that it
+ * meets a length at a root of a quadratic. A strut's upper limit is set above or below what the
+ * move needs by 1, 0.1 and 0.01 mm. */
 static void a_strut_stops_where_its_sphere_is_met(void **state)
 {
     (void)state;
@@ -260,7 +260,7 @@ static void dense_sampling_never_contradicts(void **state)
     lwt_machine_free(m);
 }
 
-/* ---- planar platforms ------------------------------------------------------------------------- */
+/* ---- planar platforms ------------------------------------------------------------------------ */
 
 static const double ARM_BASE[6] = {-0.26, -0.19, 0.26, -0.19, 0.0, 0.30};
 static const double ARM_PLATE[6] = {-0.06, -0.04, 0.06, -0.04, 0.0, 0.07};
@@ -372,7 +372,7 @@ static void hold_is_lost_where_three_rods_meet(void **state)
     lwt_machine_free(m);
 }
 
-/* ---- arms ------------------------------------------------------------------------------------- */
+/* ---- arms ------------------------------------------------------------------------------------ */
 
 /* In its own plane an arm's wrist goes straight through: on both sides there are postures, but the
  * branches of the wrist meet there, and the mode is not kept. */
@@ -381,7 +381,8 @@ static void a_wrist_that_straightens_is_not_clear(void **state)
     (void)state;
     static const lwt_table table = {.n = 6,
                                     .a = {0, 0.4, 0.02, 0, 0, 0},
-                                    .alpha = {LWT_PI / 2, 0, LWT_PI / 2, -LWT_PI / 2, LWT_PI / 2, 0},
+                                    .alpha = {LWT_PI / 2, 0, LWT_PI / 2, -LWT_PI / 2, LWT_PI / 2,
+                                              0},
                                     .d = {0.3, 0, 0, 0.4, 0, 0.1}};
     static const double bent[6] = {0.0, 0.9, -0.3, 0.0, 0.3, 0.0};
     static const double over[6] = {0.0, 0.9, -0.3, 0.0, -0.3, 0.0};
@@ -455,7 +456,7 @@ static void travel_of_three_slides(void **state)
     lwt_machine_free(m);
 }
 
-/* ---- moves one after another, circles, budgets ------------------------------------------------ */
+/* ---- moves one after another, circles, budgets ----------------------------------------------- */
 
 static atomic_bool stop_now = true;
 
@@ -538,8 +539,8 @@ static void a_circle_bulges(void **state)
     lwt_machine_free(m);
 }
 
-/* Readings of the struts go evenly: every strut's length along the way is known. A limit on one that
- * is passed at a known share. */
+/* Readings of the struts go evenly: every strut's length along the way is known. A limit on one
+ * that is passed at a known share. */
 static void readings_go_evenly(void **state)
 {
     (void)state;
