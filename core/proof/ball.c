@@ -8,7 +8,12 @@
  *
  *     sum y_k T_k >= -c/2 - (sum y_k T_k)^2 / (2 c) >= -c/2 - |y|^2 sum T_k^2 / (2 c)
  *
- * for any c > 0 (Cauchy-Schwarz for symmetric matrices), likewise for the second order with |y|^4
+ * for any c > 0 (Cauchy-Schwarz for symmetric matrices), and more generally
+ *
+ *     X >= -(P + X P^-1 X) / 2,    X P^-1 X <= |y|^2 sum T_k P^-1 T_k    for X = sum y_k T_k
+ *
+ * with any positive definite P, here c times a diagonal one, which is larger where the matrix is
+ * strong; likewise for the second order with |y|^4
  * sum T_kl^2 / 4, and the third order is bounded by its Frobenius norm over the ball. One Cholesky
  * factorisation of a matrix of the tool's size then judges the whole ball. Q is the polar factor of
  * N0. Rounding of point values is covered by SLACK (true errors are below 1e-13); the factorisation
@@ -20,7 +25,7 @@
 #include <stdint.h>
 
 #define SLACK 1e-11
-#define UP LWI_BALL_UP
+#define UP    LWI_BALL_UP
 
 /* ---- the third order, bounded over a ball ---------------------------------------------------- */
 
@@ -28,20 +33,21 @@
  * pose; infinite where a rod may come to its dead point. */
 double lwi_ball_third(const lwi_ball *b, const lwi_rod_at *rod, double radius)
 {
-    enum { SLICES = 8 };
-    double total = 0.0;
+    enum { SLICES = 16 };
+    double total[SLICES] = {0};
+    double worst = 0.0;
     size_t slices = b->n_turn > 0 ? SLICES : 1;
     for (size_t i = 0; i < b->n_rod; i++) {
         const lwi_ball_rod *own = &b->rod[i];
         if (!own->holds) {
             continue;
         }
-        double straight = lwi_ball_spread((const double (*)[3])own->shift, b->n_dir);
+        double straight = lwi_ball_spread((const double(*)[3])own->shift, b->n_dir);
         double extra[LWI_BALL_DIRS][3];
         for (size_t k = 0; k < b->n_dir; k++) {
             lwi_sub(extra[k], own->shift[k], b->shift[k]);
         }
-        double drift = lwi_ball_spread((const double (*)[3])extra, b->n_dir) / b->length_m;
+        double drift = lwi_ball_spread((const double(*)[3])extra, b->n_dir) / b->length_m;
         double rho = lwi_ball_lever(b, rod[i].arm) + (b->n_turn > 0 ? drift * radius : 0.0);
         double arm = lwi_norm(rod[i].arm) / b->length_m + drift * radius;
         double moved = radius * hypot(straight, rho);
@@ -55,7 +61,6 @@ double lwi_ball_third(const lwi_ball *b, const lwi_rod_at *rod, double radius)
         if (!(length > 0.0) || !(s > 0.0)) {
             return INFINITY;
         }
-        double most = 0.0;
         for (size_t q = 0; q < slices; q++) {
             /* share of turning between low and high, of shifting at most what is left */
             double low = (double)q / SLICES;
@@ -71,11 +76,13 @@ double lwi_ball_third(const lwi_ball *b, const lwi_rod_at *rod, double radius)
             double a3 = p3 / b->length_m;
             double moment = a3 + 3.0 * a2 * v.u1 + 3.0 * a1 * v.u2 + arm * v.u3;
             double slide = own->slide >= 0 ? v.u3 * v.u3 : 0.0;
-            most = fmax(most, v.u3 * v.u3 + moment * moment + slide);
+            total[q] += v.u3 * v.u3 + moment * moment + slide;
         }
-        total += most;
     }
-    return sqrt(total) * UP;
+    for (size_t q = 0; q < slices; q++) {
+        worst = fmax(worst, total[q]);
+    }
+    return sqrt(worst) * UP;
 }
 
 /* ---- the test -------------------------------------------------------------------------------- */
@@ -136,13 +143,14 @@ static void whiten(double *t, const lwi_ball_local *l, const double *d)
     }
 }
 
-static void add_square(double *sum, const double *t, size_t m, double factor)
+/* sum += factor t P^-1 t for a diagonal P, given by its inverse. */
+static void add_square(double *sum, const double *t, size_t m, double factor, const double *over)
 {
     for (size_t i = 0; i < m; i++) {
         for (size_t j = 0; j <= i; j++) {
             double s = 0.0;
             for (size_t k = 0; k < m; k++) {
-                s += t[i * m + k] * t[k * m + j];
+                s += t[i * m + k] * over[k] * t[k * m + j];
             }
             sum[i * m + j] += factor * s;
             if (i != j) {
@@ -183,12 +191,20 @@ static bool factor(lwi_ball_local *l)
     return true;
 }
 
+/* The diagonal of P: strong directions have room to take over from weak ones. */
+static double share_of(const lwi_ball_local *l, size_t way, size_t i)
+{
+    return 1.0 + 0.35 * (double)way * (1.0 - l->sigma[l->m - 1] / l->sigma[i]);
+}
+
 /* Adds the squares of n symmetric matrices. In a ball each counts as it is; in a box, where the
  * coefficient of matrix j is at most a_j, (sum a_j T_j)^2 <= (sum a_j t_j) sum a_j T_j^2 / t_j for
  * any t_j > 0, best near their norms. */
-static void add_squares(double *sum, double (*t)[LWI_BALL_COLS * LWI_BALL_COLS], size_t n,
-                        const double *a, bool box, size_t m)
+static void add_squares(double (*sum)[LWI_BALL_COLS * LWI_BALL_COLS], const lwi_ball_local *l,
+                        double (*t)[LWI_BALL_COLS * LWI_BALL_COLS], size_t n, const double *a,
+                        bool box)
 {
+    size_t m = l->m;
     double norm[LWI_BALL_PAIRS];
     double total = 0.0;
     for (size_t j = 0; j < n && box; j++) {
@@ -199,8 +215,11 @@ static void add_squares(double *sum, double (*t)[LWI_BALL_COLS * LWI_BALL_COLS],
         norm[j] = sqrt(square) + 1e-300;
         total += a[j] * norm[j];
     }
-    for (size_t j = 0; j < n; j++) {
-        add_square(sum, t[j], m, box ? UP * total * a[j] / norm[j] : a[j]);
+    for (int v = 0; v < LWI_BALL_WAYS; v++) {
+        memset(sum[v], 0, sizeof sum[v]);
+        for (size_t j = 0; j < n; j++) {
+            add_square(sum[v], t[j], m, box ? UP * total * a[j] / norm[j] : a[j], l->over[v]);
+        }
     }
 }
 
@@ -221,13 +240,16 @@ static bool local_at(lwi_ball_local *l, const lwi_ball *b, const double *y, cons
     if (!factor(l)) {
         return false;
     }
-    memset(l->first, 0, sizeof l->first);
-    memset(l->second, 0, sizeof l->second);
+    for (size_t v = 0; v < LWI_BALL_WAYS; v++) {
+        for (size_t i = 0; i < l->m; i++) {
+            l->over[v][i] = 1.0 / share_of(l, v, i);
+        }
+    }
     for (size_t k = 0; k < b->n_dir; k++) {
         whiten(t[k], l, l->rate[k]);
         a[k] = width != NULL ? width[k] : 1.0;
     }
-    add_squares(l->first, t, b->n_dir, a, width != NULL, l->m);
+    add_squares(l->first, l, t, b->n_dir, a, width != NULL);
     for (size_t i = 0; i < b->n_rod; i++) {
         lwi_ball_rates(&rates[i], b, &b->rod[i], &l->rod[i]);
     }
@@ -246,7 +268,7 @@ static bool local_at(lwi_ball_local *l, const lwi_ball *b, const double *y, cons
             a[pair++] = width == NULL ? part : (j == k ? 0.5 : 1.0) * width[k] * width[j];
         }
     }
-    add_squares(l->second, t, pair, a, width != NULL, l->m);
+    add_squares(l->second, l, t, pair, a, width != NULL);
     l->regular = true;
     return true;
 }
@@ -270,17 +292,20 @@ static bool test_radius(const lwi_ball_local *l, const lwi_ball *b, double r, bo
     }
     rest += SLACK * (double)l->n * arm;
     for (size_t i = 0; i < m * m; i++) {
-        size += l->second[i] * l->second[i];
+        size += l->second[0][i] * l->second[0][i];
     }
-    double c2 = sqrt(two * sqrt(size)) + 1e-12;
-    for (int way = 0; way < 3; way++) {
-        double c1 = way == 0 ? 1.0 : way == 1 ? 0.75 : 0.55;
+    /* Which P are best depends on which directions are weak: a few are tried. */
+    for (size_t way = 0; way < 8 * LWI_BALL_WAYS; way++) {
+        static const double share[4] = {1.0, 0.9, 0.75, 0.55};
+        size_t v = way % LWI_BALL_WAYS;
+        double c1 = share[way / LWI_BALL_WAYS % 4];
+        double c2 = (way < 4 * LWI_BALL_WAYS ? 0.5 : 1.0) * sqrt(two * sqrt(size)) + 1e-12;
         for (size_t i = 0; i < m; i++) {
             for (size_t j = 0; j <= i; j++) {
-                a[i * m + j] = -one * l->first[i * m + j] / (2.0 * c1) -
-                               two * l->second[i * m + j] / (2.0 * c2);
+                a[i * m + j] = -one * l->first[v][i * m + j] / (2.0 * c1) -
+                               two * l->second[v][i * m + j] / (2.0 * c2);
             }
-            a[i * m + i] += 1.0 - 0.5 * c1 - 0.5 * c2 - UP * rest / l->sigma[i];
+            a[i * m + i] += 1.0 - 0.5 * (c1 + c2) * share_of(l, v, i) - UP * rest / l->sigma[i];
         }
         if (positive(a, m)) {
             return true;
@@ -298,7 +323,7 @@ double lwi_ball_forward_once(const lwi_ball *b, lwi_ball_local *l, double most_m
         return 0.0;
     }
     for (size_t i = 0; i < l->m; i++) { /* farther out the first order alone fails */
-        high = fmin(high, sqrt(2.0 / l->first[i * l->m + i]));
+        high = fmin(high, sqrt(4.0 / l->first[0][i * l->m + i]));
     }
     for (int i = 0; i < 16; i++) {
         double r = 0.5 * (low + high);

@@ -16,9 +16,10 @@
 
 enum {
     LWI_BALL_RODS = 24,
-    LWI_BALL_DIRS = 6,  /* freedoms of the tool */
-    LWI_BALL_COLS = 8,  /* freedoms of the tool body without any limb, and slides on it */
+    LWI_BALL_DIRS = 6, /* freedoms of the tool */
+    LWI_BALL_COLS = 8, /* freedoms of the tool body without any limb, and slides on it */
     LWI_BALL_PAIRS = LWI_BALL_DIRS * (LWI_BALL_DIRS + 1) / 2,
+    LWI_BALL_WAYS = 3,
     LWI_BALL_CELLS = 4096
 };
 
@@ -26,49 +27,49 @@ typedef enum lwi_rod_foot { LWI_FOOT_POINT, LWI_FOOT_LINE, LWI_FOOT_CIRCLE } lwi
 
 typedef struct lwi_ball_rod {
     lwi_rod_foot foot;
-    size_t limb;        /* SIZE_MAX: none */
-    int spec_rod;       /* rod of the document, -1: a link */
-    double at[3];       /* POINT, a point of the LINE, the centre of the CIRCLE */
-    double axis[3];     /* LINE, CIRCLE */
-    double radius_m;    /* CIRCLE */
-    bool flat;          /* CIRCLE: the end keeps its height over the circle's plane */
-    double length_m;    /* LINE, CIRCLE */
-    double sign;        /* of the rod along the foot's motion: the branch */
-    double arm[3];      /* from the tool point to the rod's end */
+    size_t limb;                    /* SIZE_MAX: none */
+    int spec_rod;                   /* rod of the document, -1: a link */
+    double at[3];                   /* POINT, a point of the LINE, the centre of the CIRCLE */
+    double axis[3];                 /* LINE, CIRCLE */
+    double radius_m;                /* CIRCLE */
+    bool flat;                      /* CIRCLE: the end keeps its height over the circle's plane */
+    double length_m;                /* LINE, CIRCLE */
+    double sign;                    /* of the rod along the foot's motion: the branch */
+    double arm[3];                  /* from the tool point to the rod's end */
     double shift[LWI_BALL_DIRS][3]; /* motion of the end by each direction, turns left out */
-    bool holds;         /* drive locked: a wrench */
-    int slide;          /* column of the slide its body stands on, -1: the tool body */
+    bool holds;                     /* drive locked: a wrench */
+    int slide;                      /* column of the slide its body stands on, -1: the tool body */
     double slide_axis[3];
 } lwi_ball_rod;
 
 typedef struct lwi_ball {
     double length_m;
-    double tool_m[3];   /* the tool point */
+    double tool_m[3]; /* the tool point */
     lw_frame tool;
-    size_t n_dir;       /* directions: orthonormal in the metric */
-    double shift[LWI_BALL_DIRS][3]; /* of the tool point, m per m */
-    double turn[LWI_BALL_DIRS][3];  /* rad per m */
-    int output[LWI_BALL_DIRS];      /* output joint that the direction moves, -1 none */
+    size_t n_dir;                      /* directions: orthonormal in the metric */
+    double shift[LWI_BALL_DIRS][3];    /* of the tool point, m per m */
+    double turn[LWI_BALL_DIRS][3];     /* rad per m */
+    int output[LWI_BALL_DIRS];         /* output joint that the direction moves, -1 none */
     double output_rate[LWI_BALL_DIRS]; /* its rate, m or rad per m */
-    size_t n_turn;      /* directions that turn */
+    size_t n_turn;                     /* directions that turn */
     size_t n_col;
-    double col[LWI_BALL_COLS][6];   /* twists the tool body is free to make: orthonormal */
-    size_t n_twist;     /* rows of col; slides follow */
+    double col[LWI_BALL_COLS][6]; /* twists the tool body is free to make: orthonormal */
+    size_t n_twist;               /* rows of col; slides follow */
     size_t n_rod;
     lwi_ball_rod rod[LWI_BALL_RODS];
-    bool forward;       /* the rods tell the forward side */
-    bool inverse;       /* the rods tell the inverse side */
+    bool forward; /* the rods tell the forward side */
+    bool inverse; /* the rods tell the inverse side */
 } lwi_ball;
 
 /* A rod at a pose. */
 typedef struct lwi_rod_at {
-    bool real;          /* the foot exists */
-    double slack_m;     /* how far the end may still move until it does not, < 0: beyond */
+    bool real;      /* the foot exists */
+    double slack_m; /* how far the end may still move until it does not, < 0: beyond */
     double arm[3], end[3];
-    double u[3];        /* unit vector along the rod */
-    double tau[3];      /* motion of the foot per unit of its coordinate */
+    double u[3];   /* unit vector along the rod */
+    double tau[3]; /* motion of the foot per unit of its coordinate */
     double foot[3];
-    double along;       /* u . tau / |tau| */
+    double along; /* u . tau / |tau| */
     double length_m;
 } lwi_rod_at;
 
@@ -80,8 +81,10 @@ typedef struct lwi_ball_local {
     double rate[LWI_BALL_DIRS][LWI_BALL_RODS * LWI_BALL_COLS];
     double sigma[LWI_BALL_COLS];
     double left[LWI_BALL_RODS * LWI_BALL_COLS], right[LWI_BALL_COLS * LWI_BALL_COLS];
-    double first[LWI_BALL_COLS * LWI_BALL_COLS];  /* sum of squares of whitened derivatives */
-    double second[LWI_BALL_COLS * LWI_BALL_COLS];
+    double over[LWI_BALL_WAYS][LWI_BALL_COLS]; /* P^-1 */
+    /* sums of T P^-1 T over whitened derivatives T */
+    double first[LWI_BALL_WAYS][LWI_BALL_COLS * LWI_BALL_COLS];
+    double second[LWI_BALL_WAYS][LWI_BALL_COLS * LWI_BALL_COLS];
     bool regular;
 } lwi_ball_local;
 
@@ -113,11 +116,11 @@ double lwi_ball_reach(const lwi_ball *ball, const lwi_ball_rod *rod);
 
 /* Bounds of first and second derivatives along any unit motion within r of the place of `at`. */
 typedef struct lwi_rod_bounds {
-    bool holds;         /* false: the rod may come to a dead point */
-    double p1, p2;      /* of the end, m per m */
-    double u1, u2;      /* of the unit vector */
-    double q1, q2;      /* of the foot's coordinate, rad or m */
-    double length_m;    /* least length of a rod on a fixed point */
+    bool holds;      /* false: the rod may come to a dead point */
+    double p1, p2;   /* of the end, m per m */
+    double u1, u2;   /* of the unit vector */
+    double q1, q2;   /* of the foot's coordinate, rad or m */
+    double length_m; /* least length of a rod on a fixed point */
 } lwi_rod_bounds;
 void lwi_ball_bounds(lwi_rod_bounds *out, const lwi_ball *ball, const lwi_ball_rod *rod,
                      const lwi_rod_at *at, double r);
@@ -153,11 +156,11 @@ lwi_ball_verdict lwi_ball_test(lwi_ball_local *local, const lwi_ball *ball, lwi_
 #define LWI_BALL_UP (1.0 + 1e-9)
 
 typedef struct lwi_rod_rates {
-    double end[LWI_BALL_DIRS][3];  /* P' */
+    double end[LWI_BALL_DIRS][3]; /* P' */
     double arm[LWI_BALL_DIRS][3];
     double turned[LWI_BALL_DIRS][3]; /* the part by turning: w x arm */
     double u[LWI_BALL_DIRS][3];
-    double foot[LWI_BALL_DIRS];    /* q' */
+    double foot[LWI_BALL_DIRS]; /* q' */
 } lwi_rod_rates;
 
 typedef struct lwi_unit_bounds {
@@ -167,14 +170,14 @@ typedef struct lwi_unit_bounds {
 double lwi_ball_spread(const double (*v)[3], size_t n);
 double lwi_ball_lever(const lwi_ball *b, const double arm[3]);
 void lwi_ball_wrench(double *out, const lwi_ball *b, const lwi_ball_rod *rod, const double u[3],
-                   const double moment[3]);
+                     const double moment[3]);
 void lwi_ball_rates(lwi_rod_rates *r, const lwi_ball *b, const lwi_ball_rod *rod,
-                     const lwi_rod_at *at);
+                    const lwi_rod_at *at);
 void lwi_ball_moment(double out[3], const double a[3], const double u[3], double length_m);
 void lwi_ball_bend(double *out, const lwi_ball *b, const lwi_ball_rod *rod, const lwi_rod_at *at,
-                    const lwi_rod_rates *r, size_t k, size_t l);
+                   const lwi_rod_rates *r, size_t k, size_t l);
 double lwi_ball_along(const lwi_ball_rod *rod, const lwi_rod_at *at, double d);
 void lwi_ball_unit(lwi_unit_bounds *out, const lwi_ball_rod *rod, double length, double s,
-                       double p1, double p2, double p3);
+                   double p1, double p2, double p3);
 
 #endif

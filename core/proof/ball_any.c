@@ -42,7 +42,7 @@ typedef struct gathering {
     double *form;   /* n x n, sum of c^2 D^T D */
     double *matrix; /* rows x n */
     size_t rows, room;
-    double step;    /* |dq| that all bounds cover */
+    double step; /* |dq| that all bounds cover */
     bool good;
 } gathering;
 
@@ -87,8 +87,7 @@ static void add_element(chain *c, const gathering *g, size_t k, const double p[3
     }
     case LWI_BALL:
         for (size_t i = 0; i < 3; i++) {
-            add_unknown(c, var + i, g->sys->var_scale[var + i],
-                        far * g->sys->var_scale[var + i]);
+            add_unknown(c, var + i, g->sys->var_scale[var + i], far * g->sys->var_scale[var + i]);
         }
         break;
     case LWI_FREE:
@@ -372,8 +371,8 @@ static double limits_within(const lw_model *m, const lw_solution *sol)
             if (element < 0 || m->whole->element[element].var < 0) {
                 return 0.0;
             }
-            steep += fabs(drive->term[t].factor) *
-                     m->whole->var_scale[m->whole->element[element].var];
+            steep +=
+                fabs(drive->term[t].factor) * m->whole->var_scale[m->whole->element[element].var];
         }
         least = steep > 0.0 ? fmin(least, room / steep) : least;
     }

@@ -1,11 +1,11 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Bounds for the arm with a spherical wrist. With r the wrist centre's distance from the first axis,
- * d that of its plane, x = sqrt(r^2 - d^2) its way out and D its distance from the second axis, a
- * step of the wrist centre of 1 changes r by at most 1, x and D by g = r / x, the first joint by 1 /
- * x, upper arm and forearm in their plane by g / (l1 s) and g / (l2 s), s the sine at the elbow
- * (law of cosines). The forearm's turn is that of the first joint and that in the plane, which are
- * square to each other, and where d = 0 answer to steps that are square to each other as well. The
- * fourth axis turns with the forearm, the sixth with the tool. */
+/* Bounds for the arm with a spherical wrist. With r the wrist centre's distance from the first
+ * axis, d that of its plane, x = sqrt(r^2 - d^2) its way out and D its distance from the second
+ * axis, a step of the wrist centre of 1 changes r by at most 1, x and D by g = r / x, the first
+ * joint by 1 / x, upper arm and forearm in their plane by g / (l1 s) and g / (l2 s), s the sine at
+ * the elbow (law of cosines). The forearm's turn is that of the first joint and that in the plane,
+ * which are square to each other, and where d = 0 answer to steps that are square to each other as
+ * well. The fourth axis turns with the forearm, the sixth with the tool. */
 #include "ball_arm.h"
 
 #include "../math/vec3.h"

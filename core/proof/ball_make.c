@@ -14,7 +14,7 @@ typedef struct making {
     lwi_ball *b;
     const lw_model *m;
     const lw_solution *sol;
-    size_t tool, frame;         /* fused */
+    size_t tool, frame; /* fused */
     bool planar;
     double normal[3];
     size_t n_slide;
@@ -140,8 +140,7 @@ static bool find_slides(making *k)
         for (int j = 0; j < 3; j++) {
             k->slide_axis[s][j] *= sign;
         }
-        slide_rates(k, lw_spec_joint_coord(m->spec, m->propagate[i].joint, 0),
-                    k->slide_rate[s]);
+        slide_rates(k, lw_spec_joint_coord(m->spec, m->propagate[i].joint, 0), k->slide_rate[s]);
     }
     return true;
 }
@@ -375,10 +374,10 @@ static bool rods(making *k)
     }
     for (size_t i = 0; i < m->n_limb; i++) {
         lw_limb_kind kind = m->limb[i].kind;
-        bool good = kind == LW_LIMB_STRUT ? m->limb[i].n_joint == 0
+        bool good = kind == LW_LIMB_STRUT      ? m->limb[i].n_joint == 0
                     : kind == LW_LIMB_TWO_LINK ? two_link(k, i)
                     : kind == LW_LIMB_RAIL_ROD || kind == LW_LIMB_CRANK_ROD ? foot_rods(k, i)
-                                                                           : false;
+                                                                            : false;
         if (!good) {
             return false;
         }
@@ -386,10 +385,12 @@ static bool rods(making *k)
     return struts(k) && joints_told(k);
 }
 
-bool lwi_ball_make(lwi_ball *b, const lw_model *m, const lw_spec_tool *tool,
-                   const lw_solution *sol)
+bool lwi_ball_make(lwi_ball *b, const lw_model *m, const lw_spec_tool *tool, const lw_solution *sol)
 {
-    making k = {.b = b, .m = m, .sol = sol, .tool = m->fused[m->spec->tool[0].body],
+    making k = {.b = b,
+                .m = m,
+                .sol = sol,
+                .tool = m->fused[m->spec->tool[0].body],
                 .frame = m->fused[m->spec->frame]};
     memset(b, 0, sizeof *b);
     b->length_m = m->length_m;

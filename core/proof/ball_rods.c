@@ -85,13 +85,13 @@ static void circle_foot(lwi_rod_at *at, const lwi_ball_rod *rod)
     lwi_axpy(g, d, -height, rod->axis);
     double reach = lwi_norm(g);
     double r = rod->radius_m;
-    double k = (height * height + r * r + reach * reach - rod->length_m * rod->length_m) /
-               (2.0 * r);
+    double k =
+        (height * height + r * r + reach * reach - rod->length_m * rod->length_m) / (2.0 * r);
     double cosine = reach > 0.0 ? k / reach : 2.0;
     /* Distances to the nearest and farthest point of the circle, each changing by no more than
      * the end moves. */
-    at->slack_m = fmin(rod->length_m - hypot(reach - r, height),
-                       hypot(reach + r, height) - rod->length_m);
+    at->slack_m =
+        fmin(rod->length_m - hypot(reach - r, height), hypot(reach + r, height) - rod->length_m);
     at->real = fabs(cosine) < 1.0;
     cosine = cosine > 1.0 ? 1.0 : cosine < -1.0 ? -1.0 : cosine;
     double sine = -rod->sign * sqrt(1.0 - cosine * cosine);
@@ -192,21 +192,23 @@ double lwi_ball_lever(const lwi_ball *b, const double arm[3])
         lwi_cross(v[k], b->turn[k], arm);
     }
     if (b->n_turn == 1) {
-        return lwi_ball_spread((const double (*)[3])v, b->n_dir);
+        return lwi_ball_spread((const double(*)[3])v, b->n_dir);
     }
     return lwi_norm(arm) / b->length_m * UP;
 }
 
 double lwi_ball_reach(const lwi_ball *b, const lwi_ball_rod *rod)
 {
-    return hypot(lwi_ball_spread((const double (*)[3])rod->shift, b->n_dir), lwi_ball_lever(b, rod->arm)) * UP;
+    return hypot(lwi_ball_spread((const double(*)[3])rod->shift, b->n_dir),
+                 lwi_ball_lever(b, rod->arm)) *
+           UP;
 }
 
 /* ---- matrices ------------------------------------------------------------------------------- */
 
 /* A wrench on the columns, from the derivative of a rod: u and arm x u / length, any order. */
 void lwi_ball_wrench(double *out, const lwi_ball *b, const lwi_ball_rod *rod, const double u[3],
-                   const double moment[3])
+                     const double moment[3])
 {
     for (size_t c = 0; c < b->n_twist; c++) {
         out[c] = lwi_dot(b->col[c], u) + lwi_dot(b->col[c] + 3, moment);
@@ -217,7 +219,7 @@ void lwi_ball_wrench(double *out, const lwi_ball *b, const lwi_ball_rod *rod, co
 }
 
 void lwi_ball_rates(lwi_rod_rates *r, const lwi_ball *b, const lwi_ball_rod *rod,
-                     const lwi_rod_at *at)
+                    const lwi_rod_at *at)
 {
     double slope = lwi_dot(at->u, at->tau);
     for (size_t k = 0; k < b->n_dir; k++) {
@@ -273,7 +275,7 @@ size_t lwi_ball_matrix(double *matrix, double (*rate)[LWI_BALL_RODS * LWI_BALL_C
 
 /* Second derivative of one wrench along directions k and l. */
 void lwi_ball_bend(double *out, const lwi_ball *b, const lwi_ball_rod *rod, const lwi_rod_at *at,
-                    const lwi_rod_rates *r, size_t k, size_t l)
+                   const lwi_rod_rates *r, size_t k, size_t l)
 {
     double turned[3];
     double q[3];
@@ -348,15 +350,15 @@ double lwi_ball_along(const lwi_ball_rod *rod, const lwi_rod_at *at, double d)
 
 /* From bounds of P', P'', P''' and s. */
 void lwi_ball_unit(lwi_unit_bounds *out, const lwi_ball_rod *rod, double length, double s,
-                       double p1, double p2, double p3)
+                   double p1, double p2, double p3)
 {
     const double two = 1.1547005383792517;
     double over = 1.0 / length;
     if (rod->foot == LWI_FOOT_POINT) {
         out->u1 = p1 * over;
         out->u2 = p2 * over + two * p1 * p1 * over * over;
-        out->u3 = p3 * over + 3.0 * two * p1 * p2 * over * over + 3.0 * p1 * p1 * p1 * over * over *
-                                                                      over;
+        out->u3 =
+            p3 * over + 3.0 * two * p1 * p2 * over * over + 3.0 * p1 * p1 * p1 * over * over * over;
         return;
     }
     double r = rod->foot == LWI_FOOT_CIRCLE ? rod->radius_m : 0.0;
@@ -365,8 +367,8 @@ void lwi_ball_unit(lwi_unit_bounds *out, const lwi_ball_rod *rod, double length,
     double sum = p2 + r * q1 * q1 + length * out->u1 * out->u1;
     out->u2 = sum * over / s;
     double q2 = r > 0.0 ? sum / (r * s) : 0.0;
-    out->u3 = (p3 + 3.0 * r * q1 * q2 + r * q1 * q1 * q1 + 3.0 * length * out->u1 * out->u2) *
-              over / s;
+    out->u3 =
+        (p3 + 3.0 * r * q1 * q2 + r * q1 * q1 * q1 + 3.0 * length * out->u1 * out->u2) * over / s;
 }
 
 void lwi_ball_bounds(lwi_rod_bounds *out, const lwi_ball *b, const lwi_ball_rod *rod,

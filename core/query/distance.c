@@ -44,8 +44,8 @@ const lw_solution *lwi_distance_solve(const lw_model *m, const double *y, lw_wor
     return sol;
 }
 
-void lwi_distance_take(lw_distance_side *out, const lw_model *m, const double *y,
-                       double distance_m, lw_work *work)
+void lwi_distance_take(lw_distance_side *out, const lw_model *m, const double *y, double distance_m,
+                       lw_work *work)
 {
     out->known_most = true;
     out->at_most_m = distance_m;
@@ -90,9 +90,9 @@ static void forward_side(lw_distance_answer *a, const lw_model *m, const lw_dist
     side->known_least = side->at_least_m > 0.0;
     if (ask->budget > 0 && side->known_least) {
         double look = side->known_most ? most : fmin(most, 8.0 * m->length_m);
-        side->at_least_m = fmax(side->at_least_m,
-                                lwi_ball_cells(w, LWI_BALL_FORWARD, side->at_least_m, look,
-                                               ask->budget, &a->cells, ask->abort));
+        side->at_least_m =
+            fmax(side->at_least_m, lwi_ball_cells(w, LWI_BALL_FORWARD, side->at_least_m, look,
+                                                  ask->budget, &a->cells, ask->abort));
     }
 }
 
@@ -123,9 +123,9 @@ static void inverse_side(lw_distance_answer *a, const lw_model *m, const lw_dist
     side->known_least = side->at_least_m > 0.0;
     side->at_least_m = fmin(side->at_least_m, most);
     if (ask->budget > 0 && side->known_least && side->known_most) {
-        side->at_least_m = fmax(side->at_least_m,
-                                lwi_ball_cells(w, LWI_BALL_INVERSE, side->at_least_m, most,
-                                               ask->budget, &a->cells, ask->abort));
+        side->at_least_m =
+            fmax(side->at_least_m, lwi_ball_cells(w, LWI_BALL_INVERSE, side->at_least_m, most,
+                                                  ask->budget, &a->cells, ask->abort));
     }
 }
 

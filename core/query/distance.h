@@ -12,37 +12,37 @@ enum { LWI_DISTANCE_LIMITS = LW_MAX_COORDS + 2 * LW_MAX_RODS + LW_MAX_BALLS + LW
 
 /* How a limited quantity bends while the tool moves. */
 typedef enum lwi_limit_bend {
-    LWI_BEND_NONE,    /* follows the outputs linearly */
-    LWI_BEND_LENGTH,  /* a rod's length */
-    LWI_BEND_FOOT,    /* a carriage or crank */
-    LWI_BEND_ELBOW,   /* between crank and second link */
-    LWI_BEND_UNIT,    /* between second link and tool */
-    LWI_BEND_CONE,    /* a rod against an axis: its cosine */
-    LWI_BEND_ARM,     /* joint `rod` of an arm with a spherical wrist */
-    LWI_BEND_ANY      /* bounded by the configuration alone */
+    LWI_BEND_NONE,   /* follows the outputs linearly */
+    LWI_BEND_LENGTH, /* a rod's length */
+    LWI_BEND_FOOT,   /* a carriage or crank */
+    LWI_BEND_ELBOW,  /* between crank and second link */
+    LWI_BEND_UNIT,   /* between second link and tool */
+    LWI_BEND_CONE,   /* a rod against an axis: its cosine */
+    LWI_BEND_ARM,    /* joint `rod` of an arm with a spherical wrist */
+    LWI_BEND_ANY     /* bounded by the configuration alone */
 } lwi_limit_bend;
 
 typedef struct lwi_limit_entry {
     lw_limit_of of;
     size_t index, part;
-    lw_range range;     /* cones: of the cosine */
+    lw_range range; /* cones: of the cosine */
     lwi_limit_bend bend;
-    size_t rod;         /* of the ball */
-    bool axis_turns;    /* CONE: the axis goes with the tool */
-    bool axis_cranks;   /* CONE: the axis goes with a crank */
-    double factor;      /* of the quantity in the limited sum */
+    size_t rod;       /* of the ball */
+    bool axis_turns;  /* CONE: the axis goes with the tool */
+    bool axis_cranks; /* CONE: the axis goes with a crank */
+    double factor;    /* of the quantity in the limited sum */
     double value, slope[LWI_BALL_DIRS], steep;
-    double period;      /* of a turn that is told up to whole turns, 0 else */
+    double period; /* of a turn that is told up to whole turns, 0 else */
     bool tried;
 } lwi_limit_entry;
 
 typedef struct lwi_distance_work {
     lwi_ball_work balls;
-    lwi_ball *ball;            /* = &balls.ball */
+    lwi_ball *ball; /* = &balls.ball */
     bool is_arm;
     lwi_ball_arm arm;
     const lw_spec_tool *tool;
-    lw_config start;           /* of the posture: borrowed */
+    lw_config start; /* of the posture: borrowed */
     lw_mode mode;
     bool explicit_inverse;
     size_t n_entry;

@@ -37,8 +37,7 @@ static double size_of(const double *y)
 static void to_directions(double *y, const lwi_ball *b, const double shift[3], const double turn[3])
 {
     for (size_t k = 0; k < b->n_dir; k++) {
-        y[k] = lwi_dot(b->shift[k], shift) +
-               b->length_m * b->length_m * lwi_dot(b->turn[k], turn);
+        y[k] = lwi_dot(b->shift[k], shift) + b->length_m * b->length_m * lwi_dot(b->turn[k], turn);
     }
 }
 

@@ -131,9 +131,7 @@ static void bend_of_joint(lwi_limit_entry *e, const lw_model *m, const lwi_dista
             }
             bool back = m->fused[limb->anchor[0]] != m->fused[m->spec->frame];
             e->rod = rod;
-            e->bend = k == 1                      ? LWI_BEND_ELBOW
-                      : (k == 0) == !back ? LWI_BEND_FOOT
-                                          : LWI_BEND_UNIT;
+            e->bend = k == 1 ? LWI_BEND_ELBOW : (k == 0) == !back ? LWI_BEND_FOOT : LWI_BEND_UNIT;
         }
     }
 }
@@ -215,8 +213,7 @@ static void add_drive(lwi_distance_work *w, const lw_model *m, size_t d)
             bend_of_joint(e, m, w, joint, part);
         }
         e->factor = fabs(drive->term[0].factor);
-        e->period = drive->turning && joint != SIZE_MAX &&
-                            m->spec->joint[joint].type != LW_HELICAL
+        e->period = drive->turning && joint != SIZE_MAX && m->spec->joint[joint].type != LW_HELICAL
                         ? WHOLE_TURN * e->factor
                         : 0.0;
     }
@@ -316,7 +313,9 @@ static double bend_within(const lwi_limit_entry *e, const lwi_ball *b, const lwi
         return e->factor * (v.u2 + v.q2);
     default: {
         /* (u . a)'' with a turning at w' and w'' */
-        double w1 = e->axis_turns && b->n_turn > 0 ? 1.0 / b->length_m : e->axis_cranks ? v.q1 : 0.0;
+        double w1 = e->axis_turns && b->n_turn > 0 ? 1.0 / b->length_m
+                    : e->axis_cranks               ? v.q1
+                                                   : 0.0;
         double w2 = e->axis_cranks ? v.q2 : 0.0;
         return v.u2 + 2.0 * v.u1 * w1 + w1 * w1 + w2;
     }
@@ -410,8 +409,8 @@ static bool crossing(double *y, const lw_model *m, const lwi_limit_entry *e, dou
 }
 
 /* The value at z, followed along the straight way there; false where that is not sure. */
-static bool value_along(double *value, const lw_model *m, const lwi_limit_entry *e,
-                        const double *z, lw_work *work)
+static bool value_along(double *value, const lw_model *m, const lwi_limit_entry *e, const double *z,
+                        lw_work *work)
 {
     enum { PARTS = 8 };
     lwi_distance_work *w = work->distance_work;
@@ -454,8 +453,12 @@ static double confirmed(double *y, lw_limit *limit, const lw_model *m, const lwi
                              e->range.has_high ? value - e->range.high : -INFINITY);
         if (beyond > LWI_LIMIT_SLACK) {
             bool cone = e->part >= LW_PART_CONE;
-            *limit = (lw_limit){.of = e->of, .index = e->index, .part = e->part, .value = value,
-                                .range = e->range, .over = beyond};
+            *limit = (lw_limit){.of = e->of,
+                                .index = e->index,
+                                .part = e->part,
+                                .value = value,
+                                .range = e->range,
+                                .over = beyond};
             if (cone) { /* told as an angle */
                 limit->value = acos(fmin(fmax(value, -1.0), 1.0));
                 limit->range = (lw_range){.has_high = true, .high = acos(e->range.low)};
@@ -492,8 +495,8 @@ static void nearest_limit(lw_distance_side *out, const lw_model *m, lw_work *wor
         const lwi_limit_entry *e = &w->entry[pick];
         double y[LWI_BALL_DIRS];
         lw_limit limit;
-        bool low = e->range.has_low && (!e->range.has_high ||
-                                        e->value - e->range.low < e->range.high - e->value);
+        bool low = e->range.has_low &&
+                   (!e->range.has_high || e->value - e->range.low < e->range.high - e->value);
         if (!crossing(y, m, e, low ? e->range.low : e->range.high, work)) {
             continue;
         }

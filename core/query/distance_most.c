@@ -4,13 +4,14 @@
  * Forward: least |y| with N(y) v = 0, |v| = 1 (N: wrenches, n x m). At an iterate v is the right
  * singular vector of the least singular value and W spans what N leaves out of all others (n - m +
  * 1 columns): to first order W^T (N v + sum dy_k N_k v) = 0, of which the point nearest to the
- * posture is taken (the iteration of Hasofer, Lind and Rackwitz, from memory), shortened until |y|^2
- * / 2 + c sigma falls. Square N: proved by opposite signs of det N at the posture and just beyond,
+ * posture is taken (the iteration of Hasofer, Lind and Rackwitz, from memory), shortened until
+ * |y|^2 / 2 + c sigma falls. Square N: proved by opposite signs of det N at the posture and just
+ * beyond,
  * on a straight way along which the branch exists. More wrenches than freedoms: by the theorem of
  * Newton and Kantorovich on the square system in v and the n - m + 1 combinations of y that matter.
  *
- * Inverse: for each rod, least |y| where its end comes as near to, or as far from, its foot's line or
- * circle as the rod is long; proved by the rod not reaching just beyond. */
+ * Inverse: for each rod, least |y| where its end comes as near to, or as far from, its foot's line
+ * or circle as the rod is long; proved by the rod not reaching just beyond. */
 #include "distance.h"
 
 #include "../math/tol.h"
@@ -126,8 +127,8 @@ typedef struct iterate {
     size_t n, m, q;
     double sigma, top;
     double v[LWI_BALL_COLS];
-    double w[LWI_BALL_COLS][Q];             /* up to n - m + 1 of them */
-    double c[LWI_BALL_COLS];                /* W^T N v */
+    double w[LWI_BALL_COLS][Q]; /* up to n - m + 1 of them */
+    double c[LWI_BALL_COLS];    /* W^T N v */
     double slope[LWI_BALL_COLS][LWI_BALL_DIRS];
 } iterate;
 
@@ -346,8 +347,8 @@ static double rank_lost_within(const double *y, const lwi_ball *b, lwi_ball_loca
         for (size_t q = 0; q < it.q; q++) {
             for (size_t k = 0; k < b->n_dir; k++) {
                 for (size_t j = 0; j < it.m; j++) {
-                    f[i * side + q] += b->length_m * basis[q][k] * l->rate[k][i * it.m + j] *
-                                       it.v[j];
+                    f[i * side + q] +=
+                        b->length_m * basis[q][k] * l->rate[k][i * it.m + j] * it.v[j];
                 }
             }
         }
@@ -492,7 +493,8 @@ static bool dead_point(double *y, const lwi_ball *b, lwi_rod_at *at, size_t i, d
         }
         step = sqrt(step);
         bool close = step < CLOSE * b->length_m;
-        double share = close ? 1.0 : fmin(lwi_pace_stride(&own, slope, b->n_dir), 0.7 * b->length_m / step);
+        double share =
+            close ? 1.0 : fmin(lwi_pace_stride(&own, slope, b->n_dir), 0.7 * b->length_m / step);
         for (size_t k = 0; k < b->n_dir; k++) {
             y[k] += share * slope[k];
         }

@@ -11,8 +11,9 @@
 
 #include "demo.h"
 #include "lwt.h"
+#include "query/distance.h"
 
-enum { PLACES = 60 };
+enum { PLACES = 60, MACHINES = 6 };
 
 typedef struct machine {
     const char *name;
@@ -22,10 +23,16 @@ typedef struct machine {
     size_t n;
     lw_posture_ask at[PLACES];
     size_t budget;
+    double near_low_m, near_high_m; /* not 0: moved this near to the forward singularity found */
 } machine;
 
-static machine demo[5] = {
+static machine demo[MACHINES] = {
     {.name = "tilt-table", .spread_m = 0.05, .spread_rad = 0.25},
+    {.name = "tilt-table",
+     .spread_m = 0.05,
+     .spread_rad = 0.25,
+     .near_low_m = 0.003,
+     .near_high_m = 0.03},
     {.name = "label-stage", .spread_m = 0.09, .spread_rad = 0.6},
     {.name = "belt-hopper", .spread_m = 0.15, .spread_rad = 0.0},
     {.name = "lid-turner", .spread_m = 0.10, .spread_rad = 3.0},
@@ -103,6 +110,36 @@ static void places(machine *m)
     }
 }
 
+/* Each posture moved towards the singular one that was found, until it is near. */
+static void go_near(machine *m)
+{
+    lwt_random random;
+    lwt_random_init(&random, 13);
+    for (size_t i = 0; i < m->n; i++) {
+        const lw_distance_answer *a = ask(m, i, 0);
+        lw_pose_ask *p = &m->at[i].pose;
+        double near = lwt_random_in(&random, m->near_low_m, m->near_high_m);
+        double part = 1.0 - near / a->forward.at_most_m;
+        double quat[4];
+        double size = 0.0;
+        double same = 0.0;
+        lw_quat_from_rot(quat, a->forward.tool.rot);
+        for (size_t k = 0; k < 4; k++) {
+            same += quat[k] * p->quat[k];
+        }
+        for (size_t k = 0; k < 4; k++) {
+            p->quat[k] += part * ((same < 0.0 ? -quat[k] : quat[k]) - p->quat[k]);
+            size += p->quat[k] * p->quat[k];
+        }
+        for (size_t k = 0; k < 4; k++) {
+            p->quat[k] /= sqrt(size);
+        }
+        for (size_t k = 0; k < 3; k++) {
+            p->position_m[k] += part * (a->forward.tool.pos_m[k] - p->position_m[k]);
+        }
+    }
+}
+
 static int by_size(const void *a, const void *b)
 {
     const double *x = a;
@@ -125,10 +162,10 @@ static void ratios(const machine *m, size_t budget)
             const lw_distance_side *sides[3] = {&a->forward, &a->inverse, &a->limit};
             lw_distance_side d = s < 3 ? *sides[s] : a->forward;
             if (s == 3 && !a->inverse.none) {
-                d.at_least_m = fmin(a->forward.none ? INFINITY : a->forward.at_least_m,
-                                    a->inverse.at_least_m);
-                d.known_least = (a->forward.none || a->forward.known_least) &&
-                                a->inverse.known_least;
+                d.at_least_m =
+                    fmin(a->forward.none ? INFINITY : a->forward.at_least_m, a->inverse.at_least_m);
+                d.known_least =
+                    (a->forward.none || a->forward.known_least) && a->inverse.known_least;
                 d.at_most_m = fmin(a->forward.known_most ? a->forward.at_most_m : INFINITY,
                                    a->inverse.known_most ? a->inverse.at_most_m : INFINITY);
                 d.known_most = d.at_most_m < INFINITY;
@@ -142,8 +179,8 @@ static void ratios(const machine *m, size_t budget)
                 most[n++] = d.at_most_m;
             }
         }
-        (void)printf("# %s %s, budget %zu: least known %zu, most known %zu, none %zu of %zu", m->name,
-                     side[s], budget, least_known, most_known, none, m->n);
+        (void)printf("# %s %s, budget %zu: least known %zu, most known %zu, none %zu of %zu",
+                     m->name, side[s], budget, least_known, most_known, none, m->n);
         if (n > 0) {
             qsort(ratio, n, sizeof *ratio, by_size);
             qsort(most, n, sizeof *most, by_size);
@@ -153,6 +190,24 @@ static void ratios(const machine *m, size_t budget)
         }
         (void)printf("\n");
     }
+}
+
+/* Parts of the question at the posture asked about last. */
+static void least_alone(void *context, size_t turn)
+{
+    const machine *m = context;
+    lwi_distance_work *w = m->work->distance_work;
+    (void)turn;
+    lwt_bench_keep(lwi_ball_forward_once(w->ball, &w->balls.local, 8.0 * w->ball->length_m));
+}
+
+static void most_alone(void *context, size_t turn)
+{
+    const machine *m = context;
+    lw_distance_side side = {.known_most = false};
+    (void)turn;
+    lwi_distance_forward_most(&side, m->model, m->work);
+    lwt_bench_keep(side.at_most_m);
 }
 
 static void one(void *context, size_t turn)
@@ -166,7 +221,7 @@ int main(void)
     lwt_bench bench = lwt_bench_begin("distance");
     const char *text = getenv("LW_BENCH_CELLS");
     size_t cells = text != NULL ? (size_t)strtoul(text, NULL, 10) : 0;
-    for (size_t i = 0; i < 5; i++) {
+    for (size_t i = 0; i < MACHINES; i++) {
         machine *m = &demo[i];
         char name[64];
         lw_err err = {.code = LW_OK};
@@ -179,11 +234,21 @@ int main(void)
             (void)fprintf(stderr, "bench_distance: %s: no posture\n", m->name);
             return 1;
         }
+        if (m->near_high_m > 0.0) {
+            go_near(m);
+        }
         for (int round = 0; round < (cells > 0 ? 2 : 1); round++) {
             m->budget = round == 0 ? 0 : cells;
-            (void)snprintf(name, sizeof name, "%s distance, %zu cells", m->name, m->budget);
+            (void)snprintf(name, sizeof name, "%s%s distance, %zu cells", m->name,
+                           m->near_high_m > 0.0 ? " near" : "", m->budget);
             (void)lwt_bench_case(&bench, name, one, m, 0.0);
             ratios(m, m->budget);
+            if (round == 0 && m->work->distance_work->ball->forward) {
+                (void)snprintf(name, sizeof name, "%s forward at_least alone", m->name);
+                (void)lwt_bench_case(&bench, name, least_alone, m, 500.0);
+                (void)snprintf(name, sizeof name, "%s forward at_most alone", m->name);
+                (void)lwt_bench_case(&bench, name, most_alone, m, 2000.0);
+            }
         }
         lw_work_free(m->work);
         lw_model_free(m->model);

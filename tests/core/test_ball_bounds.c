@@ -130,8 +130,8 @@ static void check_derivatives(const lwi_ball *ball, const double *d)
     }
 }
 
-/* The third derivative anywhere within r, by differences, is within its bound; how much of the bound
- * is used at most. */
+/* The third derivative anywhere within r, by differences, is within its bound; how much of the
+ * bound is used at most. */
 static double check_third(const lwi_ball *ball, const double *d, double r, double at_share)
 {
     static const double zero[LWI_BALL_DIRS] = {0};
@@ -298,8 +298,8 @@ static void closure_rows_say_no_more_than_is_true(void **state)
             if (a->solution == NULL) {
                 continue;
             }
-            lwi_rates_at(&r, b.model, &spec->tool[0], &a->solution->config,
-                         a->solution->tool.pos_m, b.work);
+            lwi_rates_at(&r, b.model, &spec->tool[0], &a->solution->config, a->solution->tool.pos_m,
+                         b.work);
             lwi_ball_any_at(&any, b.model, &spec->tool[0], a->solution, b.work);
             if (any.forward && a->forward.known_most) {
                 assert_true(any.forward_m <= a->forward.at_most_m);

@@ -3,206 +3,16 @@
  * against a plain search over all rotations written here. What is checked against is never the code
  * of core/proof/ball*.c: sampled postures are judged by the jacobian and inverse questions. */
 #include "lwt.h"
+#include "lwt_balls.h"
 #include "lwt_build.h"
 #include "lwt_kit.h"
 
 #include "../bench/demo.h"
 
 #include <math.h>
-#include <stdlib.h>
 #include <string.h>
 
 static const double PI = 3.14159265358979323846;
-
-/* LWT_SHARE scales the number of samples: sanitizers and slow machines. */
-static size_t share(size_t n)
-{
-    const char *text = getenv("LWT_SHARE");
-    double part = text != NULL ? strtod(text, NULL) : 1.0;
-    double out = (double)n * part;
-    return out < 10.0 ? 10 : (size_t)out;
-}
-
-typedef struct subject {
-    const lw_model *model;
-    lw_work *work;
-    lw_frame tool;      /* where the question was asked */
-    double coord[LW_MAX_COORDS];
-    lw_mode mode;
-    double length;
-} subject;
-
-/* Keeps what the answer borrowed: the next question takes it away. */
-static lw_distance_answer ask(subject *s, const lw_model *model, lw_work *work,
-                              const lw_posture_ask *posture, size_t budget)
-{
-    const lw_distance_answer *a;
-    lw_err err = {.code = LW_OK};
-    lw_distance_ask question = {.posture = posture, .budget = budget};
-    if (lw_distance(&a, model, &question, work, &err) != LW_OK) {
-        lwt_fail("distance: %s %s", err.where, err.msg);
-    }
-    assert_non_null(a->solution);
-    s->model = model;
-    s->work = work;
-    s->tool = a->solution->tool;
-    s->mode = a->solution->mode;
-    s->length = a->length_m;
-    memcpy(s->coord, a->solution->config.coord,
-           lw_spec_coord_count(lw_model_spec(model)) * sizeof *s->coord);
-    return *a;
-}
-
-static void check_bracket(const lw_distance_side *side)
-{
-    assert_false(side->none && (side->known_least || side->known_most));
-    if (side->known_least) {
-        assert_true(side->at_least_m >= 0.0);
-    }
-    if (side->known_least && side->known_most) {
-        assert_true(side->at_least_m <= side->at_most_m);
-    }
-}
-
-/* A random pose within r of the subject's, as the outputs name it. */
-static void sample(lw_pose_ask *out, const subject *s, double r, lwt_random *random)
-{
-    const lw_spec *spec = lw_model_spec(s->model);
-    double y[LW_MAX_OUTPUTS];
-    double w[3] = {0, 0, 0};
-    double size = 0.0;
-    size_t turns = 0;
-    size_t one = 0;
-    memset(out, 0, sizeof *out);
-    for (size_t o = 0; o < spec->n_output; o++) {
-        y[o] = lwt_random_normal(random);
-        size += y[o] * y[o];
-    }
-    /* more of them near the rim, where a false proof would show */
-    double reach = r * pow(lwt_random_in(random, 0.0, 1.0), 0.15) / sqrt(size);
-    for (size_t o = 0; o < spec->n_output; o++) {
-        lw_output_kind kind = spec->output[o].kind;
-        y[o] *= reach;
-        if (kind <= LW_OUT_Z) {
-            out->has_position[kind] = true;
-            out->position_m[kind] = s->tool.pos_m[kind] + y[o];
-        } else if (kind < LW_OUT_COORD) {
-            one = (size_t)LW_OUT_RZ - (size_t)kind;
-            w[kind - LW_OUT_RX] = y[o] / s->length;
-            turns++;
-        } else {
-            size_t coord = spec->output[o].coord;
-            bool turning = lw_spec_coord_turning(spec, coord);
-            out->joint_coord[out->n_joint] = coord;
-            out->joint_value[out->n_joint++] = s->coord[coord] +
-                                               (turning ? y[o] / s->length : y[o]);
-        }
-    }
-    double zyx[3];
-    lw_zyx_from_rot(zyx, s->tool.rot);
-    if (turns == 1) {
-        out->orient = LW_ORIENT_ZYX;
-        out->has_zyx[one] = true;
-        out->zyx_rad[one] = zyx[one] + w[2 - one];
-    } else if (turns == 3) {
-        double angle = lwt_norm(w);
-        double q[4] = {cos(0.5 * angle), 0, 0, 0};
-        double p[4];
-        for (int k = 0; k < 3; k++) {
-            q[k + 1] = angle > 0.0 ? sin(0.5 * angle) * w[k] / angle : 0.0;
-        }
-        lw_quat_from_rot(p, s->tool.rot);
-        out->orient = LW_ORIENT_QUATERNION;
-        out->quat[0] = q[0] * p[0] - q[1] * p[1] - q[2] * p[2] - q[3] * p[3];
-        out->quat[1] = q[0] * p[1] + q[1] * p[0] + q[2] * p[3] - q[3] * p[2];
-        out->quat[2] = q[0] * p[2] + q[2] * p[0] + q[3] * p[1] - q[1] * p[3];
-        out->quat[3] = q[0] * p[3] + q[3] * p[0] + q[1] * p[2] - q[2] * p[1];
-    }
-}
-
-static const lw_inverse_answer *solve(const subject *s, const lw_pose_ask *pose)
-{
-    const lw_inverse_answer *a;
-    lw_err err = {.code = LW_OK};
-    lw_inverse_ask question = {.pose = *pose, .has_mode = true, .mode = s->mode};
-    if (lw_inverse(&a, s->model, &question, s->work, &err) != LW_OK) {
-        lwt_fail("inverse: %s %s", err.where, err.msg);
-    }
-    return a;
-}
-
-/* The very posture of a solution: by its bodies, so that limits and modes have no say. */
-static void by_bodies(lw_posture_ask *out, const lw_spec *spec, const lw_solution *at)
-{
-    memset(out, 0, sizeof *out);
-    out->kind = LW_BY_BODIES;
-    for (size_t i = 0; i < spec->n_body; i++) {
-        out->has_body[i] = i != spec->frame;
-        out->body[i] = at->config.body[i];
-    }
-}
-
-/* Sign of the rates' determinant where it is square, else 1 where they have full rank, 0 where
- * not. `inverse`: of the tool rates by the drive rates, else the other way round. */
-static int sign_at(const subject *s, const lw_solution *at, bool inverse)
-{
-    const lw_margin_answer *margin;
-    const lw_jacobian_answer *j;
-    lw_err err = {.code = LW_OK};
-    lw_posture_ask posture;
-    lw_jacobian_ask question = {.posture = &posture};
-    by_bodies(&posture, lw_model_spec(s->model), at);
-    assert_int_equal(lw_jacobian(&j, s->model, &question, s->work, &err), LW_OK);
-    if (j->n_drive == j->n_output && (inverse ? j->has_forward : j->has_inverse)) {
-        return lwt_det(inverse ? j->forward : j->inverse, j->n_drive) > 0.0 ? 1 : -1;
-    }
-    assert_int_equal(lw_margin(&margin, s->model, 0, NULL, &posture, s->work, &err), LW_OK);
-    assert_non_null(margin->solution);
-    unsigned lost = inverse ? LW_CLASS_INVERSE : LW_CLASS_FORWARD | LW_CLASS_CONSTRAINT;
-    return (margin->classes & lost) == 0 ? 1 : 0;
-}
-
-/* Samples in each proved ball: no change of sign, no dead point passed, no limit broken. */
-static void check_balls(const lw_model *model, lw_work *work, const lw_posture_ask *posture,
-                        size_t budget, size_t samples, lwt_random *random)
-{
-    subject s;
-    lw_distance_answer a = ask(&s, model, work, posture, budget);
-    lw_pose_ask pose;
-    check_bracket(&a.forward);
-    check_bracket(&a.inverse);
-    check_bracket(&a.limit);
-    sample(&pose, &s, 0.0, random);
-    const lw_inverse_answer *at = solve(&s, &pose);
-    assert_int_equal(at->n_solution, 1);
-    int sign = sign_at(&s, &at->solution[0], false);
-    at = solve(&s, &pose);
-    int inverse_sign = sign_at(&s, &at->solution[0], true);
-    for (size_t i = 0; i < samples; i++) {
-        if (a.forward.known_least && a.forward.at_least_m > 0.0) {
-            sample(&pose, &s, a.forward.at_least_m, random);
-            /* where no posture of the mode is, none is singular */
-            at = solve(&s, &pose);
-            if (at->n_solution > 0) {
-                assert_int_equal(sign_at(&s, &at->solution[0], false), sign);
-            }
-        }
-        if (a.inverse.known_least && a.inverse.at_least_m > 0.0) {
-            sample(&pose, &s, a.inverse.at_least_m, random);
-            at = solve(&s, &pose);
-            assert_int_equal(at->n_solution, 1);
-            /* passing a forward singularity is no matter here, and flips it too */
-            if (!a.forward.known_least) {
-                assert_int_equal(sign_at(&s, &at->solution[0], true), inverse_sign);
-            }
-        }
-        if (a.limit.known_least && a.limit.at_least_m > 0.0) {
-            sample(&pose, &s, a.limit.at_least_m, random);
-            at = solve(&s, &pose);
-            assert_true(at->n_solution == 1 && at->solution->within_limits);
-        }
-    }
-}
 
 static void sampled_demo(const char *name, double spread_m, size_t budget, size_t samples)
 {
@@ -210,19 +20,20 @@ static void sampled_demo(const char *name, double spread_m, size_t budget, size_
     lw_work *work;
     lw_err err = {.code = LW_OK};
     lwt_random random;
-    subject s;
+    lwt_subject_at s;
     assert_int_equal(lw_work_new(&work, model, &err), LW_OK);
     lwt_random_init(&random, 41);
-    (void)ask(&s, model, work, &lw_model_spec(model)->home, 0);
-    check_balls(model, work, &lw_model_spec(model)->home, budget, share(samples), &random);
+    (void)lwt_distance_ask(&s, model, work, &lw_model_spec(model)->home, 0);
+    lwt_distance_balls(model, work, &lw_model_spec(model)->home, budget, lwt_share_of(samples),
+                       &random);
     size_t done = 0;
     for (size_t i = 0; i < 200 && done < 4; i++) {
         lw_posture_ask at = {.kind = LW_BY_POSE, .has_mode = true, .mode = s.mode};
         const lw_posture_answer *got;
-        sample(&at.pose, &s, spread_m, &random);
+        lwt_distance_sample(&at.pose, &s, spread_m, &random);
         if (lw_posture(&got, model, 0, NULL, &at, work, &err) == LW_OK &&
             got->outcome == LW_OUTCOME_OK) {
-            check_balls(model, work, &at, budget, share(samples), &random);
+            lwt_distance_balls(model, work, &at, budget, lwt_share_of(samples), &random);
             done++;
         }
     }
@@ -258,9 +69,9 @@ static void stacked_plates_hold_in_their_balls(void **state)
 /* The arm's brackets, and what was found. */
 static void check_arm(const lw_model *model, lw_work *work, const lw_posture_ask *at)
 {
-    subject s;
+    lwt_subject_at s;
     lw_err err = {.code = LW_OK};
-    lw_distance_answer a = ask(&s, model, work, at, 0);
+    lw_distance_answer a = lwt_distance_ask(&s, model, work, at, 0);
     assert_true(a.forward.none);
     assert_true(a.inverse.known_least && a.inverse.known_most && a.inverse.limb == 0);
     assert_true(a.inverse.at_least_m <= a.inverse.at_most_m);
@@ -294,34 +105,34 @@ static void an_arm_with_a_spherical_wrist_holds_in_its_balls(void **state)
     lw_work *work;
     lw_err err = {.code = LW_OK};
     lwt_random random;
-    subject s;
+    lwt_subject_at s;
     assert_int_equal(lw_work_new(&work, model, &err), LW_OK);
     lwt_random_init(&random, 43);
     const lw_posture_ask *home = &lw_model_spec(model)->home;
-    (void)ask(&s, model, work, home, 0);
+    (void)lwt_distance_ask(&s, model, work, home, 0);
     check_arm(model, work, home);
-    check_balls(model, work, home, 0, share(1000), &random);
+    lwt_distance_balls(model, work, home, 0, lwt_share_of(1000), &random);
     /* Every mode of the document: its example. */
     const lw_spec *spec = lw_model_spec(model);
     for (size_t i = 0; i < spec->n_mode; i++) {
         check_arm(model, work, &spec->mode[i].example);
-        check_balls(model, work, &spec->mode[i].example, 0, share(300), &random);
+        lwt_distance_balls(model, work, &spec->mode[i].example, 0, lwt_share_of(300), &random);
     }
     for (size_t i = 0; i < 6; i++) {
         lw_posture_ask at = {.kind = LW_BY_POSE, .has_mode = true, .mode = s.mode};
         const lw_posture_answer *got;
-        sample(&at.pose, &s, 0.2, &random);
+        lwt_distance_sample(&at.pose, &s, 0.2, &random);
         if (lw_posture(&got, model, 0, NULL, &at, work, &err) == LW_OK &&
             got->outcome == LW_OUTCOME_OK) {
             check_arm(model, work, &at);
-            check_balls(model, work, &at, 0, share(300), &random);
+            lwt_distance_balls(model, work, &at, 0, lwt_share_of(300), &random);
         }
     }
     lw_work_free(work);
     lw_model_free(model);
 }
 
-/* ---- three struts in the plane ---------------------------------------------------------------- */
+/* ---- three struts in the plane  */
 
 static const double tri_base[6] = {0.0, 0.0, 1.2, 0.1, 0.5, 1.0};
 static const double tri_plate[6] = {-0.25, -0.15, 0.3, -0.1, 0.02, 0.28};
@@ -390,9 +201,9 @@ static void brackets_the_conic_of_three_planar_struts(void **state)
         lw_frame frame = lwt_frame_planar(pose[i][0], pose[i][1], pose[i][2]);
         const lw_posture_ask *at = lwt_by_pose(m, &frame, NULL, NULL, NULL);
         double truth = three_lines_nearest(pose[i]);
-        subject s;
-        lw_distance_answer once = ask(&s, m->model, m->work, at, 0);
-        lw_distance_answer many = ask(&s, m->model, m->work, at, 20000);
+        lwt_subject_at s;
+        lw_distance_answer once = lwt_distance_ask(&s, m->model, m->work, at, 0);
+        lw_distance_answer many = lwt_distance_ask(&s, m->model, m->work, at, 20000);
         assert_true(once.forward.known_least && once.forward.known_most);
         assert_true(once.forward.at_least_m <= truth && many.forward.at_least_m <= truth);
         assert_true(many.forward.at_least_m >= once.forward.at_least_m);
@@ -409,19 +220,19 @@ static void brackets_the_conic_of_three_planar_struts(void **state)
         lwt_near(three_lines(found->pos_m[0], found->pos_m[1], pose[i][2] + turn), 0.0, 1e-5);
         assert_true(once.inverse.none); /* a strut has no dead point but length zero */
         assert_true(once.limit.none);
-        check_balls(m->model, m->work, at, 500, share(700), &random);
+        lwt_distance_balls(m->model, m->work, at, 500, lwt_share_of(700), &random);
         lwt_machine_free(m);
     }
 }
 
-/* ---- arms in the plane: stretched and folded --------------------------------------------------- */
+/* ---- arms in the plane: stretched and folded  */
 
 static const double arm_base[6] = {0.0, 0.0, 1.0, 0.0, 0.5, 0.9};
 static const double arm_plate[6] = {-0.15, -0.1, 0.15, -0.1, 0.0, 0.17};
 
 /* For one turn an arm is stretched or folded on two circles about its base: the way to them is
- * straight. Over all turns by a plain scan. (Textbook: a two-link arm reaches an annulus of radii l1
- * + l2 and |l1 - l2|.) */
+ * straight. Over all turns by a plain scan. (Textbook: a two-link arm reaches an annulus of radii
+ * l1 + l2 and |l1 - l2|.) */
 static double annulus_nearest(const double pose[3], double l1, double l2)
 {
     double best = INFINITY;
@@ -451,26 +262,26 @@ static void brackets_stretched_and_folded_arms(void **state)
         double theta[3];
         double l1 = i % 2 == 0 ? 0.45 : 0.6;
         double l2 = 0.5;
-        lwt_machine *m = lwt_kit_planar_rrr("arms", 3, arm_base, arm_plate, l1, l2, pose[i],
-                                            elbow[i], theta);
+        lwt_machine *m =
+            lwt_kit_planar_rrr("arms", 3, arm_base, arm_plate, l1, l2, pose[i], elbow[i], theta);
         lwt_machine_load(m);
         lw_frame frame = lwt_frame_planar(pose[i][0], pose[i][1], pose[i][2]);
         const lw_mode *mode = &m->report->reference_mode;
         const lw_posture_ask *at = lwt_by_pose(m, &frame, NULL, mode, NULL);
         double truth = annulus_nearest(pose[i], l1, l2);
-        subject s;
-        lw_distance_answer a = ask(&s, m->model, m->work, at, 8000);
+        lwt_subject_at s;
+        lw_distance_answer a = lwt_distance_ask(&s, m->model, m->work, at, 8000);
         assert_true(a.inverse.known_least && a.inverse.known_most);
         assert_true(a.inverse.at_least_m <= truth);
         lwt_near_rel(a.inverse.at_most_m, truth, 1e-4);
         assert_true(a.inverse.at_least_m >= 0.95 * truth);
         assert_true(a.inverse.limb < 3);
-        check_balls(m->model, m->work, at, 800, share(700), &random);
+        lwt_distance_balls(m->model, m->work, at, 800, lwt_share_of(700), &random);
         lwt_machine_free(m);
     }
 }
 
-/* ---- machines that never turn: closed forms ---------------------------------------------------- */
+/* ---- machines that never turn: closed forms  */
 
 /* A rod of a carriage stands square to the rail where its end is as far from the rail's line as the
  * rod is long; the hand does not turn, so the way there is straight. Figures of the belt hopper's
@@ -484,17 +295,16 @@ static void a_rod_square_to_its_rail_is_a_straight_way_off(void **state)
     lw_work *work;
     lw_err err = {.code = LW_OK};
     lwt_random random;
-    subject s;
+    lwt_subject_at s;
     assert_int_equal(lw_work_new(&work, model, &err), LW_OK);
     lwt_random_init(&random, 8);
-    (void)ask(&s, model, work, &lw_model_spec(model)->home, 0);
+    (void)lwt_distance_ask(&s, model, work, &lw_model_spec(model)->home, 0);
     for (size_t i = 0; i < 20; i++) {
         lw_posture_ask at = {.kind = LW_BY_POSE, .has_mode = true, .mode = s.mode};
         const lw_posture_answer *got;
-        subject here;
-        sample(&at.pose, &s, 0.12, &random);
-        if (lw_posture(&got, model, 0, NULL, &at, work, &err) != LW_OK ||
-            got->solution == NULL) {
+        lwt_subject_at here;
+        lwt_distance_sample(&at.pose, &s, 0.12, &random);
+        if (lw_posture(&got, model, 0, NULL, &at, work, &err) != LW_OK || got->solution == NULL) {
             continue;
         }
         double truth = INFINITY;
@@ -503,7 +313,7 @@ static void a_rod_square_to_its_rail_is_a_straight_way_off(void **state)
                              at.pose.position_m[1] + ball[k][1] - rail[k][1]);
             truth = fmin(truth, 0.4 - d);
         }
-        lw_distance_answer a = ask(&here, model, work, &at, 0);
+        lw_distance_answer a = lwt_distance_ask(&here, model, work, &at, 0);
         lwt_near(a.inverse.at_least_m, truth, 1e-6);
         lwt_near(a.inverse.at_most_m, truth, 1e-6);
     }
@@ -511,8 +321,8 @@ static void a_rod_square_to_its_rail_is_a_straight_way_off(void **state)
     lw_model_free(model);
 }
 
-/* A crank's rod is at a dead point where its end is as near to, or as far from, the knee's circle as
- * the rod is long. Delta-type machine of the kit; distance of a point to a circle is textbook
+/* A crank's rod is at a dead point where its end is as near to, or as far from, the knee's circle
+ * as the rod is long. Delta-type machine of the kit; distance of a point to a circle is textbook
  * geometry. */
 static void a_crank_in_line_with_its_rod_is_a_straight_way_off(void **state)
 {
@@ -543,12 +353,12 @@ static void a_crank_in_line_with_its_rod_is_a_straight_way_off(void **state)
             truth = fmin(truth, rod - hypot(reach - crank, aside));
             truth = fmin(truth, hypot(reach + crank, aside) - rod);
         }
-        subject s;
+        lwt_subject_at s;
         const lw_posture_ask *at = lwt_by_pose(m, &frame, NULL, &m->report->reference_mode, NULL);
-        lw_distance_answer a = ask(&s, m->model, m->work, at, 0);
+        lw_distance_answer a = lwt_distance_ask(&s, m->model, m->work, at, 0);
         lwt_near(a.inverse.at_least_m, truth, 1e-6);
         lwt_near(a.inverse.at_most_m, truth, 1e-5);
-        check_balls(m->model, m->work, at, 300, share(300), &random);
+        lwt_distance_balls(m->model, m->work, at, 300, lwt_share_of(300), &random);
     }
     lwt_machine_free(m);
 }
@@ -587,8 +397,8 @@ static void brackets_the_limits_of_struts(void **state)
         }
         lw_frame frame = lwt_frame_planar(at[0], at[1], at[2]);
         const lw_posture_ask *posture = lwt_by_pose(m, &frame, NULL, NULL, NULL);
-        subject s;
-        lw_distance_answer a = ask(&s, m->model, m->work, posture, 0);
+        lwt_subject_at s;
+        lw_distance_answer a = lwt_distance_ask(&s, m->model, m->work, posture, 0);
         assert_true(a.limit.known_least && a.limit.known_most);
         assert_true(a.limit.at_least_m <= truth);
         assert_true(a.limit.at_least_m >= 0.6 * truth);
@@ -599,32 +409,32 @@ static void brackets_the_limits_of_struts(void **state)
     lwt_machine_free(m);
 }
 
-/* ---- any mechanism, by its closure rows -------------------------------------------------------- */
+/* ---- any mechanism, by its closure rows  */
 
 /* Samples reached from the posture itself: there is no list of modes to go by. */
 static void check_any(lwt_machine *m, const lw_posture_ask *at, lwt_random *random)
 {
-    subject s;
-    lw_distance_answer a = ask(&s, m->model, m->work, at, 0);
+    lwt_subject_at s;
+    lw_distance_answer a = lwt_distance_ask(&s, m->model, m->work, at, 0);
     lw_posture_ask start;
     lw_err err = {.code = LW_OK};
     const lw_posture_answer *posture;
     assert_true(a.forward.none || a.forward.known_least);
     assert_true(a.inverse.known_least);
-    check_bracket(&a.forward);
-    check_bracket(&a.inverse);
+    lwt_distance_bracket(&a.forward);
+    lwt_distance_bracket(&a.inverse);
     assert_int_equal(lw_posture(&posture, m->model, 0, NULL, at, m->work, &err), LW_OK);
-    by_bodies(&start, m->spec, posture->solution);
+    lwt_by_bodies(&start, m->spec, posture->solution);
     for (int side = 0; side < 2; side++) {
         double r = side == 0 ? a.forward.at_least_m : a.inverse.at_least_m;
         int sign = 0;
-        for (size_t i = 0; i < share(300) && (side == 1 || !a.forward.none); i++) {
+        for (size_t i = 0; i < lwt_share_of(300) && (side == 1 || !a.forward.none); i++) {
             const lw_inverse_answer *found;
             lw_inverse_ask question = {.near = &start};
-            sample(&question.pose, &s, i == 0 ? 0.0 : r, random);
+            lwt_distance_sample(&question.pose, &s, i == 0 ? 0.0 : r, random);
             assert_int_equal(lw_inverse(&found, m->model, &question, m->work, &err), LW_OK);
             assert_true(found->n_solution > 0);
-            int here = sign_at(&s, &found->solution[0], side == 1);
+            int here = lwt_rates_sign(&s, &found->solution[0], side == 1);
             sign = i == 0 ? here : sign;
             assert_int_equal(here, sign);
         }
@@ -644,8 +454,8 @@ static void a_planar_arm_of_two_links_keeps_off_its_annulus(void **state)
         lwt_machine_load(m);
         double zero[2] = {0, 0};
         const lw_posture_ask *at = lwt_by_drives(m, zero, NULL);
-        subject s;
-        lw_distance_answer a = ask(&s, m->model, m->work, at, 0);
+        lwt_subject_at s;
+        lw_distance_answer a = lwt_distance_ask(&s, m->model, m->work, at, 0);
         double d = hypot(s.tool.pos_m[0], s.tool.pos_m[1]);
         assert_true(a.forward.none);
         assert_true(a.inverse.known_least);
@@ -683,16 +493,16 @@ static void answers_alike_and_allocates_nothing(void **state)
     lw_model *model = lwt_bench_demo("tilt-table");
     lw_work *work[2];
     lw_err err = {.code = LW_OK};
-    subject s;
+    lwt_subject_at s;
     assert_int_equal(lw_work_new(&work[0], model, &err), LW_OK);
     assert_int_equal(lw_work_new(&work[1], model, &err), LW_OK);
     const lw_posture_ask *home = &lw_model_spec(model)->home;
-    lw_distance_answer a = ask(&s, model, work[0], home, 500);
+    lw_distance_answer a = lwt_distance_ask(&s, model, work[0], home, 500);
     lwt_alloc_reset();
-    (void)ask(&s, model, work[0], home, 0);
-    lw_distance_answer b = ask(&s, model, work[0], home, 500);
+    (void)lwt_distance_ask(&s, model, work[0], home, 0);
+    lw_distance_answer b = lwt_distance_ask(&s, model, work[0], home, 500);
     assert_int_equal(lwt_alloc_calls(), 0);
-    lw_distance_answer c = ask(&s, model, work[1], home, 500);
+    lw_distance_answer c = lwt_distance_ask(&s, model, work[1], home, 500);
     lwt_same(b.forward.at_least_m, a.forward.at_least_m);
     lwt_same(b.forward.at_most_m, a.forward.at_most_m);
     lwt_same(b.limit.at_least_m, a.limit.at_least_m);
