@@ -10,7 +10,8 @@
 #include <string.h>
 
 #define SMALLEST 0x1p-22
-#define LOCATED 0x1p-24
+#define LOCATED 0x1p-22
+#define LONG 0.2
 
 typedef enum verdict { GOOD, LIMIT, HOLD, MARGIN, NO_REACH, UNKNOWN } verdict;
 
@@ -150,23 +151,69 @@ static void cross(run *r, double *at)
     }
 }
 
-/* The first place in (r->low, bad] where something is wrong, to LOCATED; its verdict. */
-static verdict locate(run *r, double *at, double bad)
+/* How far the posture in r->sol is on the good side of what `v` found wrong, in one unit: a margin
+ * over its threshold, or room to the limit. NAN where that is no number. */
+static double room_of(const run *r, verdict v, const lw_limit *limit, int margin)
 {
+    const lw_spec *spec = r->p->model->spec;
+    double x;
+    if (v == MARGIN) {
+        double least = r->ask->min->value[margin];
+        return least > 0.0 ? r->work->margin.margin[margin].value / least - 1.0 : NAN;
+    }
+    if (v != LIMIT || limit->part >= LW_PART_CONE) {
+        return NAN;
+    }
+    if (limit->of == LW_LIMIT_DRIVE) {
+        x = r->sol->drive[limit->index];
+    } else if (limit->of == LW_LIMIT_ROD) {
+        x = r->p->model->whole->rod[limit->index].length_m +
+            r->sol->config.coord[lw_spec_rod_coord(spec, limit->index)];
+    } else {
+        x = r->sol->config.coord[lw_spec_joint_coord(spec, limit->index, limit->part)];
+    }
+    return limit->value > limit->range.low && limit->range.has_high ? limit->range.high - x
+                                                                    : x - limit->range.low;
+}
+
+/* The first place in (r->low, bad] where something is wrong, to LOCATED; its verdict. Where the
+ * room is a number on both sides, by false position (Illinois), else by halves. */
+static verdict locate(run *r, double *at, double bad, verdict v)
+{
+    lw_limit limit = r->sol->limit[0];
+    int margin = r->margin;
     double good = r->low;
-    verdict found = UNKNOWN;
-    while (bad - good > LOCATED) {
-        double mid = 0.5 * (good + bad);
-        verdict v = look(r, mid);
-        if (v == GOOD) {
-            good = mid;
-        } else if (v == UNKNOWN) {
+    double f_bad = room_of(r, v, &limit, margin);
+    double f_good = NAN;
+    for (int turn = 0; bad - good > LOCATED && turn < 60; turn++) {
+        double t = 0.5 * (good + bad);
+        if (f_good > 0.0 && f_bad < 0.0 && turn % 4 != 3) {
+            t = good + (bad - good) * f_good / (f_good - f_bad);
+            /* A little to the far side, so that both ends close in. */
+            t += t - good < bad - t ? 0.4 * LOCATED : -0.4 * LOCATED;
+            t = fmin(fmax(t, good + 0.3 * LOCATED), bad - 0.3 * LOCATED);
+        }
+        verdict now = look(r, turn == 0 ? good : t);
+        if (now == UNKNOWN) {
             break;
+        }
+        double f = room_of(r, v, &limit, margin);
+        if (now == GOOD) {
+            f_bad *= turn > 1 && good > r->low ? 0.5 : 1.0;
+            good = turn == 0 ? good : t;
+            f_good = f;
+        } else if (turn == 0) {
+            bad = good;
         } else {
-            bad = mid;
+            f_good *= 0.5;
+            bad = t;
+            f_bad = now == v && f < 0.0 ? f : NAN;
+            v = now;
+            limit = now == LIMIT ? r->sol->limit[0] : limit;
+            margin = now == MARGIN ? r->margin : margin;
         }
     }
-    found = look(r, bad);
+    verdict found = look(r, bad);
     *at = bad;
     if (found == HOLD) {
         cross(r, at);
@@ -301,6 +348,15 @@ static void stuck(run *r, double high)
         stuck_readings(r, high);
         return;
     }
+    for (double beyond = SMALLEST; beyond < 0.01; beyond *= 4.0) {
+        double at;
+        double t = fmin(r->low + beyond, 1.0);
+        verdict v = look(r, t);
+        if (v == NO_REACH && (v = locate(r, &at, t, v)) != GOOD && v != UNKNOWN) {
+            witness(r, v, at);
+            return;
+        }
+    }
     r->a->limb = p->limb;
     double value = 1.0;
     if (p->limb < p->model->n_limb && lwi_follow_to(r->p, r->low, r->low, &r->sol->config)) {
@@ -327,7 +383,7 @@ static bool screen(run *r, double step, double *cap)
     if (v == GOOD || v == UNKNOWN) {
         return false;
     }
-    v = locate(r, &at, mid);
+    v = locate(r, &at, mid, v);
     if (v == GOOD || v == UNKNOWN) {
         return false;
     }
@@ -345,13 +401,8 @@ void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
     bool settled = false;
     a->outcome = LW_OUTCOME_OK;
     *lost = false;
-    verdict v = look(&r, 0.0);
     r.mode = sol->mode;
-    if (v != GOOD && v != UNKNOWN) {
-        witness(&r, v, 0.0);
-        *proved = 0.0;
-        return;
-    }
+    size_t failed = 0; /* one after another */
     while (r.low < cap) {
         double high = r.low + step < cap ? r.low + step : cap;
         if (ask->abort != NULL && atomic_load_explicit(ask->abort, memory_order_relaxed)) {
@@ -371,7 +422,15 @@ void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
             lwi_prove_accept(p);
             r.low = high;
             step *= 2.0;
+            failed = 0;
             continue;
+        }
+        if (failed++ == 0 && r.low == 0.0 && !settled) {
+            verdict v = look(&r, 0.0);
+            if (v != GOOD && v != UNKNOWN) {
+                witness(&r, v, 0.0);
+                break;
+            }
         }
         if (p->stage == LWI_STAGE_UNSUPPORTED) {
             undecided(&r, LW_STOP_UNSUPPORTED, 1.0,
@@ -379,7 +438,9 @@ void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
                       "version");
             break;
         }
-        if (!settled && screen(&r, high - r.low, &cap)) {
+        /* An interval that is too long for its branch says nothing of its middle. */
+        bool long_one = p->stage <= LWI_STAGE_BRANCH && high - r.low > LONG;
+        if (!settled && !long_one && screen(&r, high - r.low, &cap)) {
             settled = true;
             if (!ask->close_up) {
                 break;

@@ -94,11 +94,11 @@ static bool solve(lwi_prove *p)
         }
         lwi_state_step(p->state, sys, p->step);
         p->swing = iteration == 0 && worst > p->swing ? worst : p->swing;
-        if (worst <= 1e-9) {
-            return true; /* the next step would be below 1e-16 */
+        if (worst <= 1e-6) {
+            return true; /* what is left is of the order of its square */
         }
         if (iteration > 2 && !(worst <= 0.5 * last)) {
-            return worst <= 1e-11;
+            return false;
         }
         last = worst;
     }
@@ -183,7 +183,7 @@ bool lwi_follow_to(lwi_prove *p, double low, double t, lw_config *config)
     lwi_state_from_point(p->state, p, &p->left);
     p->swing = 0.0;
     /* In steps, so that the branch is not jumped. */
-    for (int k = 1; k <= 4; k++) {
+    for (int k = t > low ? 1 : 4; k <= 4; k++) {
         give(p, low + 0.25 * k * (t - low));
         if (p->n_block > 0 && !solve(p)) {
             return false;
