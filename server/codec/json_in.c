@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Cursor, key tables and the telling of faults; the typed getters are in json_values.c. The only
- * files that include cJSON are this one, json_tree.c, json_values.c and canonical.c. */
+ * files that include cJSON are this one, json_values.c and canonical.c. */
 #include "json_in.h"
 
 #include <stdarg.h>
@@ -9,7 +9,6 @@
 
 #include <cjson/cJSON.h>
 
-#include "json_tree.h"
 #include "number.h"
 #include "pointer.h"
 
@@ -49,8 +48,8 @@ struct cJSON *lwd_json_parse(const char *text, size_t len, const lwd_scan_limits
         }
         return NULL;
     }
-    struct cJSON *tree = lwd_json_tree_new(text, len, fault.values);
-    if (tree == NULL) { /* the text is good: only memory can be short */
+    cJSON *tree = cJSON_ParseWithLength(text, len);
+    if (tree == NULL) { /* the scan is stricter than the parser: only memory can be short */
         findings->no_memory = true;
         lwd_finding *f = lwd_findings_add(findings, LW_ERROR, "no-memory", "");
         if (f != NULL) {
@@ -62,7 +61,7 @@ struct cJSON *lwd_json_parse(const char *text, size_t len, const lwd_scan_limits
 
 void lwd_json_free(struct cJSON *tree)
 {
-    lwd_json_tree_free(tree);
+    cJSON_Delete(tree);
 }
 
 lwd_reader lwd_reader_of(const struct cJSON *tree, lwd_findings *findings)

@@ -26,7 +26,7 @@ typedef struct slot {
     uint32_t key;     /* offset after the opening quote */
 } slot;
 
-enum { SLOTS_AT_FIRST = 64, PROBE_MAX = 256 };
+enum { SLOTS_AT_FIRST = 128, PROBE_MAX = 256 };
 
 typedef struct scan {
     const unsigned char *text;
@@ -608,7 +608,6 @@ bool lwd_json_scan(const char *text, size_t len, const lwd_scan_limits *limits,
                     "JSON text in UTF-8 without a byte order mark");
     }
     bool good = whole(&s);
-    fault->values = s.values;
     if (s.slot != s.first) {
         free(s.slot);
     }

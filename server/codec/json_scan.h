@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* One pass over JSON text before a tree is made of it: strict (RFC 8259, and the I-JSON rules of
- * RFC 7493 on keys and characters), bounded, and it names the place of the first fault. What makes
- * the tree (json_tree.h) checks nothing any more. Callable from any thread. */
+/* One pass over JSON text before the parser sees it. The parser behind it is lax (it takes 01, 1.,
+ * 1e999, raw control characters, bytes that are no UTF-8, doubled keys, and recurses as deep as the
+ * text); this scan is strict (RFC 8259, and the I-JSON rules of RFC 7493 on keys and characters),
+ * bounded, and names the place of the first fault. Callable from any thread. */
 #ifndef LWD_JSON_SCAN_H
 #define LWD_JSON_SCAN_H
 
@@ -36,7 +37,6 @@ typedef struct lwd_scan_fault {
     size_t offset;   /* bytes from the start */
     size_t line;     /* from 1 */
     size_t column;   /* characters from 1 */
-    size_t values;   /* of a good text: how many values of every kind it has */
     char pointer[LWD_POINTER_SIZE]; /* RFC 6901, of the value or member at fault */
     char text[200];     /* what is wrong, one sentence without the place */
     char expected[80];

@@ -553,7 +553,10 @@ static void survives_every_failing_allocation(void **state)
     (void)state;
     char *text = read_file(LWT_CASES_DIR "/faults/everything.json");
     sweep_text = text;
-    assert_true(lwt_alloc_sweep(read_step, NULL, 1000) >= 8);
+    assert_true(lwt_alloc_sweep(read_step, NULL, 1000) >= 8); /* ours */
+    lwt_alloc_cjson(true);
+    assert_true(lwt_alloc_sweep(read_step, NULL, 5000) >= 500); /* and the parser's */
+    lwt_alloc_cjson(false);
     free(text);
 }
 
