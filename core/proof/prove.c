@@ -214,7 +214,7 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, const lwi_prove *other
     p->var_block = calloc(n, sizeof *p->var_block);
     p->given = calloc(sys->n_element + 1, sizeof *p->given);
     p->state = calloc(1, sizeof *p->state);
-    p->ev = calloc(1, sizeof *p->ev);
+    p->ev = malloc(sizeof *p->ev);
     p->rows = calloc(n, sizeof *p->rows);
     p->square = calloc(most * most, sizeof *p->square);
     p->step = calloc(n, sizeof *p->step);
@@ -222,7 +222,7 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, const lwi_prove *other
     p->perm = calloc(most, sizeof *p->perm);
     p->tau = calloc(most, sizeof *p->tau);
     p->point = calloc(1, sizeof *p->point);
-    p->eval = calloc(1, sizeof *p->eval);
+    p->eval = malloc(sizeof *p->eval);
     p->row = calloc(n > m->whole->n_var ? n : m->whole->n_var + 1, sizeof *p->row);
     if (!p->block || !p->var_block || !p->given || !p->state || !p->ev || !p->rows ||
         !p->square || !p->step || !p->res || !p->perm || !p->tau || !p->point || !p->eval ||
@@ -250,10 +250,11 @@ lw_code lwi_prove_new(lwi_prove **out, const lw_model *m, const lwi_prove *other
     for (int i = 0; i < 3; i++) {
         p->big[i] = p->borrows ? other->big[i] : calloc(side * side, sizeof *p->big[i]);
     }
-    p->rank = p->borrows ? other->rank : calloc(1, sizeof *p->rank);
-    p->solver = p->borrows ? other->solver : calloc(1, sizeof *p->solver);
+    /* Not cleared: what is not used stays untouched memory. */
+    p->rank = p->borrows ? other->rank : malloc(sizeof *p->rank);
+    p->solver = p->borrows ? other->solver : malloc(sizeof *p->solver);
     if (!p->joints) {
-        p->whole_eval = calloc(1, sizeof *p->whole_eval);
+        p->whole_eval = malloc(sizeof *p->whole_eval);
         p->whole_point = calloc(1, sizeof *p->whole_point);
     }
     if (!p->jac || !p->in || !p->solved || !p->big[0] || !p->big[1] || !p->big[2] || !p->rank ||
