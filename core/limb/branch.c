@@ -286,7 +286,8 @@ static void describe(lw_limb_info *info, const lw_model *m, const lwi_limb *limb
         break;
     case LW_LIMB_GENERAL:
         words = limb->classes != NULL
-                    ? "class 1 as at home; within a class the limb moves past no zero of its determinant"
+                    ? "class 1 as at home; within a class the limb moves past no zero of its "
+                      "determinant"
                     : "sign of the limb's determinant as at home";
         break;
     }

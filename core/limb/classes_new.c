@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Finds the branch classes of a limb, at load: a map of samples of its joint space and straight
- * ways between them (a probabilistic roadmap; Kavraki, Svestka, Latombe, Overmars 1996). The samples are
- * the same in every run and depend on the geometry alone. */
+ * ways between them (a probabilistic roadmap; Kavraki, Svestka, Latombe, Overmars 1996). The
+ * samples are the same in every run and depend on the geometry alone. */
 #include "classes.h"
 
 #include "../math/linalg.h"

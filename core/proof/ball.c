@@ -197,39 +197,97 @@ static double share_of(const lwi_ball_local *l, size_t way, size_t i)
     return 1.0 + 0.35 * (double)way * (1.0 - l->sigma[l->m - 1] / l->sigma[i]);
 }
 
-/* Adds the squares of n symmetric matrices. In a ball each counts as it is; in a box, where the
- * coefficient of matrix j is at most a_j, (sum a_j T_j)^2 <= (sum a_j t_j) sum a_j T_j^2 / t_j for
- * any t_j > 0, best near their norms. */
+/* Adds the squares of n symmetric matrices, each with its factor. */
 static void add_squares(double (*sum)[LWI_BALL_COLS * LWI_BALL_COLS], const lwi_ball_local *l,
-                        double (*t)[LWI_BALL_COLS * LWI_BALL_COLS], size_t n, const double *a,
-                        bool box)
+                        double (*t)[LWI_BALL_COLS * LWI_BALL_COLS], size_t n, const double *a)
 {
-    size_t m = l->m;
-    double norm[LWI_BALL_PAIRS];
-    double total = 0.0;
-    for (size_t j = 0; j < n && box; j++) {
-        double square = 0.0;
-        for (size_t i = 0; i < m * m; i++) {
-            square += t[j][i] * t[j][i];
-        }
-        norm[j] = sqrt(square) + 1e-300;
-        total += a[j] * norm[j];
-    }
     for (int v = 0; v < LWI_BALL_WAYS; v++) {
         memset(sum[v], 0, sizeof sum[v]);
         for (size_t j = 0; j < n; j++) {
-            add_square(sum[v], t[j], m, box ? UP * total * a[j] / norm[j] : a[j], l->over[v]);
+            add_square(sum[v], t[j], l->m, a[j], l->over[v]);
         }
     }
 }
 
-/* Everything of the test that does not depend on the radius. `width`: half widths of a box, NULL: a
- * ball. */
-static bool local_at(lwi_ball_local *l, const lwi_ball *b, const double *y, const double *width)
+static double norm_of(const double *t, size_t m)
+{
+    double square = 0.0;
+    for (size_t i = 0; i < m * m; i++) {
+        square += t[i] * t[i];
+    }
+    return sqrt(square) + 1e-300;
+}
+
+/* Factors f with (sum y_k T_k)^2 <= sum f_k T_k^2 for |y_k| <= w_k and |y| <= reach. Some of the
+ * y_k count each for itself, the others together as a ball: with t_k > 0, best near the norms,
+ * S = sum w_k t_k + R t, R the reach of those together and t the norm of their t_k,
+ * f_k = S w_k / t_k and S R / t. The narrow ones are counted alone, as many as is best. */
+static void first_factors(double *f, const double *w, const double *t, size_t n, double reach)
+{
+    size_t order[LWI_BALL_DIRS];
+    size_t best = 0;
+    double least = INFINITY;
+    for (size_t i = 0; i < n; i++) {
+        size_t k = i;
+        for (; k > 0 && w[order[k - 1]] > w[i]; k--) {
+            order[k] = order[k - 1];
+        }
+        order[k] = i;
+    }
+    for (int pass = 0; pass < 2; pass++) {
+        for (size_t alone = pass == 0 ? 0 : best; alone <= (pass == 0 ? n : best); alone++) {
+            double sum = 0.0;
+            double wide = 0.0;
+            double norm = 0.0;
+            for (size_t i = 0; i < n; i++) {
+                size_t k = order[i];
+                sum += i < alone ? w[k] * t[k] : 0.0;
+                wide += i < alone ? 0.0 : w[k] * w[k];
+                norm += i < alone ? 0.0 : t[k] * t[k];
+            }
+            wide = fmin(sqrt(wide), reach);
+            norm = sqrt(norm) + 1e-300;
+            sum += alone < n ? wide * norm : 0.0;
+            if (pass == 0 && sum < least) {
+                least = sum;
+                best = alone;
+            }
+            for (size_t i = 0; i < n && pass == 1; i++) {
+                size_t k = order[i];
+                f[k] = UP * sum * (i < alone ? w[k] / t[k] : wide / norm);
+            }
+        }
+    }
+}
+
+/* The same for sum a_j T_j with |a_j| up to a[j], or the sum of their squares over `part` up to
+ * reach^4. */
+static void second_factors(double *f, const double *a, const double *part, const double *t,
+                           size_t n, double reach)
+{
+    double box = 0.0;
+    double ball = 0.0;
+    for (size_t j = 0; j < n; j++) {
+        box += a[j] * t[j];
+        ball += part[j] * t[j] * t[j];
+    }
+    ball = reach * reach * sqrt(ball);
+    for (size_t j = 0; j < n; j++) {
+        f[j] = UP * (box < ball ? box * a[j] / t[j] : reach * reach * reach * reach * part[j]);
+    }
+}
+
+/* Everything of the test that does not depend on the radius. `width`: half widths of a box of which
+ * what lies within reach of its centre counts, NULL: a ball of radius 1, to be scaled. */
+static bool local_at(lwi_ball_local *l, const lwi_ball *b, const double *y, const double *width,
+                     double reach)
 {
     double bend[LWI_BALL_RODS * LWI_BALL_COLS];
     double t[LWI_BALL_PAIRS][LWI_BALL_COLS * LWI_BALL_COLS];
     double a[LWI_BALL_PAIRS] = {0};
+    double part[LWI_BALL_PAIRS] = {0};
+    double norm[LWI_BALL_PAIRS];
+    double f[LWI_BALL_PAIRS];
     lwi_rod_rates rates[LWI_BALL_RODS];
     l->regular = false;
     if (!lwi_ball_rods(l->rod, b, y)) {
@@ -247,9 +305,13 @@ static bool local_at(lwi_ball_local *l, const lwi_ball *b, const double *y, cons
     }
     for (size_t k = 0; k < b->n_dir; k++) {
         whiten(t[k], l, l->rate[k]);
-        a[k] = width != NULL ? width[k] : 1.0;
+        l->change[k] = norm[k] = norm_of(t[k], l->m);
+        f[k] = 1.0;
     }
-    add_squares(l->first, l, t, b->n_dir, a, width != NULL);
+    if (width != NULL) {
+        first_factors(f, width, norm, b->n_dir, reach);
+    }
+    add_squares(l->first, l, t, b->n_dir, f);
     for (size_t i = 0; i < b->n_rod; i++) {
         lwi_ball_rates(&rates[i], b, &b->rod[i], &l->rod[i]);
     }
@@ -264,11 +326,17 @@ static bool local_at(lwi_ball_local *l, const lwi_ball *b, const double *y, cons
             }
             whiten(t[pair], l, bend);
             /* y_k y_l T_kl, half of it on the diagonal; squared in a ball, |y|^4 in all */
-            double part = j == k ? 0.25 : 0.5;
-            a[pair++] = width == NULL ? part : (j == k ? 0.5 : 1.0) * width[k] * width[j];
+            part[pair] = j == k ? 0.25 : 0.5;
+            a[pair] = width == NULL ? 0.0 : (j == k ? 0.5 : 1.0) * width[k] * width[j];
+            norm[pair] = norm_of(t[pair], l->m);
+            f[pair] = part[pair];
+            pair++;
         }
     }
-    add_squares(l->second, l, t, pair, a, width != NULL);
+    if (width != NULL) {
+        second_factors(f, a, part, norm, pair, reach);
+    }
+    add_squares(l->second, l, t, pair, f);
     l->regular = true;
     return true;
 }
@@ -319,7 +387,7 @@ double lwi_ball_forward_once(const lwi_ball *b, lwi_ball_local *l, double most_m
     const double zero[LWI_BALL_DIRS] = {0};
     double low = 0.0;
     double high = most_m;
-    if (!local_at(l, b, zero, NULL)) {
+    if (!local_at(l, b, zero, NULL, 0.0)) {
         return 0.0;
     }
     for (size_t i = 0; i < l->m; i++) { /* farther out the first order alone fails */
@@ -480,13 +548,13 @@ static bool test_rough(lwi_ball_local *l, const lwi_ball *b, double r)
 }
 
 lwi_ball_verdict lwi_ball_test(lwi_ball_local *l, const lwi_ball *b, lwi_ball_side side,
-                               const double *y, const double *width)
+                               const double *y, const double *width, double reach)
 {
     double r = 0.0;
     for (size_t k = 0; k < b->n_dir; k++) {
         r += width[k] * width[k];
     }
-    r = sqrt(r) * UP;
+    r = fmin(sqrt(r), reach) * UP;
     bool real = lwi_ball_rods(l->rod, b, y);
     bool all = true;
     for (size_t i = 0; i < b->n_rod; i++) {
@@ -502,7 +570,7 @@ lwi_ball_verdict lwi_ball_test(lwi_ball_local *l, const lwi_ball *b, lwi_ball_si
     if (side == LWI_BALL_INVERSE) {
         return all ? LWI_BALL_PROVED : LWI_BALL_OPEN;
     }
-    if (real && all && local_at(l, b, y, width) && test_radius(l, b, r, true)) {
+    if (real && all && local_at(l, b, y, width, r) && test_radius(l, b, r, true)) {
         return LWI_BALL_PROVED;
     }
     if (!all) {

@@ -358,8 +358,8 @@ bool lwi_rank_at_least(lwi_rank_work *w, double s0)
     return true;
 }
 
-/* `steps` of inverse iteration from x on, with the factor l that `definite` left; returns a guess of
- * the least eigenvalue of l l', from above: Rayleigh's quotient. 0 where numbers run out. */
+/* `steps` of inverse iteration from x on, with the factor l that `definite` left; returns a guess
+ * of the least eigenvalue of l l', from above: Rayleigh's quotient. 0 where numbers run out. */
 static double least_eigenvalue(const double *l, double *x, size_t m, int steps)
 {
     double least = 0.0;

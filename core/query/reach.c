@@ -195,7 +195,7 @@ static lw_code full_path(lw_reach_answer *a, const lw_model *m, const lw_spec_to
 }
 
 /* The straight move from `from` to a posture that is good by itself. The move keeps the mode it
- * starts in; where it ends elsewhere, the posture asked for is not reached without a mode change. */
+ * starts in; where it ends elsewhere, the posture asked for needs a mode change. */
 static lw_code judge_move(lw_reach_answer *a, const lw_model *m, const lw_spec_tool *tool,
                           const lw_reach_ask *ask, lw_work *work, lw_err *err)
 {

@@ -1,9 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Moves proved, not sampled: a path is a list of moves from a posture; "ok" is said only where
- * every point of the move is proved to exist in the branch it started in, within limits, held by the
- * drives, and above the thresholds. Work is counted in boxes (intervals tried), so that the same
- * question gets the same answer everywhere. Conventions are those of query.h: answers live in the
- * work object until the next query with it, and no query allocates. */
+ * every point of the move is proved to exist in the branch it started in, within limits, held by
+ * the drives, and above the thresholds. Work is counted in boxes (intervals tried), so that the
+ * same question gets the same answer everywhere. Conventions are those of query.h: answers live
+ * in the work object until the next query with it, and no query allocates. */
 #ifndef LEEWAY_PATH_H
 #define LEEWAY_PATH_H
 

@@ -334,7 +334,7 @@ typedef struct lw_reach_answer {
     const char *reason;
     bool move_checked;            /* with `from`: the straight move was examined, and outcome is
                                    * OK only where it is proved; false: the posture alone */
-    double move_at;               /* how far the move is good, 0..1: where it breaks, or the proof */
+    double move_at;               /* how far the move is good, 0..1 */
     lw_found found;
     bool complete;
     lw_basis basis;
