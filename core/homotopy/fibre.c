@@ -12,6 +12,8 @@
 
 /* Relative second difference of a trace that counts as zero. */
 #define TRACE_LINEAR 2e-9
+/* A path that stops with a coordinate larger than this has stopped far out. */
+#define FAR_OUT 100.0
 
 static void load(lwi_hpoint *to, const lwi_prepare *p, const lwi_points *set, size_t i)
 {
@@ -107,7 +109,7 @@ static bool loop_slices(lwi_prepare *p, size_t *fresh)
 static double trace_error(lwi_prepare *p)
 {
     lwi_cx weight[LWI_HOM_OBSERVE + 1];
-    lwi_cx sum[3] = {0.0, 0.0, 0.0};
+    lwi_wx sum[3] = {0.0L, 0.0L, 0.0L};
     double size = 1e-30;
     size_t n = p->out->hom.n_observe;
     lwi_cx shift = lwi_prepare_unit(p) * 0.3 * (double)n * 0.5;
@@ -115,59 +117,80 @@ static double trace_error(lwi_prepare *p)
         weight[i] = lwi_prepare_unit(p);
     }
     for (size_t i = 0; i < p->slice.n; i++) {
-        lwi_cx value[3];
+        lwi_wx value[3];
         for (int k = 0; k < 3; k++) {
             lwi_slice to = p->base;
             to.c += (double)(k - 1) * shift;
             load(&p->a, p, &p->slice, i);
-            if (k != 1 && between(p, &p->a, &p->base, &to) != LWI_END_GOOD) {
+            p->h.slice[1] = to;
+            if ((k != 1 && between(p, &p->a, &p->base, &to) != LWI_END_GOOD) ||
+                !lwi_wide_sharpen(&p->wide, &p->h, &p->a, &p->w)) {
                 return 1.0;
             }
-            (void)lwi_cobserve(p->w.observe, p->out->hom.sys, &p->a.st);
-            value[k] = weight[n] * p->a.s;
+            value[k] = weight[n] * p->wide.s;
             for (size_t j = 0; j < n; j++) {
-                value[k] += weight[j] * p->w.observe[j];
+                value[k] += weight[j] * p->wide.value[j];
             }
             sum[k] += value[k];
         }
-        size += cabs(value[2] - value[0]);
+        size += (double)cabsl(value[2] - value[0]);
     }
-    return cabs(sum[0] - 2.0 * sum[1] + sum[2]) / size;
+    return (double)cabsl(sum[0] - 2.0L * sum[1] + sum[2]) / size;
+}
+
+/* One try of fibre_from_slice: *ends arrived, *far stopped far out without a sign of why, *near did
+ * so elsewhere. New ends join the fibre. False: out of memory. */
+static bool go_to_fibre(lwi_prepare *p, size_t *ends, size_t *far, size_t *near)
+{
+    lwi_slice to;
+    memset(&to, 0, sizeof to);
+    to.b = lwi_prepare_unit(p); /* s = 0, approached with a random twist */
+    *ends = *far = *near = 0;
+    for (size_t i = 0; i < p->slice.n; i++) {
+        load(&p->a, p, &p->slice, i);
+        lwi_end end = between(p, &p->a, &p->base, &to);
+        if (end != LWI_END_GOOD) {
+            /* Near t = 1 the slice reads s = 0 up to what grows without bound: a point that
+             * still has s is on its way to infinity. */
+            bool away = end == LWI_END_INFINITE ||
+                        (end == LWI_END_SINGULAR && cabs(p->a.s) > 0.02);
+            *far += !away && p->w.extent > FAR_OUT;
+            *near += !away && !(p->w.extent > FAR_OUT);
+            continue;
+        }
+        if (cabs(p->a.s) < 1e-8 && lwi_hom_residual(&p->a, &p->h, 1.0, &p->w) < 1e-7) {
+            ++*ends;
+            if (!known(p, &p->fibre, &p->a) && !store(p, &p->fibre, &p->a)) {
+                return false;
+            }
+        }
+    }
+    return true;
 }
 
 /* Every slice point goes to the fibre over the line's first point or to infinity, all by one
- * homotopy, so that no two end in one place. Lost paths: all are tried again by another. False:
- * out of memory. */
+ * homotopy, so that no two end in one place. Paths that stop far out count as infinite where three
+ * tries, each by other ways, agree on the finite ends: one of these would have to be missed in each
+ * of them. False: out of memory. */
 static bool fibre_from_slice(lwi_prepare *p)
 {
-    for (int tries = 0; tries < 5; tries++) {
-        lwi_slice to;
-        size_t ends = 0;
-        memset(&to, 0, sizeof to);
-        to.b = lwi_prepare_unit(p); /* s = 0, approached with a random twist */
-        p->fibre.n = 0;
-        p->unsettled = 0;
-        for (size_t i = 0; i < p->slice.n; i++) {
-            load(&p->a, p, &p->slice, i);
-            lwi_end end = between(p, &p->a, &p->base, &to);
-            if (end != LWI_END_GOOD) {
-                /* Near t = 1 the slice reads s = 0 up to what grows without bound: a point that
-                 * still has s is on its way to infinity. */
-                bool away = end == LWI_END_SINGULAR && cabs(p->a.s) > 0.02;
-                p->unsettled += end != LWI_END_INFINITE && !away;
-                continue;
-            }
-            if (cabs(p->a.s) < 1e-8 && lwi_hom_residual(&p->a, &p->h, 1.0, &p->w) < 1e-7) {
-                ends++;
-                if (!known(p, &p->fibre, &p->a) && !store(p, &p->fibre, &p->a)) {
-                    return false;
-                }
-            }
+    size_t agree = 0;
+    p->fibre.n = 0;
+    for (int tries = 0; tries < 6; tries++) {
+        size_t ends;
+        size_t far;
+        size_t near;
+        size_t before = p->fibre.n;
+        if (!go_to_fibre(p, &ends, &far, &near)) {
+            return false;
         }
-        if (p->unsettled == 0 && ends == p->fibre.n) {
+        agree = p->fibre.n == before ? agree : 0;
+        agree += near == 0 && ends == p->fibre.n;
+        p->unsettled = near + far + p->fibre.n - ends;
+        if (p->unsettled == 0 || agree >= 3) {
+            p->unsettled = 0;
             return true;
         }
-        p->unsettled += ends - p->fibre.n;
     }
     return true;
 }
@@ -229,7 +252,8 @@ static bool grow(lwi_prepare *p, lw_err *err)
             moves = 0;
         }
         stale = fresh == 0 ? stale + 1 : 0;
-        if (good && (stale == 2 || stale == 4)) {
+        /* Once more only where a path was lost: nothing else can change. */
+        if (good && (stale == 2 || (stale == 4 && p->out->trace_error == 1.0))) {
             good = test_trace(p, &p->out->trace_closed);
             if (good && p->out->trace_closed) {
                 return true;

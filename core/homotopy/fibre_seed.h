@@ -4,6 +4,7 @@
 #define LWI_FIBRE_SEED_H
 
 #include "fibre.h"
+#include "wide.h"
 
 typedef struct lwi_points {
     size_t n, cap, pack;
@@ -16,6 +17,7 @@ typedef struct lwi_prepare {
     lwi_random random;
     lwi_homotopy h;
     lwi_track_work w;
+    lwi_wide wide;
     lwi_hpoint a, b, c;
     lwi_cx line0[LWI_HOM_PARAMS], line1[LWI_HOM_PARAMS]; /* turns as tangents of half angles */
     lwi_points slice;

@@ -427,6 +427,14 @@ static void set_weights(lwi_track_work *w, const lwi_homotopy *h, const lwi_hpoi
     w->weight[h->hom->n] = 1.0 / (1.0 + sqrt(square_of(at->s)));
 }
 
+bool lwi_hom_correct(lwi_cx *y, const lwi_homotopy *h, const lwi_hpoint *at, double t,
+                     lwi_track_work *w)
+{
+    size_t m = evaluate(h, at, t, w->rhs, w->square, NULL, w);
+    set_weights(w, h, at);
+    return lwi_cx_solve(w->square, m, y);
+}
+
 static double extent(const lwi_homotopy *h, const lwi_hpoint *at, lwi_track_work *w)
 {
     double most = 0.0;
@@ -539,7 +547,9 @@ lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_tra
         double grow = good ? 0.9 * pow(tol / fmax(first, 1e-14), 0.2) : 0.4;
         step *= fmin(fmax(grow, 0.25), 3.0);
         step = fmin(step, 0.5);
-        if (step < 1e-10 || tries > 3000) {
+        /* Far out on a slice steps get tiny long before the end, and nothing is learnt from them. */
+        bool tired = h->slices && w->extent > 1e4 && 1.0 - t < 0.05 && tries > 200;
+        if (step < 1e-10 || tries > 3000 || tired) {
             return stuck(&g, 1.0 - t, w->extent);
         }
         if (good && w->extent > 1e7) {

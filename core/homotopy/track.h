@@ -83,6 +83,10 @@ lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_tra
 /* Newton at fixed t; size of the last step in *last. */
 bool lwi_hom_refine(lwi_hpoint *at, const lwi_homotopy *h, double t, int iterations, double tol,
                     double *last, lwi_track_work *w);
+/* The Newton step for a right hand side from elsewhere (y, n long, n + 1 on slices, replaced), with
+ * the derivative at `at`; also sets w->weight. */
+bool lwi_hom_correct(lwi_cx *y, const lwi_homotopy *h, const lwi_hpoint *at, double t,
+                     lwi_track_work *w);
 /* Worst residual of all rows (not mixed) at t. */
 double lwi_hom_residual(const lwi_hpoint *at, const lwi_homotopy *h, double t, lwi_track_work *w);
 
