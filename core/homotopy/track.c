@@ -547,7 +547,7 @@ lwi_end lwi_track_path(lwi_hpoint *at, const lwi_homotopy *h, int tight, lwi_tra
         double grow = good ? 0.9 * pow(tol / fmax(first, 1e-14), 0.2) : 0.4;
         step *= fmin(fmax(grow, 0.25), 3.0);
         step = fmin(step, 0.5);
-        /* Far out on a slice steps get tiny long before the end, and nothing is learnt from them. */
+        /* Far out on a slice steps get tiny long before the end, and nothing is learnt there. */
         bool tired = h->slices && w->extent > 1e4 && 1.0 - t < 0.05 && tries > 200;
         if (step < 1e-10 || tries > 3000 || tired) {
             return stuck(&g, 1.0 - t, w->extent);
