@@ -140,6 +140,32 @@ class Daemon(unittest.TestCase):
         for drive, value in inverse["solutions"][0]["drives"].items():
             self.assertAlmostEqual(metres["solutions"][0]["drives"][drive], value, delta=1e-9)
 
+    def test_a_path(self):
+        """A straight move there and back: the same verdicts as a table and as JSON, and its length
+        by Pythagoras; recorded and replayed to the last digit."""
+        self.start("--prepare-paths", "200")
+        self.load(self.document)
+        self.good("publish", "tilt-table", "1")
+        start = "a1=520 a2=520 a3=520 a4=520 a5=520 a6=520"
+        with open(self.path("job.csv"), "w", encoding="utf-8") as file:
+            file.write("line,move,x,y,z,yaw,pitch,roll\nN10,line,3,4,525,0,0,0\n"
+                       "N20,line,3,4,537,0,0,0\n")
+        record = ["--record", self.path("path.replay")]
+        shown = self.good("path", "tilt-table", self.path("job.csv"), "--from", start, *record)
+        self.assertRegex(shown, r"(?m)^  N20 +line +1 ok +1 ")
+        table = json.loads(self.good("path", "tilt-table", self.path("job.csv"), "--from", start,
+                                     "--json"))
+        self.assertAlmostEqual(table["moves"][1]["length"], 12, delta=1e-6)
+        with open(self.path("job.json"), "w", encoding="utf-8") as file:
+            json.dump(table["asked"]["through"], file)
+        listed = json.loads(self.good("path", "tilt-table", self.path("job.json"), "--from", start,
+                                      "--json"))
+        self.assertEqual(listed["moves"], table["moves"])
+        self.good("travel", "tilt-table", *start.split(), "--reach", "position=2,angle=1", *record)
+        self.assertEqual(self.good("replay", self.path("path.replay"), "--tolerance",
+                                   "length_mm=0,angle_deg=0,ratio=0,reading=0"),
+                         "2 questions: 2 same, 0 differ\n")
+
     def replay_against_a_changed_revision(self):
         file = self.path("day.replay")
         exact = "length_mm=0,angle_deg=0,ratio=0,reading=0"
