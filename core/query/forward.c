@@ -371,13 +371,20 @@ static lw_code all_solutions(lw_forward_answer *a, const lw_model *m, const lw_s
 }
 
 /* All postures were asked for, and there is nothing to find them with. */
-static lw_code no_set(lw_forward_answer *a)
+static lw_code no_set(lw_forward_answer *a, const lw_model *m)
 {
+    bool screws = false;
+    for (size_t j = 0; j < m->spec->n_joint; j++) {
+        screws = screws || m->spec->joint[j].type == LW_HELICAL;
+    }
     a->n_solution = 0;
     a->found.within_limits = -1;
     a->outcome = LW_OUTCOME_UNDECIDED;
-    a->reason = "no solution set is prepared for this mechanism: ask with \"near\" for the "
-                "posture next to a known one";
+    a->reason = screws ? "there is no list of all postures for this mechanism: the turns of its "
+                         "screws are no finite choice; ask with \"near\" for the posture next to a "
+                         "known one"
+                       : "no solution set is prepared for this mechanism: ask with \"near\" for "
+                         "the posture next to a known one";
     return LW_OK;
 }
 
@@ -428,7 +435,7 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
     a->iterations = track.iterations;
     if (!track.arrived) {
         if (ask->all && !chain) {
-            return no_set(a);
+            return no_set(a, m);
         }
         a->outcome = LW_OUTCOME_UNDECIDED;
         a->reason = "a wall stands on the straight way of the readings: the drives lose hold "
@@ -461,5 +468,5 @@ lw_code lw_forward(const lw_forward_answer **out, const lw_model *m, const lw_fo
         judge_readings(a, m, goal, drive, n, work);
     }
     /* Without a set the one thing that can be told of all is that they are no list. */
-    return ask->all && !chain && a->dimension == 0 ? no_set(a) : LW_OK;
+    return ask->all && !chain && a->dimension == 0 ? no_set(a, m) : LW_OK;
 }
