@@ -20,7 +20,7 @@ enum {
     LWI_BALL_COLS = 8, /* freedoms of the tool body without any limb, and slides on it */
     LWI_BALL_PAIRS = LWI_BALL_DIRS * (LWI_BALL_DIRS + 1) / 2,
     LWI_BALL_WAYS = 3,
-    LWI_BALL_CELLS = 4096
+    LWI_BALL_CELLS = 3072
 };
 
 typedef enum lwi_rod_foot { LWI_FOOT_POINT, LWI_FOOT_LINE, LWI_FOOT_CIRCLE } lwi_rod_foot;
@@ -85,17 +85,18 @@ typedef struct lwi_ball_local {
     /* sums of T P^-1 T over whitened derivatives T */
     double first[LWI_BALL_WAYS][LWI_BALL_COLS * LWI_BALL_COLS];
     double second[LWI_BALL_WAYS][LWI_BALL_COLS * LWI_BALL_COLS];
+    double change[LWI_BALL_DIRS]; /* norm of each whitened derivative */
     bool regular;
 } lwi_ball_local;
 
 typedef struct lwi_ball_cell {
-    double c[LWI_BALL_DIRS];
+    double c[LWI_BALL_DIRS], w[LWI_BALL_DIRS]; /* centre and half widths */
     double near;
-    unsigned char split[LWI_BALL_DIRS];
 } lwi_ball_cell;
 
 typedef struct lwi_ball_work {
     lwi_ball ball;
+    lwi_ball turned; /* the same with directions turned, while cells are cut */
     lwi_ball_local local;
     size_t n_cell;
     lwi_ball_cell cell[LWI_BALL_CELLS];
@@ -134,10 +135,11 @@ double lwi_ball_forward_once(const lwi_ball *ball, lwi_ball_local *local, double
 double lwi_ball_inverse_once(const lwi_ball *ball, size_t *limb);
 
 /* Branch and bound: cells nearest first, until the budget is used or `most_m` reached. Starts from
- * a radius proved already; returns what is proved. */
+ * a radius proved already; returns what is proved. `guide`: cells are cut along it and square to
+ * it (NULL or zero: along the directions). */
 typedef enum lwi_ball_side { LWI_BALL_FORWARD, LWI_BALL_INVERSE } lwi_ball_side;
-double lwi_ball_cells(lwi_ball_work *work, lwi_ball_side side, double proved_m, double most_m,
-                      size_t budget, size_t *cells, const atomic_bool *abort);
+double lwi_ball_cells(lwi_ball_work *work, lwi_ball_side side, const double *guide, double proved_m,
+                      double most_m, size_t budget, size_t *cells, const atomic_bool *abort);
 
 /* Pose of the tool at y. */
 void lwi_ball_pose(lw_frame *tool, const lwi_ball *ball, const double *y);
@@ -149,8 +151,9 @@ bool lwi_ball_way(const lwi_ball *ball, const double *y);
 double lwi_ball_third(const lwi_ball *b, const lwi_rod_at *rod, double r);
 
 typedef enum lwi_ball_verdict { LWI_BALL_OPEN, LWI_BALL_PROVED, LWI_BALL_EMPTY } lwi_ball_verdict;
+/* The box about y of these half widths, as far as it lies within reach of y. */
 lwi_ball_verdict lwi_ball_test(lwi_ball_local *local, const lwi_ball *ball, lwi_ball_side side,
-                               const double *y, const double *width);
+                               const double *y, const double *width, double reach);
 
 /* What ball.c asks of ball_rods.c. */
 #define LWI_BALL_UP (1.0 + 1e-9)

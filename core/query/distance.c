@@ -91,8 +91,9 @@ static void forward_side(lw_distance_answer *a, const lw_model *m, const lw_dist
     if (ask->budget > 0 && side->known_least) {
         double look = side->known_most ? most : fmin(most, 8.0 * m->length_m);
         side->at_least_m =
-            fmax(side->at_least_m, lwi_ball_cells(w, LWI_BALL_FORWARD, side->at_least_m, look,
-                                                  ask->budget, &a->cells, ask->abort));
+            fmax(side->at_least_m,
+                 lwi_ball_cells(w, LWI_BALL_FORWARD, work->distance_work->guide, side->at_least_m,
+                                look, ask->budget, &a->cells, ask->abort));
     }
 }
 
@@ -124,7 +125,7 @@ static void inverse_side(lw_distance_answer *a, const lw_model *m, const lw_dist
     side->at_least_m = fmin(side->at_least_m, most);
     if (ask->budget > 0 && side->known_least && side->known_most) {
         side->at_least_m =
-            fmax(side->at_least_m, lwi_ball_cells(w, LWI_BALL_INVERSE, side->at_least_m, most,
+            fmax(side->at_least_m, lwi_ball_cells(w, LWI_BALL_INVERSE, NULL, side->at_least_m, most,
                                                   ask->budget, &a->cells, ask->abort));
     }
 }

@@ -38,7 +38,8 @@ typedef struct lwi_limit_entry {
 
 typedef struct lwi_distance_work {
     lwi_ball_work balls;
-    lwi_ball *ball; /* = &balls.ball */
+    lwi_ball *ball;              /* = &balls.ball */
+    double guide[LWI_BALL_DIRS]; /* way to the forward singularity found, 0 none */
     bool is_arm;
     lwi_ball_arm arm;
     const lw_spec_tool *tool;

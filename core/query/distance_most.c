@@ -6,9 +6,9 @@
  * 1 columns): to first order W^T (N v + sum dy_k N_k v) = 0, of which the point nearest to the
  * posture is taken (the iteration of Hasofer, Lind and Rackwitz, from memory), shortened until
  * |y|^2 / 2 + c sigma falls. Square N: proved by opposite signs of det N at the posture and just
- * beyond,
- * on a straight way along which the branch exists. More wrenches than freedoms: by the theorem of
- * Newton and Kantorovich on the square system in v and the n - m + 1 combinations of y that matter.
+ * beyond, on a straight way along which the branch exists. More wrenches than freedoms: by the
+ * theorem of Newton and Kantorovich on the square system in v and the n - m + 1 combinations of y
+ * that matter.
  *
  * Inverse: for each rod, least |y| where its end comes as near to, or as far from, its foot's line
  * or circle as the rod is long; proved by the rod not reaching just beyond. */
@@ -431,6 +431,7 @@ void lwi_distance_forward_most(lw_distance_side *out, const lw_model *m, lw_work
             memcpy(best, y, sizeof best);
         }
     }
+    memcpy(w->guide, best, sizeof w->guide);
     if (most < INFINITY) {
         lwi_distance_take(out, m, best, most, work);
     }
