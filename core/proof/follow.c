@@ -156,7 +156,8 @@ bool lwi_follow_nodes(lwi_prove *p, double low, double high)
         if (p->n_block > 0 && !solve(p)) {
             return false;
         }
-        if (k == 0 && p->sys->n_row > 0 && !rest_closes(p)) {
+        bool looked = k == 0 || k == LWI_PM_SIZE - 1;
+        if (looked && p->sys->n_row > 0 && !rest_closes(p)) {
             return false;
         }
         lwi_point_from_state(&p->node[k], p, p->state);
