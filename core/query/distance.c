@@ -47,12 +47,22 @@ const lw_solution *lwi_distance_solve(const lw_model *m, const double *y, lw_wor
 void lwi_distance_take(lw_distance_side *out, const lw_model *m, const double *y, double distance_m,
                        lw_work *work)
 {
-    out->known_most = true;
-    out->at_most_m = distance_m;
-    lwi_ball_pose(&out->tool, work->distance_work->ball, y);
-    const lw_solution *sol = lwi_distance_solve(m, y, work);
-    if (sol != NULL) {
-        memcpy(out->drive, sol->drive, sizeof out->drive);
+    static const double back[6] = {0.0, 1e-9, 1e-7, 1e-5, 1e-4, 1e-3};
+    const lwi_ball *b = work->distance_work->ball;
+    out->known_most = false;
+    /* On the edge itself a limb may not close by a rounding: the posture just before it is told. */
+    for (size_t i = 0; i < 6 && !out->known_most; i++) {
+        double z[LWI_BALL_DIRS] = {0};
+        for (size_t k = 0; k < b->n_dir; k++) {
+            z[k] = y[k] * (1.0 - back[i]);
+        }
+        const lw_solution *sol = lwi_distance_solve(m, z, work);
+        if (sol != NULL) {
+            out->known_most = true;
+            out->at_most_m = distance_m;
+            lwi_ball_pose(&out->tool, b, z);
+            memcpy(out->drive, sol->drive, sizeof out->drive);
+        }
     }
 }
 
