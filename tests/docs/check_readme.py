@@ -26,6 +26,8 @@ import time
 
 ROOT = os.path.dirname(os.path.dirname(os.path.dirname(os.path.abspath(__file__))))
 PORT = "8470"
+# Enough for the press of the README, little enough for a daemon under a sanitizer.
+PREPARE_PATHS = "1000"
 TIME = re.compile(r"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d(\.\d+)?Z")
 REQUEST = re.compile(r"urn:leeway:request:[0-9a-f]{32}")
 WORD = re.compile(r'\.\.\.|-?\d+(?:\.\d+)?(?:[eE][-+]?\d+)?(?![\w.]*[A-Za-z_])|\w[\w./:%+-]*|\S')
@@ -134,7 +136,8 @@ class Daemon:
         data = os.path.join(scratch, "data")
         os.mkdir(data, 0o750)
         self.process = subprocess.Popen(
-            [os.environ["LEEWAYD"], "--data", data, "--port", "0", "--port-file", port_file],
+            [os.environ["LEEWAYD"], "--data", data, "--port", "0", "--port-file", port_file,
+             "--prepare-paths", PREPARE_PATHS],
             stdin=subprocess.DEVNULL, stdout=self.log, stderr=self.log)
         for _ in range(600):
             if os.path.exists(port_file) and open(port_file).read().strip():

@@ -160,7 +160,7 @@ def query_members_are_known_and_single():
                            ("&expect=123", 1055)):
             wire.ask("GET", base + more).problem(400, code)
         wire.ask("GET", base + "&tool=none").problem(422, 1070)
-        wire.ask("GET", base + "&distance=1").problem(422, 1075)
+        wire.ask("GET", base + "&distance=1").problem(400, 1051)
         wire.ask("POST", "/v1/mechanisms/label-stage/reach?x=1",
                  {"pose": POSES["label-stage"]}).problem(400, 1051)
 
@@ -192,8 +192,12 @@ def verdicts_are_answers_and_nonsense_is_an_error():
                         {"drives": {"m1": 80, "m2": 181, "m3": 275, "m4": 3}})
         expect(torn["code"] == 8 and torn["solutions"], torn["code"])
         line.ask("label-stage", "inverse", {"pose": {"x": "one"}}, status=400)
-        line.ask("label-stage", "margin", {"pose": {"x": 1, "y": 1, "rz": 1}, "distance": {}},
-                 status=422)
+        room = line.ask("label-stage", "margin",
+                        {"pose": {"x": 1, "y": 1, "rz": 1}, "distance": {}})["distance"]
+        for side in ("forward", "inverse"):
+            expect(0.0 < room[side]["at_least"] < room[side]["at_most"], side, room[side])
+        line.ask("label-stage", "margin", {"pose": {"x": 1, "y": 1, "rz": 1}, "distance": 3},
+                 status=400)
         line.ask("label-stage", "inverse", {"pose": {}, "mode": "sideways"}, status=400)
 
 
