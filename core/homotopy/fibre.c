@@ -53,6 +53,17 @@ static bool known(lwi_prepare *p, const lwi_points *set, const lwi_hpoint *at)
     return false;
 }
 
+static bool aborted(const lwi_prepare *p)
+{
+    return p->limits->abort != NULL && atomic_load_explicit(p->limits->abort, memory_order_relaxed);
+}
+
+/* No work is left for `more` paths. */
+static bool spent(const lwi_prepare *p, unsigned long more)
+{
+    return p->out->paths + more > p->limits->paths || aborted(p);
+}
+
 /* Tracks `from` between two slices. */
 static lwi_end between(lwi_prepare *p, lwi_hpoint *at, const lwi_slice *from, const lwi_slice *to)
 {
@@ -85,7 +96,7 @@ static bool loop_slices(lwi_prepare *p, size_t *fresh)
     random_slice(p, &x);
     random_slice(p, &y);
     for (size_t i = 0; i < count; i++) {
-        if (p->out->paths + 3 > p->limits->paths) {
+        if (spent(p, 3)) {
             return true;
         }
         load(&p->a, p, &p->slice, i);
@@ -268,7 +279,7 @@ static bool grow(lwi_prepare *p, lw_err *err)
         if (!good) {
             return LW_FAIL(err, LW_E_MEMORY, "", "out of memory") == LW_OK;
         }
-        if (p->out->paths >= p->limits->paths || p->slice.n > LWI_HOM_POINTS) {
+        if (spent(p, 1) || p->slice.n > LWI_HOM_POINTS) {
             return true;
         }
     }
@@ -327,7 +338,7 @@ static bool explore(lwi_prepare *p, lw_err *err)
         lwi_hpoint *at = &p->c;
         size_t open = p->open_seeds;
         quiet++;
-        if (p->out->paths >= p->limits->paths) {
+        if (spent(p, 1)) {
             return true;
         }
         bool found = probe(p, at);
@@ -423,9 +434,12 @@ lw_code lwi_fibre_find(lwi_fibre *out, const lwi_system *sys, size_t rank, unsig
     p->h.hom = &out->hom;
     rc = LW_OK;
     for (int tries = 0; tries < 6 && rc == LW_OK && !out->trace_closed; tries++) {
-        if (tries == 0 || out->paths < limits->paths) {
+        if (tries == 0 || !spent(p, 1)) {
             rc = attempt(p, err);
         }
+    }
+    if (rc == LW_OK && aborted(p)) {
+        rc = LW_FAIL(err, LW_E_ABORTED, "", "ended before all solutions were found");
     }
     if (rc == LW_OK && out->n_solution == 0) {
         rc = LW_E_MODEL;

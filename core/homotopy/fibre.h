@@ -9,6 +9,8 @@
 
 #include <leeway/err.h>
 
+#include <stdatomic.h>
+
 typedef struct lwi_fibre {
     lwi_hom hom;
     lwi_cx p[LWI_HOM_PARAMS];  /* the generic point, turns as angles */
@@ -25,6 +27,7 @@ typedef struct lwi_fibre {
 typedef struct lwi_fibre_limits {
     unsigned long paths; /* most paths tracked while preparing */
     size_t solutions;    /* most solutions kept */
+    const atomic_bool *abort; /* NULL, or raised by the caller: LW_E_ABORTED */
 } lwi_fibre_limits;
 
 /* NULL out->solution and LW_E_MODEL if the system is not served (screws, too large,

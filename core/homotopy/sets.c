@@ -193,10 +193,12 @@ static void raise_solutions(lw_model *m)
     }
 }
 
-lw_code lw_model_prepare(lw_model *m, unsigned long long seed, unsigned long max_paths, lw_err *err)
+lw_code lw_model_prepare(lw_model *m, unsigned long long seed, unsigned long max_paths,
+                         const atomic_bool *abort, lw_err *err)
 {
     lw_work *work;
-    lwi_fibre_limits limits = {.paths = max_paths, .solutions = LWI_MAX_SOLUTIONS};
+    lwi_fibre_limits limits = {.paths = max_paths, .solutions = LWI_MAX_SOLUTIONS,
+                               .abort = abort};
     lw_code rc = lw_work_new(&work, m, err);
     for (int k = 0; k < 2 && rc == LW_OK; k++) {
         lwi_set *set;

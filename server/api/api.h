@@ -46,7 +46,7 @@ struct lwd_app {
     lwd_catalog *catalog;
     lwd_store *store;
     unsigned n_lanes;
-    unsigned long prepare_paths;
+    lwd_preparing preparing;
     lwd_watch *watch;
     lwd_lane *lane;  /* [n_lanes] */
     lwd_buf about;   /* the answer of GET /about, made at the start */

@@ -143,14 +143,15 @@ lwd_app *lwd_app_start(const lwd_app_options *options, char *why, size_t why_siz
     }
     lwd_buf_init(&app->about, 0);
     app->n_lanes = options->lanes;
-    app->prepare_paths =
+    app->watch = lwd_watch_new(options->lanes);
+    app->preparing.paths =
         options->prepare_paths != 0 ? options->prepare_paths : LWD_PREPARE_PATHS;
-    app->store = lwd_store_new(NULL, app->prepare_paths);
+    app->preparing.stop = app->watch != NULL ? lwd_watch_stop_flag(app->watch) : NULL;
+    app->store = lwd_store_new(NULL, app->preparing);
     app->lane = calloc(options->lanes, sizeof *app->lane);
     for (unsigned i = 0; app->lane != NULL && i < options->lanes; i++) {
         lwd_buf_init(&app->lane[i].scrap.body, 0);
     }
-    app->watch = lwd_watch_new(options->lanes);
     if (app->store == NULL || app->lane == NULL || app->watch == NULL
         || !lwd_about_write(&app->about) || !open_catalog(app, options->data_dir, why, why_size)) {
         lwd_app_stop(app);

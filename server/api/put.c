@@ -72,7 +72,7 @@ static bool validate(lwd_app *app, upload *up, const lwd_request *request, lwd_r
     lw_code code =
         lw_model_new(&up->model, &up->document->spec, lwd_seed_of(up->digest), &up->report, &err);
     if (code == LW_OK) {
-        code = lwd_sets_take(app->catalog, app->prepare_paths, up->model, up->name, up->digest,
+        code = lwd_sets_take(app->catalog, &app->preparing, up->model, up->name, up->digest,
                              &err);
     }
     if (code == LW_OK) {
@@ -87,7 +87,8 @@ static bool validate(lwd_app *app, upload *up, const lwd_request *request, lwd_r
         } else {
             lwd_fail(reply, request, LWD_PROBLEM_DOCUMENT, err.where, NULL, NULL, "%s", err.msg);
         }
-    } else if (code == LW_E_MEMORY) {
+    } else if (code == LW_E_MEMORY || code == LW_E_ABORTED) {
+        /* Where the stop has ended it, the client has been told of the stop already. */
         lwd_fail_memory(reply, request);
     } else if (code == LW_E_LIMIT || code == LW_E_ARGUMENT) {
         lwd_fail(reply, request, LWD_PROBLEM_DOCUMENT, err.where, NULL, NULL, "%s", err.msg);

@@ -9,9 +9,10 @@
 #include "../log.h"
 #include "api.h"
 
-lw_code lwd_sets_make(lw_model *model, const char *digest, unsigned long paths, lw_err *err)
+lw_code lwd_sets_make(lw_model *model, const char *digest, const lwd_preparing *preparing,
+                      lw_err *err)
 {
-    return lw_model_prepare(model, lwd_seed_of(digest), paths, err);
+    return lw_model_prepare(model, lwd_seed_of(digest), preparing->paths, preparing->stop, err);
 }
 
 void lwd_sets_keep(lwd_catalog *catalog, const lw_model *model, const char *name, int64_t number)
@@ -61,14 +62,14 @@ static bool load_kept(lwd_catalog *catalog, lw_model *model, const char *name, i
     return false;
 }
 
-lw_code lwd_sets_open(lwd_catalog *catalog, unsigned long paths, lw_model *model,
+lw_code lwd_sets_open(lwd_catalog *catalog, const lwd_preparing *preparing, lw_model *model,
                       const char *name, int64_t number, const char *digest, lw_err *err)
 {
     lw_code code = LW_OK;
     if (load_kept(catalog, model, name, number, digest, &code)) {
         return code;
     }
-    code = lwd_sets_make(model, digest, paths, err);
+    code = lwd_sets_make(model, digest, preparing, err);
     if (code == LW_OK) {
         lwd_sets_keep(catalog, model, name, number);
     }
@@ -92,7 +93,7 @@ static int64_t same_content(lwd_catalog *catalog, const char *name, const char *
     return 0;
 }
 
-lw_code lwd_sets_take(lwd_catalog *catalog, unsigned long paths, lw_model *model,
+lw_code lwd_sets_take(lwd_catalog *catalog, const lwd_preparing *preparing, lw_model *model,
                       const char *name, const char *digest, lw_err *err)
 {
     lw_code code = LW_OK;
@@ -100,7 +101,7 @@ lw_code lwd_sets_take(lwd_catalog *catalog, unsigned long paths, lw_model *model
     if (number > 0 && load_kept(catalog, model, name, number, digest, &code)) {
         return code;
     }
-    return lwd_sets_make(model, digest, paths, err);
+    return lwd_sets_make(model, digest, preparing, err);
 }
 
 static void judge(lwd_findings *findings, const lw_set_info *set, const char *code,

@@ -24,7 +24,7 @@ typedef struct mechanism {
 struct lwd_store {
     pthread_mutex_t lock;
     lwd_catalog *catalog;
-    unsigned long paths; /* for sets that have to be made */
+    lwd_preparing preparing; /* for sets that have to be made */
     mechanism *bucket[BUCKETS];
     size_t n_held;
     uint64_t tick;
@@ -32,7 +32,7 @@ struct lwd_store {
     uint64_t changes;
 };
 
-lwd_store *lwd_store_new(lwd_catalog *catalog, unsigned long paths)
+lwd_store *lwd_store_new(lwd_catalog *catalog, lwd_preparing preparing)
 {
     lwd_store *store = calloc(1, sizeof *store);
     if (store != NULL && pthread_mutex_init(&store->lock, NULL) != 0) {
@@ -41,7 +41,7 @@ lwd_store *lwd_store_new(lwd_catalog *catalog, unsigned long paths)
     }
     if (store != NULL) {
         store->catalog = catalog;
-        store->paths = paths;
+        store->preparing = preparing;
     }
     return store;
 }
@@ -221,11 +221,13 @@ static lwd_store_result build(const lwd_store *store, lwd_held *held,
     lw_code code = lw_model_new(&held->model, &held->document->spec,
                                 lwd_seed_of(revision->info.digest), report, &err);
     if (code == LW_OK) {
-        code = lwd_sets_open(store->catalog, store->paths, held->model, held->name,
+        code = lwd_sets_open(store->catalog, &store->preparing, held->model, held->name,
                              revision->info.number, revision->info.digest, &err);
     }
     if (code != LW_OK) {
-        result = code == LW_E_MEMORY ? LWD_STORE_MEMORY : LWD_STORE_UNUSABLE;
+        /* Ended by the stop: nobody waits for the answer any more. */
+        result = code == LW_E_MEMORY || code == LW_E_ABORTED ? LWD_STORE_MEMORY
+                                                              : LWD_STORE_UNUSABLE;
         goto done;
     }
     held->number = revision->info.number;

@@ -19,6 +19,7 @@
 #include "../codec/document.h"
 #include "../codec/edge.h"
 #include "../exchange.h"
+#include "sets.h"
 
 enum { LWD_STORE_MODELS = 64 }; /* kept loaded at most; users keep those in use alive */
 
@@ -49,8 +50,8 @@ typedef enum lwd_store_result {
 
 typedef struct lwd_store lwd_store;
 
-/* `paths`: tracked at most while preparing a solution set that is missing. */
-lwd_store *lwd_store_new(lwd_catalog *catalog, unsigned long paths);
+/* `preparing`: for a solution set that is missing. */
+lwd_store *lwd_store_new(lwd_catalog *catalog, lwd_preparing preparing);
 void lwd_store_free(lwd_store *store);
 
 /* To be called once, before any other call, where the catalog could not be given at once (its

@@ -20,7 +20,7 @@ struct lwd_watch {
     bool stop;
     int64_t wake_ms;  /* when the thread looks next */
     int64_t least_ms; /* no deadline later than this: INT64_MAX but when the service stops */
-    unsigned n;
+    unsigned n;       /* slots: the lanes, and one more for the stop */
     slot lane[];
 };
 
@@ -68,14 +68,14 @@ static void *watch_main(void *arg)
 lwd_watch *lwd_watch_new(unsigned lanes)
 {
     pthread_condattr_t attributes;
-    lwd_watch *watch = calloc(1, sizeof *watch + lanes * sizeof watch->lane[0]);
+    lwd_watch *watch = calloc(1, sizeof *watch + (lanes + 1) * sizeof watch->lane[0]);
     if (watch == NULL) {
         return NULL;
     }
-    watch->n = lanes;
+    watch->n = lanes + 1;
     watch->wake_ms = INT64_MAX;
     watch->least_ms = INT64_MAX;
-    for (unsigned i = 0; i < lanes; i++) {
+    for (unsigned i = 0; i < watch->n; i++) {
         atomic_init(&watch->lane[i].up, false);
     }
     pthread_mutex_init(&watch->lock, NULL);
@@ -129,11 +129,19 @@ void lwd_watch_disarm(lwd_watch *watch, unsigned lane)
     pthread_mutex_unlock(&watch->lock);
 }
 
+const atomic_bool *lwd_watch_stop_flag(const lwd_watch *watch)
+{
+    return &watch->lane[watch->n - 1].up;
+}
+
 void lwd_watch_hurry(lwd_watch *watch, int64_t ms)
 {
     pthread_mutex_lock(&watch->lock);
-    watch->least_ms = now_ms() + ms;
-    for (unsigned i = 0; i < watch->n; i++) {
+    int64_t now = now_ms();
+    watch->least_ms = now + ms;
+    watch->lane[watch->n - 1].deadline_ms = now + 2 * ms;
+    watch->lane[watch->n - 1].armed = true;
+    for (unsigned i = 0; i + 1 < watch->n; i++) {
         slot *s = &watch->lane[i];
         if (s->armed && s->deadline_ms > watch->least_ms) {
             s->deadline_ms = watch->least_ms;

@@ -20,6 +20,10 @@ void lwd_watch_free(lwd_watch *watch);
 const atomic_bool *lwd_watch_arm(lwd_watch *watch, unsigned lane, int64_t ms);
 void lwd_watch_disarm(lwd_watch *watch, unsigned lane);
 
+/* Raised twice as long after lwd_watch_hurry as the lanes' flags, for work that no question waits
+ * for any more. */
+const atomic_bool *lwd_watch_stop_flag(const lwd_watch *watch);
+
 /* The service stops: whatever works, or begins to, has at most so long. */
 void lwd_watch_hurry(lwd_watch *watch, int64_t ms);
 

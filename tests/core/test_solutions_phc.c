@@ -220,7 +220,7 @@ static void ask_demo(lw_model **model, lw_work **work, const char *name, const d
 {
     lw_err err = {.code = LW_OK};
     *model = lwt_bench_demo(name);
-    assert_int_equal(lw_model_prepare(*model, SEED, LWT_PATHS, &err), LW_OK);
+    assert_int_equal(lw_model_prepare(*model, SEED, LWT_PATHS, NULL, &err), LW_OK);
     assert_int_equal(lw_work_new(work, *model, &err), LW_OK);
     lw_posture_ask readings = {.kind = LW_BY_DRIVES};
     for (size_t i = 0; i < (*model)->spec->n_drive; i++) {

@@ -27,7 +27,7 @@ class Line:
     """A daemon with the demo line published."""
 
     def __enter__(self):
-        self.daemon = Daemon("--prepare-paths", "200").__enter__()
+        self.daemon = Daemon("--prepare-paths", "1").__enter__()
         for name in POSES:
             with open(os.path.join(DEMO, name + ".json"), encoding="utf-8") as f:
                 put = self.daemon.ask("PUT", f"/v1/mechanisms/{name}", f.read())

@@ -15,7 +15,7 @@ void lwt_machine_load_prepared(lwt_machine *m, unsigned long long seed, unsigned
     if (code != LW_OK) {
         lwt_fail("%s was refused: %s: %s", m->spec->name, m->err.where, m->err.msg);
     }
-    code = lw_model_prepare(m->model, seed, max_paths, &m->err);
+    code = lw_model_prepare(m->model, seed, max_paths, NULL, &m->err);
     if (code != LW_OK) {
         lwt_fail("%s was not prepared: %s", m->spec->name, m->err.msg);
     }

@@ -12,7 +12,8 @@
     X(LW_E_NOT_CLOSED, "the posture given does not close")                                         \
     X(LW_E_MEMORY, "out of memory")                                                                \
     X(LW_E_LIMIT, "a count is beyond what is served")                                              \
-    X(LW_E_INTERNAL, "internal error")
+    X(LW_E_INTERNAL, "internal error")                                                             \
+    X(LW_E_ABORTED, "ended by the caller's flag")
 
 typedef enum lw_code {
 #define LW_CODE_ENUM(name, text) name,

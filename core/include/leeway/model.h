@@ -3,6 +3,8 @@
 #ifndef LEEWAY_MODEL_H
 #define LEEWAY_MODEL_H
 
+#include <stdatomic.h>
+
 #include <leeway/err.h>
 #include <leeway/spec.h>
 
@@ -95,10 +97,11 @@ void lw_model_free(lw_model *model);
 /* Solution sets, made before the model is shared and its first work object exists: seconds of
  * work, bounded by the number of paths tracked, the same on every machine for the same seed.
  * Where a set is not served (screws among the unknowns, too large) the model stays without it
- * and answers from starts. Sets can be kept and loaded again; damaged ones are refused with
+ * and answers from starts. `abort` (NULL: none), raised by another thread, ends it within a few
+ * paths with LW_E_ABORTED. Sets can be kept and loaded again; damaged ones are refused with
  * LW_E_MODEL. */
 lw_code lw_model_prepare(lw_model *model, unsigned long long seed, unsigned long max_paths,
-                         lw_err *err);
+                         const atomic_bool *abort, lw_err *err);
 size_t lw_model_sets_size(const lw_model *model);
 void lw_model_sets_save(void *out, const lw_model *model); /* lw_model_sets_size bytes */
 lw_code lw_model_sets_load(lw_model *model, unsigned long long seed, const void *data, size_t size,
