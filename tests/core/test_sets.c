@@ -187,6 +187,21 @@ static void the_seed_alone_decides_the_bits(void **state)
     }
 }
 
+/* A raised flag ends the work at once; the model then answers without a set. */
+static void a_raised_flag_ends_the_making(void **state)
+{
+    lwt_machine *m = subject("planar-struts");
+    atomic_bool flag = true;
+    (void)state;
+    assert_int_equal(lwt_machine_report(m), LW_OK);
+    assert_int_equal(lw_model_prepare(m->model, SEED, 1000000, &flag, &m->err), LW_E_ABORTED);
+    assert_int_equal(lw_model_sets_size(m->model), 0);
+    atomic_store(&flag, false);
+    assert_int_equal(lw_model_prepare(m->model, SEED, 1000000, &flag, &m->err), LW_OK);
+    assert_true(lw_model_sets_size(m->model) > 0);
+    lwt_machine_free(m);
+}
+
 static void a_set_cut_short_is_refused(void **state)
 {
     (void)state;
@@ -271,6 +286,7 @@ int main(void)
         cmocka_unit_test(kept_sets_answer_with_the_same_bits),
         cmocka_unit_test(a_kept_inverse_set_answers_with_the_same_bits),
         cmocka_unit_test(the_seed_alone_decides_the_bits),
+        cmocka_unit_test(a_raised_flag_ends_the_making),
         cmocka_unit_test(a_set_cut_short_is_refused),
         cmocka_unit_test(a_flipped_bit_anywhere_is_refused),
         cmocka_unit_test(the_set_of_another_mechanism_is_refused),

@@ -77,8 +77,10 @@ static void a_stop_shortens_all(void **state)
     const atomic_bool *before = lwd_watch_arm(watch, 0, LONG);
     lwd_watch_hurry(watch, 30);
     const atomic_bool *after = lwd_watch_arm(watch, 1, LONG);
+    assert_false(atomic_load(lwd_watch_stop_flag(watch)));
     (void)wait_for(before);
     (void)wait_for(after);
+    (void)wait_for(lwd_watch_stop_flag(watch));
     lwd_watch_free(watch);
 }
 
