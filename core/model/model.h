@@ -130,13 +130,14 @@ struct lw_work {
     struct lwi_singular_work *singular_work;
 };
 enum {
-    LWI_SPARE = 6, /* solution slots behind the list: posture, forward fit, start, reach, moves */
+    LWI_SPARE = 7, /* solution slots behind the list: posture, forward fit, start, reach, moves */
     LWI_SLOT_POSTURE = 0,
     LWI_SLOT_FORWARD = 1,
     LWI_SLOT_START = 2,
     LWI_SLOT_REACH = 3,
     LWI_SLOT_MOVE = 4,
-    LWI_SLOT_MOVE_START = 5
+    LWI_SLOT_MOVE_START = 5,
+    LWI_SLOT_MOVE_AT = 6
 };
 static inline lw_solution *lwi_slot(lw_work *work, size_t slot)
 {

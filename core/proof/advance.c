@@ -401,12 +401,14 @@ void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
     bool settled = false;
     a->outcome = LW_OUTCOME_OK;
     *lost = false;
-    r.mode = sol->mode;
+    lwi_mode_of(&r.mode, p->model, &sol->config); /* a move by readings may have changed it */
     size_t failed = 0; /* one after another */
     while (r.low < cap) {
         double high = r.low + step < cap ? r.low + step : cap;
         if (ask->abort != NULL && atomic_load_explicit(ask->abort, memory_order_relaxed)) {
-            undecided(&r, LW_STOP_ABORT, 1.0, "stopped by the time limit of the question");
+            if (!settled) {
+                undecided(&r, LW_STOP_ABORT, 1.0, "stopped by the time limit of the question");
+            }
             break;
         }
         if (a->boxes >= ask->budget) {
@@ -462,5 +464,8 @@ void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
         a->at = 1.0;
         *lost = !lwi_follow_to(p, r.low, r.low, &sol->config);
         lwi_solution_finish(sol, p->model, ask->tool);
+        if (*lost) {
+            undecided(&r, LW_STOP_RESOLUTION, 1.0, "the end of the move could not be followed");
+        }
     }
 }

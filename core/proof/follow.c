@@ -115,6 +115,12 @@ static bool rest_closes(lwi_prove *p)
             return false;
         }
     }
+    for (size_t i = 0; i < p->sys->n_row_dropped; i++) {
+        double r = lwi_row_residual(p->sys, &p->sys->row_dropped[i], p->state, p->ev);
+        if (!(fabs(r) <= LWI_CLOSED)) {
+            return false;
+        }
+    }
     return true;
 }
 

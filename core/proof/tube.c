@@ -14,6 +14,7 @@
 #include "pm_root.h"
 #include "prove.h"
 
+#include "../math/tol.h"
 #include "../math/vec3.h"
 
 #define ROOM 0.1
@@ -299,7 +300,9 @@ static bool prove_block(lwi_prove *p, lwi_prove_block *block)
     lwi_pm_kantorovich(&root, sqrt(residual) * OUT, s, sqrt(bent) * OUT, most);
     block->radius = root.radius;
     block->unique = root.unique;
-    return root.holds;
+    /* The bound of the predictor, taken to the motion itself, which lies within the radius. */
+    block->sigma = s / OUT - sqrt(bent) * OUT * OUT * root.radius;
+    return root.holds && block->sigma > 0.0;
 }
 
 /* Distance of two points over one block's unknowns, as the step that leads from one to the other;
@@ -369,6 +372,41 @@ static void end_point(lwi_prove_point *out, const lwi_prove *p, double d)
     }
 }
 
+static bool is_picked(const lwi_prove *p, size_t row)
+{
+    for (size_t b = 0; b < p->n_block; b++) {
+        const lwi_prove_block *block = &p->block[b];
+        for (size_t i = 0; i < block->n; i++) {
+            if (block->pick[i] == row) {
+                return true;
+            }
+        }
+    }
+    return false;
+}
+
+static bool row_closes(const lwi_prove *p, const lwi_row *row)
+{
+    lwi_pm r = lwi_pm_row(NULL, NULL, p->sys, row, p->point, p->eval, &p->inputs);
+    return lwi_pm_mag(r) <= LWI_CLOSED;
+}
+
+/* Rows of overconstrained loops that are not solved hold as well as in every answer, all along. */
+static bool rest_closes(const lwi_prove *p)
+{
+    for (size_t i = 0; i < p->sys->n_row; i++) {
+        if (!is_picked(p, i) && !row_closes(p, &p->sys->row[i])) {
+            return false;
+        }
+    }
+    for (size_t i = 0; i < p->sys->n_row_dropped; i++) {
+        if (!row_closes(p, &p->sys->row_dropped[i])) {
+            return false;
+        }
+    }
+    return true;
+}
+
 bool lwi_tube(lwi_prove *p, double low, double high)
 {
     double mid = 0.5 * (low + high);
@@ -406,6 +444,10 @@ bool lwi_tube(lwi_prove *p, double low, double high)
     end_point(&p->right, p, 1.0);
     if (p->n_block > 0) {
         evaluate(p, mid, half, true);
+    }
+    if (!rest_closes(p)) {
+        p->stage = LWI_STAGE_BLOCK;
+        return false;
     }
     return true;
 }

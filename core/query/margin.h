@@ -24,6 +24,6 @@ void lwi_margin_speed(lw_margin_answer *out, const lw_model *model, const lwi_ra
                       lw_work *work);
 void lwi_margin_travel(lw_margin_answer *out, const lw_model *model, const lw_solution *solution);
 
-#define LWI_MARGIN_CAP 1e6
+#define LWI_MARGIN_CAP LW_MARGIN_CAP
 
 #endif

@@ -20,6 +20,9 @@ lw_code lwi_move_line(lw_move_answer *out, double *proved, const lw_model *model
                       const lwi_advance_ask *ask, const lw_move *move, const lw_config *start,
                       lw_solution *sol, lw_work *work, lw_err *err);
 
+/* Joint coordinates given with the end pose that are no outputs stand there at the end. */
+bool lwi_move_joints_agree(const lw_model *model, const lw_pose_ask *pose, const lw_config *end);
+
 /* The same by readings, on the other prover: ask->by_readings is set. */
 lw_code lwi_move_joints(lw_move_answer *out, double *proved, const lw_model *model,
                         const lwi_advance_ask *ask, const lw_move *move, const lw_config *start,

@@ -56,7 +56,7 @@ static bool given_contradicts(const lw_model *m, const lwi_pose_known *pose)
 }
 
 /* Joint coordinates given with the end pose that are no outputs, against where they came to. */
-static bool joints_agree(const lw_model *m, const lw_pose_ask *pose, const lw_config *end)
+bool lwi_move_joints_agree(const lw_model *m, const lw_pose_ask *pose, const lw_config *end)
 {
     for (size_t i = 0; i < pose->n_joint; i++) {
         size_t coord = pose->joint_coord[i];
@@ -109,13 +109,15 @@ bool lwi_move_supported(lw_move_answer *a, const lw_model *m, const lwi_advance_
     return true;
 }
 
-static lw_code via_point(double via[3], const lw_model *m, const lw_spec_tool *tool,
+static lw_code via_point(double via[3], bool *beside, const lw_model *m, const lw_spec_tool *tool,
                          const lw_pose_ask *pose, const lw_config *start, lw_err *err)
 {
     static const char *const where[3] = {"/via/x", "/via/y", "/via/z"};
     lwi_frame_apply(via, &start->body[tool->body], tool->frame.pos_m);
     for (int i = 0; i < 3; i++) {
         if (!m->completion.pos_output[i]) {
+            lwi_pose_known off = {.off_by_position_m = fabs(pose->position_m[i] - via[i])};
+            *beside = *beside || (pose->has_position[i] && given_contradicts(m, &off));
             continue;
         }
         if (!pose->has_position[i]) {
@@ -135,13 +137,14 @@ lw_code lwi_move_line(lw_move_answer *a, double *proved, const lw_model *m,
     lwi_move along;
     double via[3];
     bool arc = move->kind == LW_MOVE_CIRCLE;
+    bool beside = false; /* the point in between asks for what the mechanism cannot change */
     *proved = 0.0;
     if (!lwi_move_supported(a, m, ask, work)) {
         return LW_OK;
     }
     lw_code rc = lwi_pose_complete(&end, m, ask->tool, &move->pose, err);
     if (rc == LW_OK && arc) {
-        rc = via_point(via, m, ask->tool, &move->via, start, err);
+        rc = via_point(via, &beside, m, ask->tool, &move->via, start, err);
     }
     if (rc == LW_OK) {
         rc = lwi_move_make(&along, m, ask->tool, start, &end, arc ? via : NULL, err);
@@ -149,16 +152,18 @@ lw_code lwi_move_line(lw_move_answer *a, double *proved, const lw_model *m,
     if (rc != LW_OK) {
         return rc;
     }
-    if (given_contradicts(m, &end)) {
+    if (beside || given_contradicts(m, &end)) {
         a->examined = true;
         a->outcome = LW_OUTCOME_OUT_OF_REACH;
         a->stop = LW_STOP_REACH;
-        a->at = 1.0;
-        a->reason = "the end asks for components that this mechanism cannot change";
+        a->at = beside ? 0.0 : 1.0;
+        a->reason = beside ? "the point in between asks for components that this mechanism cannot "
+                             "change"
+                           : "the end asks for components that this mechanism cannot change";
         return LW_OK;
     }
     lwi_move_run(a, proved, m, ask, &along, start, sol, work);
-    if (a->has_end && !joints_agree(m, &move->pose, &sol->config)) {
+    if (a->has_end && !lwi_move_joints_agree(m, &move->pose, &sol->config)) {
         a->outcome = LW_OUTCOME_OUT_OF_REACH;
         a->stop = LW_STOP_REACH;
         a->reason = "a joint given with the end stands elsewhere there";
@@ -213,8 +218,9 @@ static lw_code run_moves(lw_path_answer *a, const lw_model *m, const lw_path_ask
             return LW_OK;
         }
         /* The end is where the next begins. */
-        lwi_config_copy(&work->scratch2, m, &sol->config);
-        at = &work->scratch2;
+        lw_solution *next = lwi_slot(work, LWI_SLOT_MOVE_AT);
+        lwi_config_copy(&next->config, m, &sol->config);
+        at = &next->config;
     }
     return LW_OK;
 }
@@ -250,8 +256,7 @@ lw_code lw_path(const lw_path_answer **out, const lw_model *m, const lw_path_ask
     }
     *out = a;
     if (from->outcome == LW_OUTCOME_INCONSISTENT || from->solution == NULL) {
-        a->outcome = from->outcome == LW_OUTCOME_INCONSISTENT ? from->outcome
-                                                              : LW_OUTCOME_UNDECIDED;
+        a->outcome = from->outcome != LW_OUTCOME_OK ? from->outcome : LW_OUTCOME_UNDECIDED;
         a->reason = from->reason != NULL ? from->reason : "\"from\" names no posture";
         return LW_OK;
     }

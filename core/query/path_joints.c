@@ -9,8 +9,8 @@
 
 /* The readings at the end: as given, or those of the posture that takes the tool to the pose in the
  * mode of the start. */
-static lw_code end_readings(bool has[LW_MAX_DRIVES], double to[LW_MAX_DRIVES], lw_move_answer *a,
-                            const lw_model *m, const lw_spec_tool *tool, const lw_move *move,
+static lw_code end_readings(bool has[LW_MAX_DRIVES], double to[LW_MAX_DRIVES], lw_frame *goal,
+                            lw_move_answer *a, const lw_model *m, const lw_spec_tool *tool, const lw_move *move,
                             const lw_config *start, lw_work *work, lw_err *err)
 {
     const lw_inverse_answer *inverse;
@@ -47,6 +47,7 @@ static lw_code end_readings(bool has[LW_MAX_DRIVES], double to[LW_MAX_DRIVES], l
         has[d] = true;
         to[d] = best->drive[d];
     }
+    *goal = best->tool;
     return LW_OK;
 }
 
@@ -98,6 +99,20 @@ static bool followers_agree(const lwi_prove *p, const bool has[LW_MAX_DRIVES],
     return true;
 }
 
+/* Beyond a forward singularity the readings of a pose belong to another assembly. */
+static bool at_goal(const lw_model *m, const lw_move *move, const lw_frame *goal,
+                    const lw_solution *end)
+{
+    double v[3];
+    double rest[9];
+    lwi_sub(v, end->tool.pos_m, goal->pos_m);
+    double off_m = lwi_norm(v);
+    lwi_rot_mul_at(rest, goal->rot, end->tool.rot);
+    lwi_rot_log(v, rest);
+    return off_m <= 1e-6 * m->length_m && lwi_norm(v) <= 1e-6 &&
+           lwi_move_joints_agree(m, &move->pose, &end->config);
+}
+
 lw_code lwi_move_joints(lw_move_answer *a, double *proved, const lw_model *m,
                         const lwi_advance_ask *ask, const lw_move *move, const lw_config *start,
                         lw_solution *sol, lw_work *work, lw_err *err)
@@ -106,11 +121,12 @@ lw_code lwi_move_joints(lw_move_answer *a, double *proved, const lw_model *m,
     bool has[LW_MAX_DRIVES] = {false};
     double to[LW_MAX_DRIVES] = {0};
     bool lost = false;
+    lw_frame goal;
     *proved = 0.0;
     if (!lwi_move_supported(a, m, ask, work)) {
         return LW_OK;
     }
-    lw_code rc = end_readings(has, to, a, m, ask->tool, move, start, work, err);
+    lw_code rc = end_readings(has, to, &goal, a, m, ask->tool, move, start, work, err);
     if (rc != LW_OK || a->examined) {
         return rc;
     }
@@ -143,7 +159,12 @@ lw_code lwi_move_joints(lw_move_answer *a, double *proved, const lw_model *m,
     lwi_rot_mul_at(rest, from.rot, sol->tool.rot);
     lwi_rot_log(v, rest);
     a->turn_rad = lwi_norm(v);
-    if (!followers_agree(p, has, to, sol)) {
+    if (!move->has_drives && !at_goal(m, move, &goal, sol)) {
+        a->outcome = LW_OUTCOME_OTHER_MODE;
+        a->stop = LW_STOP_REACH;
+        a->reason = "these readings lead to another posture from here than the pose asked for: the "
+                    "way passes into another assembly mode";
+    } else if (!followers_agree(p, has, to, sol)) {
         a->outcome = LW_OUTCOME_INCONSISTENT;
         a->stop = LW_STOP_REACH;
         a->reason = "the readings given for the end contradict one another: drives that follow "

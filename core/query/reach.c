@@ -208,6 +208,11 @@ static lw_code judge_move(lw_reach_answer *a, const lw_model *m, const lw_spec_t
                            .abort = ask->abort};
     lw_move_answer answer;
     double proved;
+    if (!ask->any_mode && !lwi_mode_fits(&start->mode, &a->asked_mode)) {
+        a->outcome = LW_OUTCOME_OTHER_MODE;
+        a->reason = "a straight move keeps the mode of \"from\", which is not the one asked for";
+        return LW_OK;
+    }
     lwi_move_answer_open(&answer);
     lwi_solution_copy(lwi_slot(work, LWI_SLOT_MOVE_START), m, start);
     lw_code rc = lwi_move_line(&answer, &proved, m, &how, &move, &start->config, sol, work, err);

@@ -57,8 +57,10 @@ static void put_least(lwd_json *json, const lw_move_answer *move)
         if (least->known) {
             lwd_json_put_object(json, lw_margin_word((lw_margin_name)i));
             lwd_json_put_number(json, "at_least", least->at_least);
-            lwd_json_put_number(json, "value", least->value);
-            lwd_json_put_number(json, "at", least->at);
+            if (least->value < LW_MARGIN_CAP) { /* else it was met nowhere, only proved */
+                lwd_json_put_number(json, "value", least->value);
+                lwd_json_put_number(json, "at", least->at);
+            }
             lwd_json_end(json);
         }
     }

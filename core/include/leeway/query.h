@@ -192,6 +192,8 @@ typedef enum lw_margin_name {
 } lw_margin_name;
 const char *lw_margin_word(lw_margin_name name); /* "accuracy" ... */
 
+#define LW_MARGIN_CAP 1e6 /* no margin is answered greater */
+
 typedef struct lw_margin_value {
     bool asked;        /* false: the document states no need, value means nothing */
     double value;      /* accuracy, load, speed, spare: ratio, 1 = just enough; travel: share of the
