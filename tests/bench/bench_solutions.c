@@ -1,9 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* All solutions, timed: every posture of a general six-strut platform, of a planar one and of a
  * general six-revolute arm over many random targets, the preparation of each, Newton's method from
- * random starts until 95 % of the real solutions were seen, and an independent solver (phc) on the
- * same platform in the same run, whose real solutions must be ours. One CSV line a case:
- * least, median, 99th percentile. LWT_SHARE scales the number of targets (100,000 at 100). */
+ * random starts until 95 % of the real solutions were seen, and two independent solvers in the same
+ * run: GSL's multiroots from random starts, every root of which must be among ours, and phc, whose
+ * real solutions must be ours. One CSV line a case: least, median, 99th percentile. LWT_SHARE
+ * scales the number of targets (100,000 at 100). */
 #define _POSIX_C_SOURCE 200809L
 
 #include <math.h>
@@ -18,8 +19,9 @@
 #include "lwt_kit.h"
 #include "lwt_phc.h"
 #include "lwt_subjects.h"
+#include "multi_start.h"
 
-enum { TARGETS = 1000, SEED = 3 };
+enum { TARGETS = 1000, SEED = 3, MOST_REAL = 64, MOST_STARTS = 20000, MOST_BESIDE = 25 };
 
 typedef struct tally {
     size_t asked, paths, unsettled, odd;
@@ -68,6 +70,89 @@ static lwt_machine *prepared(const char *name, double *seconds)
     exit(1);
 }
 
+/* The rods of a platform, apart from the core: its points from their centre at reference. */
+static lwt_rods rods_of(const lwt_machine *m, const double *drive)
+{
+    lwt_rods out = {.planar = m->spec->n_drive == 3, .n = m->spec->n_drive};
+    double centre[3] = {0, 0, 0};
+    for (size_t i = 0; i < out.n; i++) {
+        for (size_t c = 0; c < 3; c++) {
+            centre[c] += m->spec->rod[i].end_m[1][c] / (double)out.n;
+        }
+    }
+    for (size_t i = 0; i < out.n; i++) {
+        double d[3];
+        for (size_t c = 0; c < 3; c++) {
+            out.base[i][c] = m->spec->rod[i].end_m[0][c];
+            out.plate[i][c] = m->spec->rod[i].end_m[1][c] - centre[c];
+            d[c] = m->spec->rod[i].end_m[1][c] - m->spec->rod[i].end_m[0][c];
+        }
+        out.length_m[i] = lwt_norm(d) + drive[i];
+    }
+    return out;
+}
+
+/* All solutions and GSL's multi-start to 95 % of the real ones, for targets within `span` of
+ * `middle` (NULL for the reference), each with its own random numbers. The multi-start is told how
+ * many there are, which it could not know by itself; one that gives up counts with the time it
+ * took. Returns 2 if it finds a root that is not ours. */
+static int beside_starts(const char *name, lwt_machine *m, const double *middle, double span,
+                         size_t n, lwt_local method)
+{
+    double ours[MOST_BESIDE];
+    double theirs[MOST_BESIDE];
+    double ratio[MOST_BESIDE];
+    double starts[MOST_BESIDE];
+    static double known[MOST_REAL][6][3];
+    size_t real = 0;
+    size_t gave_up = 0;
+    size_t roots = 0;
+    size_t strangers = 0;
+    lwt_random rng;
+    lwt_random_init(&rng, 100);
+    for (size_t k = 0; k < n; k++) {
+        double drive[6];
+        for (size_t d = 0; d < m->spec->n_drive; d++) {
+            drive[d] = (middle != NULL ? middle[d] : 0.0) + lwt_random_in(&rng, -span, span);
+        }
+        double t = now_us();
+        const lw_forward_answer *a = lwt_forward_all(m, drive);
+        ours[k] = now_us() - t;
+        lwt_rods rods = rods_of(m, drive);
+        size_t count = a->n_solution < MOST_REAL ? a->n_solution : MOST_REAL;
+        for (size_t s = 0; s < count; s++) {
+            for (size_t i = 0; i < rods.n; i++) {
+                const lw_spec_rod *rod = &m->spec->rod[i];
+                lwt_frame_point(known[s][i], &a->solution[s].config.body[rod->body[1]],
+                                rod->end_m[1]);
+            }
+        }
+        size_t enough = (size_t)ceil(0.95 * (double)count);
+        t = now_us();
+        lwt_starts r = lwt_multi_start(&rods, method, (const double(*)[6][3])known, count, enough,
+                                       MOST_STARTS, 77 + k);
+        theirs[k] = now_us() - t;
+        ratio[k] = theirs[k] / ours[k];
+        starts[k] = (double)r.starts;
+        real += count;
+        gave_up += r.seen < enough;
+        roots += r.roots;
+        strangers += r.strangers;
+    }
+    qsort(ours, n, sizeof *ours, ascending);
+    qsort(theirs, n, sizeof *theirs, ascending);
+    qsort(ratio, n, sizeof *ratio, ascending);
+    qsort(starts, n, sizeof *starts, ascending);
+    (void)printf("# %s: all solutions (median) %.3f ms; multi-start by GSL %s to 95 %% of %.1f "
+                 "real ones: %.3f ms, %.0f starts; ratio %.2f, least %.2f; %zu targets, "
+                 "%zu given up, %zu roots, %zu not ours\n",
+                 name, 1e-3 * ours[n / 2], method == LWT_HYBRIDSJ ? "hybridsj" : "gnewton",
+                 (double)real / (double)n, 1e-3 * theirs[n / 2], starts[n / 2], ratio[n / 2],
+                 ratio[0], n, gave_up, roots, strangers);
+    (void)fflush(stdout);
+    return strangers > 0 ? 2 : 0;
+}
+
 /* Random readings (or, for an arm, the pose of random readings) within `span`, all solutions. */
 static int time_all(const char *name, double span, size_t n, double median_ms, double p99_ms,
                     tally *sum)
@@ -106,6 +191,11 @@ static int time_all(const char *name, double span, size_t n, double median_ms, d
     (void)printf("%s prepare,1,%.0f,%.0f,%.0f,5000,0%s%s\n", name, 1e3 * seconds, 1e3 * seconds,
                  1e3 * seconds, seconds > 5.0 ? ",OVER" : "", set->closed ? "" : ",NOT CLOSED");
     over |= seconds > 5.0 || !set->closed;
+    if (!inverse) { /* the two platforms */
+        size_t few = n < MOST_BESIDE ? n : MOST_BESIDE;
+        over |= beside_starts(name, m, NULL, span, few, LWT_HYBRIDSJ);
+        over |= beside_starts(name, m, NULL, span, few, LWT_GNEWTON);
+    }
     free(us);
     lwt_machine_free(m);
     return over;
@@ -190,10 +280,12 @@ static int compare(const char *name, const double *base, const double *plate, co
                      name, phc.finite, phc.n, phc.seconds, 1e6 * phc.seconds / best, common);
     }
     (void)fflush(stdout);
+    int odd = beside_starts(name, m, drive, 0.0, MOST_BESIDE, LWT_HYBRIDSJ) |
+              beside_starts(name, m, drive, 0.0, MOST_BESIDE, LWT_GNEWTON);
     bool same = !there || (common == n && (size_t)phc.n == n);
     free(all);
     lwt_machine_free(m);
-    return !same;
+    return !same || odd != 0;
 }
 
 int main(void)
