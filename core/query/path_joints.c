@@ -10,8 +10,9 @@
 /* The readings at the end: as given, or those of the posture that takes the tool to the pose in the
  * mode of the start. */
 static lw_code end_readings(bool has[LW_MAX_DRIVES], double to[LW_MAX_DRIVES], lw_frame *goal,
-                            lw_move_answer *a, const lw_model *m, const lw_spec_tool *tool, const lw_move *move,
-                            const lw_config *start, lw_work *work, lw_err *err)
+                            lw_move_answer *a, const lw_model *m, const lw_spec_tool *tool,
+                            const lw_move *move, const lw_config *start, lw_work *work,
+                            lw_err *err)
 {
     const lw_inverse_answer *inverse;
     const lw_solution *best = NULL;
