@@ -392,7 +392,7 @@ static bool screen(run *r, double step, double *cap)
     return true;
 }
 
-void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
+void lwi_advance(lw_move_answer *a, double *proved, lwi_prove *p,
                  const lwi_advance_ask *ask, lw_solution *sol, lw_work *work)
 {
     run r = {.a = a, .p = p, .ask = ask, .sol = sol, .work = work, .limb = SIZE_MAX};
@@ -400,7 +400,6 @@ void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
     double cap = 1.0;
     bool settled = false;
     a->outcome = LW_OUTCOME_OK;
-    *lost = false;
     lwi_mode_of(&r.mode, p->model, &sol->config); /* a move by readings may have changed it */
     size_t failed = 0; /* one after another */
     while (r.low < cap) {
@@ -462,9 +461,9 @@ void lwi_advance(lw_move_answer *a, double *proved, bool *lost, lwi_prove *p,
     *proved = r.low;
     if (a->outcome == LW_OUTCOME_OK) {
         a->at = 1.0;
-        *lost = !lwi_follow_to(p, r.low, r.low, &sol->config);
+        bool followed = lwi_follow_to(p, r.low, r.low, &sol->config);
         lwi_solution_finish(sol, p->model, ask->tool);
-        if (*lost) {
+        if (!followed) {
             undecided(&r, LW_STOP_RESOLUTION, 1.0, "the end of the move could not be followed");
         }
     }

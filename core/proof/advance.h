@@ -25,7 +25,7 @@ typedef struct lwi_advance_ask {
  * the end of the move where that was reached, else the witness. Fills outcome, reason, stop, at,
  * open interval, limb, drive, margin, limits, least, boxes, pieces. proved: how far the proof came,
  * 0..1. */
-void lwi_advance(lw_move_answer *out, double *proved, bool *lost, lwi_prove *p,
+void lwi_advance(lw_move_answer *out, double *proved, lwi_prove *p,
                  const lwi_advance_ask *ask, lw_solution *sol, lw_work *work);
 
 #endif

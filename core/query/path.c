@@ -77,15 +77,14 @@ void lwi_move_run(lw_move_answer *a, double *proved, const lw_model *m,
                   const lwi_advance_ask *ask, const lwi_move *move, const lw_config *start,
                   lw_solution *sol, lw_work *work)
 {
-    bool lost = false;
     a->examined = true;
     a->length_m = move->length_m;
     a->turn_rad = fabs(move->turn_rad);
     lwi_solution_copy(sol, m, lwi_slot(work, LWI_SLOT_MOVE_START));
     lwi_config_copy(&sol->config, m, start);
     lwi_prove_begin(work->prove, move, ask->tool, ask->min, start);
-    lwi_advance(a, proved, &lost, work->prove, ask, sol, work);
-    if (a->outcome == LW_OUTCOME_OK && !lost) {
+    lwi_advance(a, proved, work->prove, ask, sol, work);
+    if (a->outcome == LW_OUTCOME_OK) {
         a->has_end = true;
         memcpy(a->end_drive, sol->drive, sizeof a->end_drive);
         a->end_tool = sol->tool;

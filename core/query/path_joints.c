@@ -121,7 +121,6 @@ lw_code lwi_move_joints(lw_move_answer *a, double *proved, const lw_model *m,
     lwi_prove *p = work->prove_joints;
     bool has[LW_MAX_DRIVES] = {false};
     double to[LW_MAX_DRIVES] = {0};
-    bool lost = false;
     lw_frame goal;
     *proved = 0.0;
     if (!lwi_move_supported(a, m, ask, work)) {
@@ -145,8 +144,8 @@ lw_code lwi_move_joints(lw_move_answer *a, double *proved, const lw_model *m,
     lwi_prove_begin_joints(p, ask->tool, ask->min, start);
     lw_frame from;
     lwi_tool_pose(&from, ask->tool, start);
-    lwi_advance(a, proved, &lost, p, ask, sol, work);
-    if (a->outcome != LW_OUTCOME_OK || lost) {
+    lwi_advance(a, proved, p, ask, sol, work);
+    if (a->outcome != LW_OUTCOME_OK) {
         return LW_OK;
     }
     a->has_end = true;
