@@ -323,20 +323,6 @@ static int square_to(lwi_pm *y, const scaled *s, const size_t *pick, lwi_prove *
     return 0;
 }
 
-static bool next_subset(size_t *pick, size_t k, size_t n)
-{
-    for (size_t i = k; i-- > 0;) {
-        if (pick[i] + (k - i) < n) {
-            pick[i]++;
-            for (size_t j = i + 1; j < k; j++) {
-                pick[j] = pick[j - 1] + 1;
-            }
-            return true;
-        }
-    }
-    return false;
-}
-
 /* More drives than freedoms: a vertex for each choice of m - 1 rows. */
 static bool load_spare(lwi_prove *p, const scaled *s)
 {
@@ -376,7 +362,7 @@ static bool load_spare(lwi_prove *p, const scaled *s)
             x[j] = lwi_pm_scale(y[j], s->column[j]);
         }
         take_vertex(p, support, power_of(p, x, 1));
-    } while (++tried < MOST_SUBSETS && next_subset(pick, k, s->n));
+    } while (++tried < MOST_SUBSETS && lwi_next_subset(pick, k, s->n));
     return tried < MOST_SUBSETS;
 }
 

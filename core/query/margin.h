@@ -24,6 +24,9 @@ void lwi_margin_speed(lw_margin_answer *out, const lw_model *model, const lwi_ra
                       lw_work *work);
 void lwi_margin_travel(lw_margin_answer *out, const lw_model *model, const lw_solution *solution);
 
+/* The next choice of k of n in order of their numbers, ascending in pick; false after the last. */
+bool lwi_next_subset(size_t *pick, size_t k, size_t n);
+
 #define LWI_MARGIN_CAP LW_MARGIN_CAP
 
 #endif

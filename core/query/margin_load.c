@@ -142,7 +142,7 @@ static bool square_to(double *y, double *a, size_t n)
     return true;
 }
 
-static bool next_subset(size_t *pick, size_t k, size_t n)
+bool lwi_next_subset(size_t *pick, size_t k, size_t n)
 {
     for (size_t i = k; i-- > 0;) {
         if (pick[i] + (k - i) < n) {
@@ -186,7 +186,7 @@ void lwi_margin_load(lw_margin_answer *out, const lw_model *m, const lwi_rates *
         if (square_to(y, a, r->m)) {
             try_vertex(&worst, m, r, y, work);
         }
-    } while (++tried < MAX_SUBSETS && next_subset(pick, k, r->n_drive));
+    } while (++tried < MAX_SUBSETS && lwi_next_subset(pick, k, r->n_drive));
     if (tried >= MAX_SUBSETS) {
         value->asked = false; /* too many vertices: no figure rather than a wrong one */
         return;
