@@ -14,30 +14,7 @@ typedef lwi_w_point num_point;
 #define NUM_RATES 0
 #define NUM_OWN_POINT 0
 
-static inline num num_of(double x)
-{
-    return x;
-}
-
-static inline num num_add(num a, num b)
-{
-    return a + b;
-}
-
-static inline num num_sub(num a, num b)
-{
-    return a - b;
-}
-
-static inline num num_mul(num a, num b)
-{
-    return a * b;
-}
-
-static inline num num_scale(num a, double x)
-{
-    return a * x;
-}
+#include "../closure/eval_plain.inc"
 
 static inline num num_over(num a, double x)
 {
