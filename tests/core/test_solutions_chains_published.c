@@ -15,65 +15,7 @@
 
 enum { SEED = 3 };
 
-static const double Z_AXIS[3] = {0, 0, 1};
-
 /* ---- seven links ----------------------------------------------------------------------------- */
-
-typedef struct vec2 {
-    double x, y;
-} vec2;
-
-static vec2 turned(const cJSON *links, const char *name, double theta_deg)
-{
-    double v[2];
-    assert_int_equal(lwt_numbers(links, name, v, 2), 2);
-    double c = cos(theta_deg * LWT_DEG);
-    double s = sin(theta_deg * LWT_DEG);
-    return (vec2){c * v[0] - s * v[1], s * v[0] + c * v[1]};
-}
-
-static size_t pin(lwt_machine *m, size_t a, size_t b, vec2 at)
-{
-    return lwt_add_revolute(m, a, b, (const double[3]){at.x, at.y, 0}, Z_AXIS);
-}
-
-static vec2 plus(vec2 a, vec2 b)
-{
-    return (vec2){a.x + b.x, a.y + b.y};
-}
-
-/* The chain of seven links as it stands in one assembly, its ground link carried by a driven
- * crank: with the crank held the chain is a structure, and its assemblies are the solutions.
- * Bodies: 1 the carrier, 1 + i link i. */
-static lwt_machine *seven_links(const cJSON *links, const double *t)
-{
-    lwt_machine *m = lwt_machine_new("seven-links");
-    for (size_t i = 0; i < 7; i++) {
-        (void)lwt_add_body(m);
-    }
-    vec2 p3 = turned(links, "a0", 0);
-    vec2 p4 = plus(p3, turned(links, "b0", 0));
-    vec2 p6 = plus(p4, turned(links, "c0", 0));
-    vec2 a = turned(links, "a1", t[0]);
-    vec2 b = plus(a, turned(links, "a2", t[1]));
-    vec2 c = plus(b, turned(links, "b2", t[1]));
-    vec2 d = plus(p4, turned(links, "a4", t[3]));
-    vec2 e = plus(d, turned(links, "b5", t[4]));
-    size_t crank = pin(m, 0, 1, (vec2){-0.3, -0.4});
-    (void)pin(m, 1, 2, (vec2){0, 0});
-    (void)pin(m, 2, 3, a);
-    (void)pin(m, 3, 4, b);
-    (void)pin(m, 1, 4, p3);
-    (void)pin(m, 3, 6, c);
-    (void)pin(m, 6, 5, d);
-    (void)pin(m, 1, 5, p4);
-    (void)pin(m, 6, 7, e);
-    (void)pin(m, 1, 7, p6);
-    (void)lwt_drive_joint(m, crank);
-    (void)lwt_add_tool(m, 6, NULL);
-    lwt_add_output_coord(m, lwt_coord(m, crank, 0));
-    return m;
-}
 
 /* Innocenti 1995: 18; 8 of these lengths are real (recomputed). */
 static void seven_links_have_eighteen_assemblies_eight_real(void **state)
@@ -82,7 +24,7 @@ static void seven_links_have_eighteen_assemblies_eight_real(void **state)
     cJSON *file = lwt_case_file("innocenti-1995/cases.json");
     double theta[48];
     assert_int_equal(lwt_numbers(file, "assemblies_deg", theta, 48), 48);
-    lwt_machine *m = seven_links(lwt_member(file, "links"), theta);
+    lwt_machine *m = lwt_kit_seven_links(lwt_member(file, "links"), theta);
     lwt_machine_load_prepared(m, SEED, LWT_PATHS);
     assert_int_equal(lw_model_report(m->model)->mobility, 1);
     lwt_expect_closed(lwt_forward_set(m), (size_t)lwt_number(file, "solutions_complex"));

@@ -295,3 +295,58 @@ lwt_machine *lwt_kit_three_rps(double turn_rad, size_t *plate, size_t *hinge)
     }
     return m;
 }
+
+/* ---- seven links ----------------------------------------------------------------------------- */
+
+typedef struct vec2 {
+    double x, y;
+} vec2;
+
+static vec2 turned(const cJSON *links, const char *name, double theta_deg)
+{
+    double v[2];
+    assert_int_equal(lwt_numbers(links, name, v, 2), 2);
+    double c = cos(theta_deg * LWT_DEG);
+    double s = sin(theta_deg * LWT_DEG);
+    return (vec2){c * v[0] - s * v[1], s * v[0] + c * v[1]};
+}
+
+static size_t pin(lwt_machine *m, size_t a, size_t b, vec2 at)
+{
+    return lwt_add_revolute(m, a, b, (const double[3]){at.x, at.y, 0}, (const double[3]){0, 0, 1});
+}
+
+static vec2 plus(vec2 a, vec2 b)
+{
+    return (vec2){a.x + b.x, a.y + b.y};
+}
+
+lwt_machine *lwt_kit_seven_links(const struct cJSON *links, const double *t)
+{
+    lwt_machine *m = lwt_machine_new("seven-links");
+    for (size_t i = 0; i < 7; i++) {
+        (void)lwt_add_body(m);
+    }
+    vec2 p3 = turned(links, "a0", 0);
+    vec2 p4 = plus(p3, turned(links, "b0", 0));
+    vec2 p6 = plus(p4, turned(links, "c0", 0));
+    vec2 a = turned(links, "a1", t[0]);
+    vec2 b = plus(a, turned(links, "a2", t[1]));
+    vec2 c = plus(b, turned(links, "b2", t[1]));
+    vec2 d = plus(p4, turned(links, "a4", t[3]));
+    vec2 e = plus(d, turned(links, "b5", t[4]));
+    size_t crank = pin(m, 0, 1, (vec2){-0.3, -0.4});
+    (void)pin(m, 1, 2, (vec2){0, 0});
+    (void)pin(m, 2, 3, a);
+    (void)pin(m, 3, 4, b);
+    (void)pin(m, 1, 4, p3);
+    (void)pin(m, 3, 6, c);
+    (void)pin(m, 6, 5, d);
+    (void)pin(m, 1, 5, p4);
+    (void)pin(m, 6, 7, e);
+    (void)pin(m, 1, 7, p6);
+    (void)lwt_drive_joint(m, crank);
+    (void)lwt_add_tool(m, 6, NULL);
+    lwt_add_output_coord(m, lwt_coord(m, crank, 0));
+    return m;
+}

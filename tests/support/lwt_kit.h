@@ -67,4 +67,10 @@ lw_frame lwt_table_forward(const lwt_table *table, const double *theta);
 lwt_machine *lwt_kit_arm(const char *name, const lwt_table *table, const double *theta_ref,
                          const char *outputs);
 
+/* The chain of seven links as it stands in one assembly, its ground link carried by a driven
+ * crank: with the crank held the chain is a structure, and its assemblies are the solutions.
+ * Bodies: 1 the carrier, 1 + i link i. `links` are the sides of a case, t[6] the angles of the
+ * links in degrees. */
+lwt_machine *lwt_kit_seven_links(const struct cJSON *links, const double *t);
+
 #endif
